@@ -1,0 +1,13 @@
+//! What a Semiaxis cell finds preloaded: tables, matrices, multivariate statistics and exhibits.
+
+pub mod components;
+pub mod error;
+pub mod exhibit;
+pub mod live;
+pub mod parallel;
+pub mod prelude;
+pub mod table;
+
+pub use error::{Error, Result};
+pub use nalgebra;
+pub use polars;

@@ -1,0 +1,1 @@
+//! The names that every cell can use without a `use` line.
