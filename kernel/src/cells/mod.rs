@@ -1,1 +1,3 @@
-//! (to be written)
+//! A cell's way from its text to its output.
+
+pub mod types;
