@@ -126,8 +126,7 @@ pub enum ConnectionFileError {
 ///
 /// One variant of [`ConnectionFileError`] for each thing that can be wrong with the file.
 pub fn read_connection_file(path: &Path) -> Result<ConnectionInfo, ConnectionFileError> {
-    let unreadable =
-        |source| ConnectionFileError::Unreadable { path: path.to_owned(), source };
+    let unreadable = |source| ConnectionFileError::Unreadable { path: path.to_owned(), source };
     let bytes = std::fs::metadata(path).map_err(unreadable)?.len();
     if bytes > LARGEST_FILE {
         return Err(ConnectionFileError::TooLarge { path: path.to_owned(), bytes });
@@ -249,7 +248,8 @@ mod tests {
 
     #[test]
     fn addresses_beyond_the_loopback_are_refused_and_named() {
-        for ip in ["0.0.0.0", "192.168.1.4", "::", "*", "example.org", "", "127.0.0.1.example.org"] {
+        for ip in ["0.0.0.0", "192.168.1.4", "::", "*", "example.org", "", "127.0.0.1.example.org"]
+        {
             let error = read_with("ip", json!(ip)).unwrap_err();
             assert!(matches!(error, ConnectionFileError::BeyondLoopback { .. }), "{ip}: {error}");
             assert!(error.to_string().contains(&format!("'{ip}'")));

@@ -9,7 +9,6 @@
 //! Source: "The wire protocol" and "General message format" of
 //! <https://jupyter-client.readthedocs.io/en/stable/messaging.html>.
 
-use bytes::Bytes;
 use jupyter_protocol::{Header, JupyterMessage, JupyterMessageContent, UnknownMessage};
 use jupyter_zmq_client::{Connection, RawMessage, RuntimeError};
 use serde_json::Value;
@@ -105,10 +104,7 @@ pub struct Intake {
 impl Intake {
     /// An intake that accepts messages signed with `key`, or any message if the key is empty.
     pub fn new(key: &str) -> Self {
-        Self {
-            signer: Connection::new(RouterSocket::new(), key, ""),
-            replays: ReplayGuard::new(),
-        }
+        Self { signer: Connection::new(RouterSocket::new(), key, ""), replays: ReplayGuard::new() }
     }
 
     /// Lets a message in, or says why not.
@@ -122,12 +118,11 @@ impl Intake {
         let mut parts = raw.jparts.into_iter();
         let mut next = || parts.next().unwrap_or_default();
         let (header, parent, metadata, content) = (next(), next(), next(), next());
-        let buffers: Vec<Bytes> = parts.collect();
+        let buffers = parts.collect();
         if !self.replays.is_new(&header) {
             return Err(Refusal::Replayed { inlet });
         }
-        let unreadable =
-            |part| move |source| Refusal::Unreadable { inlet, part, source };
+        let unreadable = |part| move |source| Refusal::Unreadable { inlet, part, source };
         let header: Header = serde_json::from_slice(&header).map_err(unreadable("header"))?;
         let metadata: Value = serde_json::from_slice(&metadata).map_err(unreadable("metadata"))?;
         let (content, defect) = read_content(&header.msg_type, &content);

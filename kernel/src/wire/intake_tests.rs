@@ -36,8 +36,10 @@ fn golden() -> Golden {
 }
 
 fn multipart(frames: Vec<Vec<u8>>) -> ZmqMessage {
-    let frames: Vec<_> = frames.into_iter().map(Into::into).collect();
-    ZmqMessage::try_from(frames).unwrap()
+    let mut frames = frames.into_iter();
+    let mut message = ZmqMessage::from(frames.next().unwrap());
+    frames.for_each(|frame| message.push_back(frame.into()));
+    message
 }
 
 fn unsigned(header: &str, content: &str) -> ZmqMessage {

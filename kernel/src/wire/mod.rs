@@ -16,9 +16,9 @@ mod quirks;
 mod replay;
 mod sockets;
 
-pub use connection::{ConnectionFileError, read_connection_file};
-pub use intake::{Inlet, Intake, Request};
-pub use sockets::{BindError, Sockets, bind};
+pub use connection::read_connection_file;
+pub use intake::{Inlet, Intake, Refusal, Request};
+pub use sockets::{Outlets, Sockets, bind};
 
 /// Tells the person at the terminal something that has no place in the notebook.
 ///

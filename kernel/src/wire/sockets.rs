@@ -141,8 +141,7 @@ async fn bind_one(
         Transport::IPC => endpoint.strip_prefix("ipc://").map(Path::new),
         Transport::TCP => None,
     };
-    let failed =
-        |source| BindError { socket: name, endpoint: endpoint.to_owned(), source };
+    let failed = |source| BindError { socket: name, endpoint: endpoint.to_owned(), source };
     if let Some(file) = file {
         remove_if_abandoned(file);
     }
