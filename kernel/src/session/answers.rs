@@ -13,10 +13,10 @@ use jupyter_protocol::{
     IsCompleteReply, JupyterMessageContent, KernelInfoReply, LanguageInfo, Media, MediaType,
     ReplyStatus, UnknownMessage,
 };
-use serde_json::json;
+use serde_json::{Map, Value, json};
 
-use super::guide::{Completeness, Guide};
 use crate::cells::types::{CellFailure, MimeBundle, Scope};
+use crate::help::{self, Completeness, Completions, Index};
 use crate::wire::note;
 
 /// The version of the messaging protocol that the kernel speaks.
@@ -57,8 +57,8 @@ pub fn kernel_info() -> KernelInfoReply {
 }
 
 /// Whether a client's console may send what was typed so far.
-pub fn is_complete(guide: &Guide, code: &str) -> IsCompleteReply {
-    match guarded("judging whether code is complete", || guide.completeness(code)) {
+pub fn is_complete(code: &str) -> IsCompleteReply {
+    match guarded("judging whether code is complete", || help::completeness(code)) {
         Some(Completeness::Complete) => IsCompleteReply::complete(),
         Some(Completeness::Incomplete { indent }) => IsCompleteReply::incomplete(indent),
         Some(Completeness::Invalid) => IsCompleteReply::invalid(),
@@ -67,18 +67,40 @@ pub fn is_complete(guide: &Guide, code: &str) -> IsCompleteReply {
 }
 
 /// What could be typed at the cursor.
-pub fn complete(guide: &Guide, scope: &Scope, request: &CompleteRequest) -> CompleteReply {
+///
+/// Clients that know it read what each suggestion is from the metadata, under the key that is in
+/// common use for that; it is not part of the protocol's page.
+pub fn complete(request: &CompleteRequest, scope: &Scope, index: &Index) -> CompleteReply {
     let cursor = request.cursor_pos.min(request.code.chars().count());
-    guarded("completing code", || guide.complete(&request.code, cursor, scope)).unwrap_or_else(
-        || CompleteReply { cursor_start: cursor, cursor_end: cursor, ..Default::default() },
-    )
+    let found = guarded("completing code", || help::complete(&request.code, cursor, scope, index));
+    let Completions { matches, start, end } =
+        found.unwrap_or_else(|| Completions { matches: Vec::new(), start: cursor, end: cursor });
+    let described: Vec<Value> = matches
+        .iter()
+        .map(|found| {
+            json!({
+                "start": start, "end": end, "text": found.text, "type": found.kind,
+                "signature": found.signature,
+            })
+        })
+        .collect();
+    let mut metadata = Map::new();
+    metadata.insert("_jupyter_types_experimental".to_owned(), described.into());
+    CompleteReply {
+        matches: matches.into_iter().map(|found| found.text).collect(),
+        cursor_start: start,
+        cursor_end: end,
+        metadata,
+        ..CompleteReply::default()
+    }
 }
 
 /// What stands at the cursor.
-pub fn inspect(guide: &Guide, scope: &Scope, request: &InspectRequest) -> InspectReply {
+pub fn inspect(request: &InspectRequest, scope: &Scope, index: &Index) -> InspectReply {
     let cursor = request.cursor_pos.min(request.code.chars().count());
     let detail = u8::from(request.detail_level.unwrap_or(0) > 0);
-    let found = guarded("inspecting code", || guide.inspect(&request.code, cursor, detail, scope));
+    let found =
+        guarded("inspecting code", || help::inspect(&request.code, cursor, detail, scope, index));
     match found.flatten() {
         Some(bundle) => InspectReply { found: true, data: media(bundle), ..Default::default() },
         None => InspectReply::default(),
@@ -136,6 +158,48 @@ mod tests {
         assert_eq!(info["language_info"]["pygments_lexer"], "rust");
         assert_eq!(info["language_info"]["codemirror_mode"], "rust");
         assert!(info["banner"].as_str().unwrap().starts_with("Semiaxis"));
+    }
+
+    #[test]
+    fn code_is_judged_completed_and_inspected() {
+        use crate::cells::types::VariableInfo;
+        let whole = serde_json::to_value(is_complete("1 + 1")).unwrap();
+        assert_eq!(whole["status"], "complete");
+        let open = serde_json::to_value(is_complete("fn f() {")).unwrap();
+        assert_eq!(open["status"], "incomplete");
+        assert!(open["indent"].as_str().unwrap().chars().all(|c| c == ' '));
+        assert_eq!(serde_json::to_value(is_complete("}")).unwrap()["status"], "invalid");
+
+        let scope = Scope {
+            variables: vec![VariableInfo {
+                name: "größe".to_owned(),
+                type_text: "f64".to_owned(),
+                mutable: false,
+                cell: 3,
+            }],
+            items: Vec::new(),
+        };
+        let index = Index::default();
+        let ask = CompleteRequest { code: "let y = grö".to_owned(), cursor_pos: 11 };
+        let found = complete(&ask, &scope, &index);
+        assert_eq!(found.matches, ["größe"]);
+        assert_eq!((found.cursor_start, found.cursor_end), (8, 11));
+        assert_eq!(found.metadata["_jupyter_types_experimental"][0]["text"], "größe");
+        let ask =
+            InspectRequest { code: "größe".to_owned(), cursor_pos: 2, detail_level: Some(0) };
+        let known = inspect(&ask, &scope, &index);
+        assert!(known.found);
+        let text = serde_json::to_value(&known.data).unwrap();
+        assert!(text["text/plain"].as_str().unwrap().contains("f64"), "{text}");
+        let ask = InspectRequest { code: "unheard_of".to_owned(), ..ask };
+        assert!(!inspect(&ask, &scope, &index).found);
+    }
+
+    #[test]
+    fn a_cursor_beyond_the_code_means_its_end() {
+        let ask = CompleteRequest { code: "zzz".to_owned(), cursor_pos: usize::MAX };
+        let found = complete(&ask, &Scope::default(), &Index::default());
+        assert!(found.cursor_end <= 3 && found.cursor_start <= found.cursor_end);
     }
 
     #[test]

@@ -18,6 +18,7 @@ use super::evaluator::{Evaluator, Interrupt};
 use crate::cells::types::{
     CellEvent, CellFailure, CellReply, CellRequest, MimeBundle, Outcome, Scope, Timings,
 };
+use crate::help::Index;
 use crate::wire::note;
 
 /// How much news may wait for the session, and how many events of a cell for this thread.
@@ -39,6 +40,8 @@ pub struct Job {
 pub enum News {
     /// A line about what is being prepared.
     Progress(String),
+    /// What the prelude offers to help with typing.
+    Index(Index),
     /// The engine can run cells from now on.
     Ready(Readiness),
     /// The engine could not be started; why, in words for the user.
@@ -99,6 +102,12 @@ impl Progress {
     /// Sends a line. When the session is behind, the line is left out: there will be another.
     pub fn tell(&self, line: String) {
         let _ = self.0.try_send(News::Progress(line));
+    }
+
+    /// Hands over the index of the prelude's names. Called from a thread of its own, for it waits
+    /// for the session.
+    pub fn index(&self, index: Index) {
+        let _ = self.0.blocking_send(News::Index(index));
     }
 }
 

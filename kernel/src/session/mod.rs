@@ -13,7 +13,6 @@
 mod answers;
 mod engine;
 mod evaluator;
-mod guide;
 mod history;
 mod publish;
 mod queue;

@@ -21,7 +21,6 @@ use zeromq::ZmqMessage;
 use super::answers::{self, media, refusal};
 use super::engine::{EngineHandle, Finished, News};
 use super::evaluator::Interrupt;
-use super::guide::Guide;
 use super::history::History;
 use super::publish::{Outlet, broadcast, reply_to};
 use super::queue::{Order, Queue, Running};
@@ -30,6 +29,7 @@ use super::watch::Signal;
 use crate::cells::types::{
     CellEvent, CellFailure, CellReply, MimeBundle, Outcome, Scope, StreamName, Timings,
 };
+use crate::help::Index;
 use crate::wire::{Inlet, Intake, Refusal, Request, note};
 
 /// Everything that can happen to a session.
@@ -90,7 +90,8 @@ pub struct Service<O> {
     stream: StreamBuffer,
     /// What the session defined when the last cell ended.
     scope: Scope,
-    guide: Guide,
+    /// What the prelude offers; empty until the engine's thread has read it.
+    index: Index,
 }
 
 impl<O: Outlet> Service<O> {
@@ -105,7 +106,7 @@ impl<O: Outlet> Service<O> {
             history: History::default(),
             stream: StreamBuffer::default(),
             scope: Scope::default(),
-            guide: Guide::default(),
+            index: Index::default(),
         }
     }
 
@@ -217,13 +218,13 @@ impl<O: Outlet> Service<O> {
         match content {
             Content::KernelInfoRequest(_) => Answer::Reply(answers::kernel_info().into()),
             Content::IsCompleteRequest(request) => {
-                Answer::Reply(answers::is_complete(&self.guide, &request.code).into())
+                Answer::Reply(answers::is_complete(&request.code).into())
             }
             Content::CompleteRequest(request) => {
-                Answer::Reply(answers::complete(&self.guide, &self.scope, &request).into())
+                Answer::Reply(answers::complete(&request, &self.scope, &self.index).into())
             }
             Content::InspectRequest(request) => {
-                Answer::Reply(answers::inspect(&self.guide, &self.scope, &request).into())
+                Answer::Reply(answers::inspect(&request, &self.scope, &self.index).into())
             }
             Content::HistoryRequest(request) => {
                 Answer::Reply(HistoryReply::new(self.history.answer(&request)).into())
@@ -258,6 +259,7 @@ impl<O: Outlet> Service<O> {
                     *latest = Some(line);
                 }
             }
+            Some(News::Index(index)) => self.index = index,
             Some(News::Ready(readiness)) => {
                 self.state = EngineState::Ready(readiness.interrupt);
                 self.scope = readiness.scope;

@@ -403,7 +403,7 @@ async fn an_interrupt_ends_the_running_cell_and_never_the_next_one() {
     assert!(session.lines(&cell).contains(&"error Interrupted: as asked".to_owned()));
     assert_eq!(session.lines(&waiting)[1], "-> execute_reply aborted");
     // Nothing runs now, so this one has no effect.
-    session.ask_by(Inlet::Control, InterruptRequest {}).await;
+    assert!(session.ask_by(Inlet::Control, InterruptRequest {}).await.1.is_continue());
     assert!(session.run_to_end("result b").await.contains(&"-> execute_reply ok".to_owned()));
 }
 
