@@ -14,14 +14,46 @@ use super::outputs::Outputs;
 use super::pictures::Pictures;
 use super::screen::Screen;
 use super::target::Target;
-use crate::cells::types::{CellReply, CellRequest, Outcome, Timings};
-use crate::session::evaluator::Evaluator;
+use crate::cells::Engine;
+use crate::cells::types::{CellEvent, CellReply, CellRequest, Outcome, Timings};
 use crate::setup::progress::clock;
 
 /// How many events of a cell may wait to be taken.
 const WAITING: usize = 256;
 /// How often the line on the terminal is brought up to date.
 const TICK: Duration = Duration::from_millis(200);
+
+/// What a run needs of an engine; the tests have one that only pretends.
+pub trait Runner {
+    /// Runs one cell. Everything that it showed has been sent when this returns.
+    async fn execute(&mut self, request: CellRequest, events: mpsc::Sender<CellEvent>)
+    -> CellReply;
+
+    /// A handle that stops the running cell.
+    fn interrupter(&self) -> Box<dyn Fn()>;
+
+    /// Ends the session.
+    async fn shutdown(self);
+}
+
+impl Runner for Engine {
+    async fn execute(
+        &mut self,
+        request: CellRequest,
+        events: mpsc::Sender<CellEvent>,
+    ) -> CellReply {
+        Engine::execute(self, request, events).await
+    }
+
+    fn interrupter(&self) -> Box<dyn Fn()> {
+        let interrupter = Engine::interrupter(self);
+        Box::new(move || interrupter.interrupt())
+    }
+
+    async fn shutdown(self) {
+        Engine::shutdown(self).await;
+    }
+}
 
 /// What came of a run.
 #[derive(Debug, Clone, PartialEq, Eq)]
@@ -43,7 +75,7 @@ pub struct Summary {
 pub async fn run_cells(
     document: &mut Document,
     pictures: &mut Pictures,
-    engine: &mut impl Evaluator,
+    engine: &mut impl Runner,
     screen: &Screen,
 ) -> Summary {
     document.clear_results();
@@ -96,7 +128,7 @@ pub async fn run_cells(
 /// Runs one cell while taking what it shows; an interrupt from the keyboard stops the cell, not the
 /// program, so that what was done before is still written.
 async fn run_cell(
-    engine: &mut impl Evaluator,
+    engine: &mut impl Runner,
     request: CellRequest,
     outputs: &mut Outputs,
     screen: &Screen,
@@ -148,11 +180,11 @@ fn timings(timings: Timings) -> Value {
 ///
 /// # Errors
 /// The notebook cannot be read, the engine does not start, or the results cannot be written.
-pub async fn run_file<E: Evaluator>(
+pub async fn run_file<R: Runner>(
     notebook: &Path,
     output: Option<&Path>,
     rust_release: &str,
-    start: impl AsyncFnOnce() -> Result<E, String>,
+    start: impl AsyncFnOnce() -> Result<R, String>,
 ) -> Result<Summary, RunError> {
     let mut document = Document::read(notebook)?;
     let target = Target::choose(notebook, output)?;

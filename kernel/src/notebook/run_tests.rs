@@ -1,14 +1,14 @@
 //! Runs with a scripted evaluator: what the notebook gets from events and replies.
 
 use super::*;
-use crate::cells::types::{CellEvent, CellFailure, MimeBundle, Scope, StreamName};
+use crate::cells::types::{CellEvent, CellFailure, MimeBundle, StreamName};
 
 /// Answers by the text of the cell.
 struct Scripted {
     seen: Vec<CellRequest>,
 }
 
-impl Evaluator for Scripted {
+impl Runner for Scripted {
     async fn execute(
         &mut self,
         request: CellRequest,
@@ -53,16 +53,8 @@ impl Evaluator for Scripted {
         CellReply { outcome, timings }
     }
 
-    async fn evaluate(&mut self, _expression: &str) -> Result<MimeBundle, CellFailure> {
-        unreachable!("a run evaluates no expressions beside cells")
-    }
-
-    fn interrupter(&self) -> crate::session::evaluator::Interrupt {
+    fn interrupter(&self) -> Box<dyn Fn()> {
         Box::new(|| ())
-    }
-
-    fn scope(&self) -> Scope {
-        Scope::default()
     }
 
     async fn shutdown(self) {}
