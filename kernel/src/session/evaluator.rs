@@ -9,6 +9,7 @@ use std::time::{Duration, Instant};
 use tokio::sync::{mpsc, oneshot};
 
 use super::engine::Progress;
+use crate::cells::Engine;
 use crate::cells::types::{
     CellEvent, CellFailure, CellReply, CellRequest, EngineOptions, MimeBundle, Scope,
 };
@@ -47,7 +48,7 @@ const MENTION_EVERY: Duration = Duration::from_secs(5);
 /// # Errors
 ///
 /// What is missing and what to do about it, in words for the user.
-pub async fn start(options: EngineOptions, progress: Progress) -> Result<NoEngine, String> {
+pub async fn start(options: EngineOptions, progress: Progress) -> Result<Engine, String> {
     let kit = prepare(progress.clone()).await?;
     let index = kit.index.clone();
     // Reading the index takes longer than anything else in a warm start, and no cell needs it.
@@ -58,8 +59,7 @@ pub async fn start(options: EngineOptions, progress: Progress) -> Result<NoEngin
             index.display()
         )),
     })?;
-    let _ = options;
-    Err("not built yet".to_owned())
+    Engine::start(kit, options).await.map_err(|error| error.to_string())
 }
 
 /// Finds or builds the kit, on a thread of its own: a build waits for cargo, and this thread must
@@ -107,25 +107,29 @@ fn mention(event: &SetupEvent, mentioned: &mut Option<Instant>) -> Option<String
     }
 }
 
-/// Placeholder.
-pub struct NoEngine;
-
-impl Evaluator for NoEngine {
+impl Evaluator for Engine {
     async fn execute(
         &mut self,
-        _request: CellRequest,
-        _events: mpsc::Sender<CellEvent>,
+        request: CellRequest,
+        events: mpsc::Sender<CellEvent>,
     ) -> CellReply {
-        unreachable!()
+        Engine::execute(self, request, events).await
     }
-    async fn evaluate(&mut self, _expression: &str) -> Result<MimeBundle, CellFailure> {
-        unreachable!()
+
+    async fn evaluate(&mut self, expression: &str) -> Result<MimeBundle, CellFailure> {
+        Engine::evaluate(self, expression).await
     }
+
     fn interrupter(&self) -> Interrupt {
-        Box::new(|| ())
+        let interrupter = Engine::interrupter(self);
+        Box::new(move || interrupter.interrupt())
     }
+
     fn scope(&self) -> Scope {
-        Scope::default()
+        Engine::scope(self)
     }
-    async fn shutdown(self) {}
+
+    async fn shutdown(self) {
+        Engine::shutdown(self).await;
+    }
 }

@@ -101,8 +101,7 @@ pub enum InstallError {
 /// An [`InstallError`] that names the folder or file at fault. What was registered before stays
 /// usable unless its `kernel.json` was the file that failed.
 pub fn install(place: &Place) -> Result<Installed, InstallError> {
-    let program =
-        std::env::current_exe().map_err(|source| InstallError::NoProgram { source })?;
+    let program = std::env::current_exe().map_err(|source| InstallError::NoProgram { source })?;
     let data = match place {
         Place::User => user_data(|name| std::env::var_os(name).map(PathBuf::from))
             .ok_or(InstallError::NoUserFolder)?,
@@ -220,10 +219,7 @@ mod tests {
         };
         let home = ("HOME", "/home/u");
         let xdg = ("XDG_DATA_HOME", "/data");
-        assert_eq!(
-            with(&[home, xdg, ("JUPYTER_DATA_DIR", "/own")]).unwrap(),
-            Path::new("/own")
-        );
+        assert_eq!(with(&[home, xdg, ("JUPYTER_DATA_DIR", "/own")]).unwrap(), Path::new("/own"));
         assert_eq!(with(&[]), None);
         if !cfg!(target_os = "macos") {
             assert_eq!(with(&[home, xdg]).unwrap(), Path::new("/data/jupyter"));
