@@ -26,11 +26,6 @@ const TAIL: usize = 40;
 /// How often progress is reported while nothing finishes.
 const TICK: Duration = Duration::from_millis(500);
 
-/// How often a library of another workspace is built over.
-const ATTEMPTS: u8 = 2;
-/// The linker's notes stand within this many bytes of a library's beginning.
-const HEAD: u64 = 1 << 20;
-
 /// What cargo built.
 pub struct Built {
     /// The prelude as a shared library.
@@ -141,23 +136,9 @@ pub fn build(
     let packages: BTreeMap<String, Package> =
         metadata.packages.into_iter().map(|package| (package.id.clone(), package)).collect();
     let all = reachable(&metadata.resolve, &packages, &root, true);
-    let built = (0..ATTEMPTS).find_map(|attempt| {
-        let mark = Mark { name, attempt };
-        let artifacts = run_cargo(&cargo, place, compiler, &mark, all.len(), progress);
-        let dylib = artifacts.as_ref().ok().and_then(|artifacts| library(artifacts, &root));
-        match (artifacts, dylib) {
-            (Err(error), _) => Some(Err(error)),
-            (Ok(artifacts), Some(dylib)) => match mark.is_in(&dylib) {
-                Ok(true) => Some(Ok((artifacts, dylib))),
-                Ok(false) => None,
-                Err(error) => Some(Err(SetupError::files("read", &dylib)(error))),
-            },
-            (Ok(_), None) => None,
-        }
-    });
-    let (artifacts, dylib) = built.unwrap_or_else(|| {
-        Err(SetupError::UnexpectedBuild { what: "the prelude's library".to_owned() })
-    })?;
+    let artifacts = run_cargo(&cargo, place, compiler, name, all.len(), progress)?;
+    let dylib = library(&artifacts, &root)
+        .ok_or_else(|| SetupError::UnexpectedBuild { what: "the prelude's library".to_owned() })?;
     let within = reachable(&metadata.resolve, &packages, &root, false);
     let inside =
         packages.into_iter().filter(|(id, _)| within.contains(id) && *id != root).collect();
@@ -246,7 +227,7 @@ fn run_cargo(
     cargo: &Path,
     place: &Place,
     compiler: &Compiler,
-    mark: &Mark<'_>,
+    name: &str,
     total: usize,
     progress: &mut dyn FnMut(SetupEvent),
 ) -> Result<Vec<Artifact>, SetupError> {
@@ -257,7 +238,7 @@ fn run_cargo(
         .args(["rustc", "--release", "--locked", "-p", "semiaxis", "--crate-type", "dylib"])
         .args(chosen)
         .args(["--message-format=json-render-diagnostics", "--color=never", "--"])
-        .args(prelude_flags(compiler, mark))
+        .args(prelude_flags(compiler, name))
         .stdout(Stdio::piped())
         .stderr(Stdio::piped())
         .spawn()
@@ -295,40 +276,18 @@ fn run_cargo(
 
 /// The flags for the prelude's library alone: cells and it share one standard library, and it finds
 /// that library beside itself or in the compiler's own folder.
-fn prelude_flags(compiler: &Compiler, mark: &Mark<'_>) -> Vec<String> {
+///
+/// The name of the kit goes into the linker's build identifier for cargo's sake. Cargo compares times
+/// of files under names relative to the workspace, so of two workspaces that share a folder for build
+/// results it would take the other's library for this one's; flags it compares as they are.
+fn prelude_flags(compiler: &Compiler, name: &str) -> Vec<String> {
     let library = compiler.sysroot.join("lib");
     vec![
         "-Cprefer-dynamic".to_owned(),
         "-Clink-arg=-Wl,-rpath,$ORIGIN".to_owned(),
         format!("-Clink-arg=-Wl,-rpath,{}", library.display()),
-        format!("-Clink-arg=-Wl,--build-id=0x{}", mark.hex()),
+        format!("-Clink-arg=-Wl,--build-id=0x{name}"),
     ]
-}
-
-/// What the linker writes into the library, so that it can be known again.
-///
-/// Cargo gives a shared library no name of its own, so two workspaces that share a folder for build
-/// results overwrite each other's, and neither notices. A library with another mark is another
-/// workspace's; a second attempt has another mark and is therefore really built.
-struct Mark<'a> {
-    name: &'a str,
-    attempt: u8,
-}
-
-impl Mark<'_> {
-    fn hex(&self) -> String {
-        format!("{}{:02x}", self.name, self.attempt)
-    }
-
-    fn is_in(&self, library: &Path) -> std::io::Result<bool> {
-        let hex = self.hex();
-        let bytes: Vec<u8> = (0..hex.len() / 2)
-            .filter_map(|at| u8::from_str_radix(hex.get(2 * at..2 * at + 2)?, 16).ok())
-            .collect();
-        let mut head = Vec::new();
-        std::fs::File::open(library)?.take(HEAD).read_to_end(&mut head)?;
-        Ok(head.windows(bytes.len()).any(|window| window == bytes))
-    }
 }
 
 /// The library among the files that cargo made.

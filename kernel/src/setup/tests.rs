@@ -166,7 +166,7 @@ fn two_workspaces_that_share_a_target_folder_do_not_mix_up_their_libraries() {
     let symbols =
         |kit: &Kit| String::from_utf8_lossy(&fs::read(&kit.prelude).unwrap()).into_owned();
     assert!(symbols(&first).contains("twice") && !symbols(&first).contains("other"));
-    // Cargo finds nothing to do for the first workspace, although its library was built over.
+    // The first workspace's files are older than the library that was built over its own.
     fs::remove_dir_all(&first.dir).unwrap();
     let again = ensure(&one);
     assert!(symbols(&again).contains("twice") && !symbols(&again).contains("other"));
