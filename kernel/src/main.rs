@@ -15,6 +15,7 @@ use clap::{Parser, Subcommand};
 
 use cells::Engine;
 use cells::types::EngineOptions;
+use setup::install::Place;
 use setup::{Kit, Reporter};
 
 /// Everything went as it should.
@@ -44,6 +45,23 @@ enum Command {
         #[arg(long, value_name = "FILE")]
         output: Option<PathBuf>,
     },
+    /// Serve a notebook client; clients start this themselves, with a connection file.
+    ///
+    /// The status is 0 after an orderly shutdown, 2 if the connection file cannot be used and 3 if
+    /// a socket that it names cannot be bound.
+    Kernel {
+        /// The file in which the client says where it will look for the kernel.
+        connection_file: PathBuf,
+    },
+    /// Register this program as a kernel, so that notebook clients offer it.
+    Install {
+        /// Register it for you alone; this is what happens without any option, too.
+        #[arg(long, conflicts_with = "prefix")]
+        user: bool,
+        /// Register it in DIR/share/jupyter, for a Python environment or a whole machine.
+        #[arg(long, value_name = "DIR")]
+        prefix: Option<PathBuf>,
+    },
     /// Build what cells compile against, as the first start of a kernel does, and say where it is.
     Prepare,
     /// Runs the cells of a kernel; kernels start this themselves.
@@ -61,11 +79,27 @@ enum Command {
 fn main() -> ExitCode {
     match Arguments::parse().command {
         Command::Run { notebook, output } => run(&notebook, output.as_deref()),
+        Command::Kernel { connection_file } => {
+            session::serve(&connection_file, EngineOptions::default())
+        }
+        Command::Install { user: _, prefix } => {
+            install(&prefix.map_or(Place::User, Place::Prefix))
+        }
         Command::Prepare => prepare(),
         Command::Worker { prelude, commands, reports } => {
             let status = worker::host::main(&prelude, commands, reports);
             std::process::exit(status)
         }
+    }
+}
+
+fn install(place: &Place) -> ExitCode {
+    match setup::install::install(place) {
+        Ok(installed) => {
+            println!("{installed}");
+            ExitCode::from(OK)
+        }
+        Err(error) => could_not(&error),
     }
 }
 

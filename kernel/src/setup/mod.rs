@@ -11,6 +11,7 @@ pub mod build;
 pub mod compiler;
 pub mod error;
 pub mod index;
+pub mod install;
 pub mod kit;
 pub mod progress;
 pub mod stamp;
