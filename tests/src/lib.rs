@@ -1,1 +1,3 @@
 //! Everything that crosses crates.
+
+pub mod compare;
