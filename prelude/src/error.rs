@@ -8,6 +8,8 @@
 //! characters escaped, so that a hostile name cannot forge a message or move a terminal's cursor.
 
 mod message;
+#[cfg(test)]
+mod tests;
 
 use std::path::PathBuf;
 

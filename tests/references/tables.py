@@ -4,7 +4,7 @@ other programs, so that reading is tested against other writers than our own.
     python -m venv venv && venv/bin/pip install pandas pyarrow
     venv/bin/python tables.py
 
-Made with pandas 2 or 3 and pyarrow; never run by the tests.
+Made with pandas 3.1.1 and pyarrow 26.0.1; never run by the tests.
 """
 
 import pathlib

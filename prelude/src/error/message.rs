@@ -178,11 +178,7 @@ impl fmt::Display for Error {
                     write!(f, " ({})", Name(label))?;
                 }
                 if *count > 1 {
-                    write!(
-                        f,
-                        ", and {} that are not finite elsewhere",
-                        plural(count - 1, "value")
-                    )?;
+                    write!(f, " and has {} not finite", plural(count - 1, "more value"))?;
                 }
                 write!(f, "; only finite numbers are accepted")
             }
