@@ -2,3 +2,4 @@
 
 pub mod client;
 pub mod command;
+pub mod compare;

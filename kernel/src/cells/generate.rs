@@ -50,6 +50,8 @@ pub struct Without {
     pub returns: BTreeSet<String>,
     /// Declared variables that cannot outlive the cell.
     pub keeps: BTreeSet<String>,
+    /// Declared variables that the cell itself moves on, or never gives a value.
+    pub spent: BTreeSet<String>,
     /// `use` lines of earlier cells that no longer hold, by place in the account.
     pub uses: BTreeSet<usize>,
 }
@@ -64,6 +66,7 @@ impl Without {
     pub fn extend(&mut self, other: Self) {
         self.returns.extend(other.returns);
         self.keeps.extend(other.keeps);
+        self.spent.extend(other.spent);
         self.uses.extend(other.uses);
     }
 }
@@ -227,11 +230,12 @@ fn entry(text: &mut Generated, plan: &Plan<'_>, without: &Without) {
     if let Some(tail) = &plan.parsed.tail {
         final_expression(text, plan, tail);
     }
-    for declared in &plan.declares {
+    let left = || plan.declares.iter().filter(|declared| !without.spent.contains(&declared.name));
+    for declared in left() {
         let line = format!("::core::mem::drop(&{});\n", raw(&declared.name));
         text.of(Origin::Type(declared.name.clone()), &line);
     }
-    for declared in plan.declares.iter().filter(|d| !without.keeps.contains(&d.name)) {
+    for declared in left().filter(|declared| !without.keeps.contains(&declared.name)) {
         let line = format!("__semiaxis.put({0:?}, {1});\n", declared.name, raw(&declared.name));
         text.of(Origin::Keep(declared.name.clone()), &line);
     }
