@@ -1,3 +1,5 @@
 //! Everything that crosses crates.
 
 pub mod client;
+pub mod command;
+pub mod compare;
