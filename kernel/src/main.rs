@@ -8,4 +8,13 @@ mod setup;
 mod wire;
 mod worker;
 
-fn main() {}
+fn main() {
+    let mut reporter = setup::Reporter::new();
+    match setup::ensure(&mut |event| reporter.show(event)) {
+        Ok(kit) => println!("{}", kit.dir.display()),
+        Err(error) => {
+            eprintln!("semiaxis: {error}");
+            std::process::exit(2);
+        }
+    }
+}

@@ -1,9 +1,344 @@
-//! The one error type of the prelude.
+//! The one error type of the prelude: what went wrong, where, and what would be accepted.
+//!
+//! Messages are lower case without a final period. They name the column, row, line or file at
+//! fault, the limit that was passed, and a way out where there is one. Rows are counted from 1 as
+//! rows of data, lines from 1 as lines of the file.
+//!
+//! Names that come from a user's file are shown between backquotes, cut when long, with control
+//! characters escaped, so that a hostile name cannot forge a message or move a terminal's cursor.
+
+mod message;
+
+use std::path::PathBuf;
+
+use polars::prelude::PolarsError;
+
+/// The prelude's result.
+pub type Result<T, E = Error> = std::result::Result<T, E>;
+
+/// A column together with a count, as errors and notes report it.
+#[derive(Debug, Clone, PartialEq, Eq)]
+pub struct ColumnCount {
+    /// The column's name.
+    pub column: String,
+    /// How many of its cells are meant.
+    pub count: usize,
+}
 
 /// What can go wrong in the prelude.
 #[derive(Debug)]
 #[non_exhaustive]
-pub enum Error {}
+pub enum Error {
+    // Reading files.
+    /// There is no file at the path.
+    FileMissing {
+        /// The path as it was asked for.
+        path: PathBuf,
+        /// The folder that relative paths start from.
+        working_dir: PathBuf,
+        /// Files in the same folder with a name much like it.
+        similar: Vec<String>,
+    },
+    /// The path leads to a folder.
+    IsFolder {
+        /// The path as it was asked for.
+        path: PathBuf,
+        /// Files inside it that could be read as a table.
+        readable: Vec<String>,
+    },
+    /// The file's name does not end in an extension that says how to read or write it.
+    UnknownExtension {
+        /// The path as it was asked for.
+        path: PathBuf,
+        /// The extensions that are accepted.
+        accepted: &'static [&'static str],
+    },
+    /// The file holds no bytes, or nothing but white space.
+    EmptyFile {
+        /// The file.
+        path: PathBuf,
+    },
+    /// A file that should be text holds bytes that no text holds.
+    NotText {
+        /// The file.
+        path: PathBuf,
+        /// The line of the first such byte.
+        line: usize,
+        /// The byte.
+        byte: u8,
+    },
+    /// A row has another number of fields than the header.
+    RaggedRows {
+        /// The file.
+        path: PathBuf,
+        /// The line of the first such row.
+        line: usize,
+        /// Fields in the header.
+        expected: usize,
+        /// Fields in that row.
+        found: usize,
+        /// Rows that differ from the header.
+        n_ragged: usize,
+        /// Rows of data in the file.
+        n_rows: usize,
+    },
+    /// The header is one field that holds another delimiter.
+    WrongDelimiter {
+        /// The file.
+        path: PathBuf,
+        /// The delimiter that was used.
+        used: char,
+        /// The delimiter that the header seems to use.
+        seen: char,
+        /// The fields that delimiter would give.
+        n_fields: usize,
+    },
+    /// A quoted field is never closed.
+    UnclosedQuote {
+        /// The file.
+        path: PathBuf,
+        /// The line where the quote opens.
+        line: usize,
+    },
+    /// A column of the file has no name.
+    UnnamedColumn {
+        /// The file.
+        path: PathBuf,
+        /// Its place, counted from 1.
+        position: usize,
+    },
+    /// Several columns have the same name.
+    DuplicateColumns {
+        /// Each repeated name and how often it stands there.
+        columns: Vec<ColumnCount>,
+    },
+    /// A line of a JSON-lines file is not a JSON object.
+    BadJsonLine {
+        /// The file.
+        path: PathBuf,
+        /// The line.
+        line: usize,
+        /// What the JSON reader found.
+        reason: String,
+    },
+    /// The file is damaged, cut short, or not of the kind its extension says.
+    Unreadable {
+        /// The file.
+        path: PathBuf,
+        /// The kind of file its extension names.
+        format: &'static str,
+        /// What the reader of that kind found.
+        reason: String,
+    },
+    /// The operating system refused.
+    Io {
+        /// What was attempted.
+        action: &'static str,
+        /// The file, where one is known.
+        path: Option<PathBuf>,
+        /// The system's own error.
+        source: std::io::Error,
+    },
+    /// A data-frame operation failed.
+    Polars {
+        /// The data-frame library's own error.
+        source: PolarsError,
+    },
 
-/// The prelude's result.
-pub type Result<T, E = Error> = std::result::Result<T, E>;
+    // From table to matrix.
+    /// A column that was asked for does not exist.
+    UnknownColumn {
+        /// The name that was asked for.
+        name: String,
+        /// The name most like it.
+        nearest: Option<String>,
+        /// The names there are.
+        available: Vec<String>,
+    },
+    /// A row label that was asked for does not exist.
+    UnknownLabel {
+        /// The label that was asked for.
+        label: String,
+        /// The label most like it.
+        nearest: Option<String>,
+    },
+    /// The same name was asked for twice.
+    RepeatedRequest {
+        /// The name.
+        name: String,
+    },
+    /// The table has no numeric column.
+    NoNumericColumns {
+        /// The columns there are, each with its type.
+        columns: Vec<(String, String)>,
+    },
+    /// A column that was asked for as numbers holds something else.
+    NotNumeric {
+        /// The column.
+        column: String,
+        /// Its type.
+        dtype: String,
+        /// The first value that is not a number, and its row.
+        example: Option<(String, usize)>,
+    },
+    /// Values are missing and no policy for them was chosen.
+    MissingValues {
+        /// Columns with missing values, and how many each.
+        columns: Vec<ColumnCount>,
+        /// Rows in the table.
+        n_rows: usize,
+        /// Rows without a missing value.
+        n_complete: usize,
+    },
+    /// Columns hold no value at all.
+    AllMissing {
+        /// The columns.
+        columns: Vec<String>,
+    },
+    /// Dropping rows with missing values would leave none.
+    NoCompleteRow {
+        /// Columns with missing values, and how many each.
+        columns: Vec<ColumnCount>,
+        /// Rows in the table.
+        n_rows: usize,
+    },
+    /// Values are infinite, or not a number.
+    NonFinite {
+        /// The column of the first of them.
+        column: String,
+        /// Its row.
+        row: usize,
+        /// Its row's label.
+        label: String,
+        /// The value.
+        value: f64,
+        /// How many such values there are.
+        count: usize,
+    },
+    /// The table or the selection has no rows.
+    NoRows,
+    /// The table or the selection has no columns.
+    NoColumns,
+    /// A label column has missing labels.
+    MissingLabels {
+        /// The label column.
+        column: String,
+        /// The first row without a label.
+        row: usize,
+        /// How many labels are missing.
+        count: usize,
+    },
+    /// Two rows carry the same label.
+    RepeatedLabel {
+        /// The label column, where there is one.
+        column: Option<String>,
+        /// The label.
+        label: String,
+        /// The first two rows that carry it.
+        rows: (usize, usize),
+    },
+    /// Counts that should agree do not.
+    ShapeMismatch {
+        /// What was counted.
+        what: &'static str,
+        /// The count that was needed.
+        expected: usize,
+        /// The count that was given.
+        found: usize,
+    },
+
+    // Statistics.
+    /// A method needs more rows.
+    TooFewRows {
+        /// The method.
+        method: &'static str,
+        /// Rows it needs.
+        needed: usize,
+        /// Rows there are.
+        found: usize,
+    },
+    /// A method needs more columns.
+    TooFewColumns {
+        /// The method.
+        method: &'static str,
+        /// Columns it needs.
+        needed: usize,
+        /// Columns there are.
+        found: usize,
+    },
+    /// Columns do not vary, and so cannot be brought to unit variance.
+    ConstantColumns {
+        /// Each such column and the value it holds throughout.
+        columns: Vec<(String, f64)>,
+    },
+    /// No column varies.
+    NoVariation {
+        /// Rows there are.
+        n_rows: usize,
+    },
+    /// A value is too large or a spread too small to be squared in double precision.
+    Magnitude {
+        /// The column.
+        column: String,
+        /// The largest absolute deviation from the column's mean.
+        value: f64,
+        /// The smallest deviation that is accepted.
+        least: f64,
+        /// The largest deviation that is accepted.
+        most: f64,
+    },
+    /// More components were asked for than there are.
+    ComponentOutOfRange {
+        /// How many, or which, was asked for.
+        asked: usize,
+        /// How many there are.
+        available: usize,
+    },
+    /// New rows do not have the variables that an analysis was made with.
+    VariablesDiffer {
+        /// Variables of the analysis that the new rows lack.
+        missing: Vec<String>,
+        /// Variables of the new rows that the analysis does not know.
+        extra: Vec<String>,
+        /// The first place, counted from 1, where the order differs: wanted and found.
+        order: Option<(usize, String, String)>,
+    },
+    /// An option lies outside its range.
+    OptionOutOfRange {
+        /// The option.
+        option: &'static str,
+        /// The value that was given.
+        value: f64,
+        /// What is accepted, in words.
+        accepted: &'static str,
+    },
+    /// The computation was asked to stop.
+    Interrupted,
+    /// An iteration ended without a usable answer.
+    NoConvergence {
+        /// The method.
+        method: &'static str,
+    },
+}
+
+impl std::error::Error for Error {
+    fn source(&self) -> Option<&(dyn std::error::Error + 'static)> {
+        match self {
+            Error::Io { source, .. } => Some(source),
+            Error::Polars { source } => Some(source),
+            _ => None,
+        }
+    }
+}
+
+impl From<PolarsError> for Error {
+    fn from(source: PolarsError) -> Self {
+        Error::Polars { source }
+    }
+}
+
+impl From<std::io::Error> for Error {
+    fn from(source: std::io::Error) -> Self {
+        Error::Io { action: "read or write", path: None, source }
+    }
+}

@@ -6,6 +6,7 @@ pub mod exhibit;
 pub mod live;
 pub mod parallel;
 pub mod prelude;
+pub mod random;
 pub mod table;
 
 pub use error::{Error, Result};

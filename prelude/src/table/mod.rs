@@ -1,1 +1,25 @@
-//! (to be written)
+//! Tables and the matrices made from them.
+//!
+//! A file becomes a data frame with [`read_table`], a data frame becomes a [`DataMatrix`] with
+//! [`FrameToMatrix`], and every analysis starts from the latter. Nothing is repaired silently on
+//! the way: what cannot be read as it stands is an error that says where and what would be
+//! accepted, and what is left out by choice is listed in the matrix's notes.
+//!
+//! Conventions: rows are observations and columns are variables; rows are counted from 1 in
+//! messages; a missing value is a cell without content, or one that says `NA` (see
+//! [`TableOptions`]), and is not the same as a number that is not finite.
+
+mod describe;
+mod matrix;
+mod named;
+mod nearest;
+mod notes;
+mod options;
+
+pub use describe::{
+    ColumnDescription, ColumnDescriptions, MissingPattern, MissingValues, NumberDescription,
+};
+pub use matrix::DataMatrix;
+pub use named::NamedMatrix;
+pub use notes::{DroppedRow, LabelSource, LeftOut, LeftOutReason, MatrixNotes};
+pub use options::{Label, MatrixOptions, Missing};

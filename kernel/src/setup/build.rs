@@ -1,0 +1,461 @@
+//! Cargo's part: building the prelude as a shared library, with every step of it reported.
+//!
+//! Cargo is asked twice. `cargo metadata` says which packages belong to the build, so that progress
+//! has a total and host-only crates can be told from those inside the library; `cargo rustc` builds
+//! and names every file that it made. The flags after `--` reach the prelude alone, so all
+//! dependencies are shared with an ordinary release build of the workspace.
+
+use std::collections::{BTreeMap, BTreeSet};
+use std::io::{BufRead, BufReader, Read};
+use std::path::{Path, PathBuf};
+use std::process::{Command, Stdio};
+use std::sync::mpsc::{self, RecvTimeoutError, Sender};
+use std::thread;
+use std::time::{Duration, Instant};
+
+use serde::Deserialize;
+
+use super::compiler::{Compiler, command_path};
+use super::error::SetupError;
+use super::progress::SetupEvent;
+
+/// How many of cargo's last lines a failure shows.
+const TAIL: usize = 40;
+/// How often progress is reported while nothing finishes.
+const TICK: Duration = Duration::from_millis(500);
+
+/// What cargo built.
+pub struct Built {
+    /// The prelude as a shared library.
+    pub dylib: PathBuf,
+    /// Every library and procedural macro that took part.
+    pub artifacts: Vec<Artifact>,
+    /// The packages inside the library, by cargo's identifier.
+    pub inside: BTreeMap<String, Package>,
+    /// Where cargo put everything.
+    pub target_dir: PathBuf,
+}
+
+/// One file set that cargo made, as it reports it.
+#[derive(Debug, Clone, Deserialize)]
+pub struct Artifact {
+    /// Cargo's identifier of the package.
+    pub package_id: String,
+    /// Which target of the package.
+    pub target: Target,
+    /// How it was compiled.
+    pub profile: ArtifactProfile,
+    /// The features it was compiled with.
+    pub features: Vec<String>,
+    /// The files.
+    pub filenames: Vec<PathBuf>,
+}
+
+/// The part of a package that an artifact was made from.
+#[derive(Debug, Clone, Deserialize)]
+pub struct Target {
+    /// `lib`, `proc-macro`, `custom-build` and so on.
+    pub kind: Vec<String>,
+    /// Its name as a package file writes it.
+    pub name: String,
+}
+
+/// The one setting that tells a build for the host from one for the library.
+#[derive(Debug, Clone, Deserialize)]
+pub struct ArtifactProfile {
+    /// The optimisation level; cargo compiles what only build scripts and macros need at 0.
+    pub opt_level: String,
+}
+
+/// A package as `cargo metadata` knows it.
+#[derive(Debug, Clone, Deserialize)]
+pub struct Package {
+    /// Cargo's identifier.
+    pub id: String,
+    /// Its name.
+    pub name: String,
+    /// Its version.
+    pub version: String,
+    /// Its manifest.
+    pub manifest_path: PathBuf,
+    /// What it consists of.
+    pub targets: Vec<Target>,
+}
+
+#[derive(Deserialize)]
+struct Metadata {
+    packages: Vec<Package>,
+    resolve: Resolve,
+    target_directory: PathBuf,
+}
+
+#[derive(Deserialize)]
+struct Resolve {
+    nodes: Vec<Node>,
+}
+
+#[derive(Deserialize)]
+struct Node {
+    id: String,
+    deps: Vec<NodeDependency>,
+}
+
+#[derive(Deserialize)]
+struct NodeDependency {
+    pkg: String,
+    dep_kinds: Vec<DependencyKind>,
+}
+
+#[derive(Deserialize)]
+struct DependencyKind {
+    kind: Option<String>,
+}
+
+/// Builds the prelude of a workspace.
+///
+/// # Errors
+/// There is no cargo, the build fails, or the disk is full.
+pub fn build(
+    workspace: &Path,
+    compiler: &Compiler,
+    progress: &mut dyn FnMut(SetupEvent),
+) -> Result<Built, SetupError> {
+    let cargo = cargo(compiler)?;
+    let metadata = metadata(&cargo, workspace, compiler)?;
+    let prelude = workspace.join("prelude").join("Cargo.toml");
+    let root = metadata
+        .packages
+        .iter()
+        .find(|package| same_file(&package.manifest_path, &prelude))
+        .map(|package| package.id.clone())
+        .ok_or_else(|| SetupError::UnexpectedBuild { what: "the prelude's package".to_owned() })?;
+    let packages: BTreeMap<String, Package> =
+        metadata.packages.into_iter().map(|package| (package.id.clone(), package)).collect();
+    let all = reachable(&metadata.resolve, &packages, &root, true);
+    let artifacts = run_cargo(&cargo, workspace, compiler, all.len(), progress)?;
+    let dylib = artifacts
+        .iter()
+        .rev()
+        .filter(|artifact| artifact.package_id == root)
+        .flat_map(|artifact| &artifact.filenames)
+        .find(|file| file.extension().is_some_and(|end| end == std::env::consts::DLL_EXTENSION))
+        .cloned()
+        .ok_or_else(|| SetupError::UnexpectedBuild { what: "the prelude's library".to_owned() })?;
+    let within = reachable(&metadata.resolve, &packages, &root, false);
+    let inside =
+        packages.into_iter().filter(|(id, _)| within.contains(id) && *id != root).collect();
+    Ok(Built { dylib, artifacts, inside, target_dir: metadata.target_directory })
+}
+
+fn cargo(compiler: &Compiler) -> Result<PathBuf, SetupError> {
+    let given = std::env::var_os("CARGO").map(PathBuf::from).filter(|cargo| cargo.is_file());
+    let beside = compiler.rustc.with_file_name("cargo");
+    given
+        .or_else(|| command_path("cargo"))
+        .or_else(|| beside.is_file().then_some(beside))
+        .ok_or_else(|| SetupError::NoCargo { rustc: compiler.rustc.clone() })
+}
+
+/// Cargo in the workspace, without what an outer `cargo run` or `cargo test` tells about itself:
+/// build scripts that watch those variables would otherwise run, and compile, again.
+fn cargo_command(cargo: &Path, workspace: &Path) -> Command {
+    let mut command = Command::new(cargo);
+    command.current_dir(workspace).stdin(Stdio::null());
+    for (name, _) in std::env::vars_os() {
+        let text = name.to_string_lossy();
+        if ["CARGO_PKG_", "CARGO_MANIFEST_", "CARGO_BIN_", "CARGO_CRATE_", "CARGO_PRIMARY_"]
+            .iter()
+            .any(|prefix| text.starts_with(prefix))
+        {
+            command.env_remove(&name);
+        }
+    }
+    command
+}
+
+fn metadata(cargo: &Path, workspace: &Path, compiler: &Compiler) -> Result<Metadata, SetupError> {
+    let output = cargo_command(cargo, workspace)
+        .args(["metadata", "--format-version=1", "--locked", "--filter-platform", compiler.host()])
+        .output()
+        .map_err(SetupError::files("start", cargo))?;
+    if !output.status.success() {
+        let said = String::from_utf8_lossy(&output.stderr);
+        return Err(failed(workspace, output.status.to_string(), said.lines().map(str::to_owned)));
+    }
+    serde_json::from_slice(&output.stdout)
+        .map_err(|error| SetupError::UnexpectedBuild { what: format!("its metadata ({error})") })
+}
+
+/// The packages reachable from one: with `everything`, all that are compiled on the way, otherwise
+/// only those whose code ends in the library (no build scripts, nothing behind a procedural macro).
+fn reachable(
+    resolve: &Resolve,
+    packages: &BTreeMap<String, Package>,
+    root: &str,
+    everything: bool,
+) -> BTreeSet<String> {
+    let nodes: BTreeMap<&str, &Node> =
+        resolve.nodes.iter().map(|node| (node.id.as_str(), node)).collect();
+    let mut found = BTreeSet::new();
+    let mut waiting = vec![root];
+    while let Some(id) = waiting.pop() {
+        let is_macro = packages.get(id).is_some_and(|package| {
+            package.targets.iter().any(|target| target.kind.iter().any(|kind| kind == "proc-macro"))
+        });
+        if (is_macro && !everything) || !found.insert(id.to_owned()) {
+            continue;
+        }
+        for dependency in nodes.get(id).map(|node| node.deps.as_slice()).unwrap_or_default() {
+            let wanted = dependency.dep_kinds.iter().any(|kind| match kind.kind.as_deref() {
+                None => true,
+                Some("build") => everything,
+                Some(_) => false,
+            });
+            if wanted {
+                waiting.push(&dependency.pkg);
+            }
+        }
+    }
+    found
+}
+
+enum Line {
+    Out(String),
+    Err(String),
+}
+
+fn run_cargo(
+    cargo: &Path,
+    workspace: &Path,
+    compiler: &Compiler,
+    total: usize,
+    progress: &mut dyn FnMut(SetupEvent),
+) -> Result<Vec<Artifact>, SetupError> {
+    let mut child = cargo_command(cargo, workspace)
+        .args(["rustc", "--release", "--locked", "-p", "semiaxis", "--crate-type", "dylib"])
+        .args(["--message-format=json-render-diagnostics", "--color=never", "--"])
+        .args(prelude_flags(compiler))
+        .stdout(Stdio::piped())
+        .stderr(Stdio::piped())
+        .spawn()
+        .map_err(SetupError::files("start", cargo))?;
+    let (sender, lines) = mpsc::channel();
+    let readers = [
+        child.stdout.take().map(|out| forward(out, sender.clone(), Line::Out)),
+        child.stderr.take().map(|err| forward(err, sender, Line::Err)),
+    ];
+
+    let started = Instant::now();
+    let mut watched = Watched::new(total);
+    loop {
+        match lines.recv_timeout(TICK) {
+            Ok(Line::Out(line)) => watched.message(&line),
+            Ok(Line::Err(line)) => watched.said(line, progress),
+            Err(RecvTimeoutError::Timeout) => {}
+            Err(RecvTimeoutError::Disconnected) => break,
+        }
+        progress(watched.event(started.elapsed()));
+    }
+    for reader in readers.into_iter().flatten() {
+        // A reader only ends; it has nothing to report.
+        let _ = reader.join();
+    }
+    let status = child.wait().map_err(SetupError::files("wait for", cargo))?;
+    if status.success() {
+        return Ok(watched.artifacts);
+    }
+    if watched.tail.iter().any(|line| line.contains("No space left on device")) {
+        return Err(SetupError::DiskFull { path: super::kit::target_dir(workspace) });
+    }
+    Err(failed(workspace, status.to_string(), watched.tail.into_iter()))
+}
+
+/// The flags for the prelude's library alone: cells and it share one standard library, and it finds
+/// that library beside itself or in the compiler's own folder.
+fn prelude_flags(compiler: &Compiler) -> Vec<String> {
+    let library = compiler.sysroot.join("lib");
+    vec![
+        "-Cprefer-dynamic".to_owned(),
+        "-Clink-arg=-Wl,-rpath,$ORIGIN".to_owned(),
+        format!("-Clink-arg=-Wl,-rpath,{}", library.display()),
+    ]
+}
+
+fn forward(
+    from: impl Read + Send + 'static,
+    to: Sender<Line>,
+    wrap: fn(String) -> Line,
+) -> thread::JoinHandle<()> {
+    thread::spawn(move || {
+        let mut reader = BufReader::new(from);
+        let mut bytes = Vec::new();
+        while reader.read_until(b'\n', &mut bytes).is_ok_and(|read| read > 0) {
+            let line = String::from_utf8_lossy(&bytes).trim_end().to_owned();
+            if to.send(wrap(line)).is_err() {
+                return;
+            }
+            bytes.clear();
+        }
+    })
+}
+
+/// What is known of a running build.
+struct Watched {
+    total: usize,
+    finished: BTreeSet<String>,
+    current: Vec<String>,
+    artifacts: Vec<Artifact>,
+    tail: Vec<String>,
+}
+
+impl Watched {
+    fn new(total: usize) -> Self {
+        Self {
+            total,
+            finished: BTreeSet::new(),
+            current: Vec::new(),
+            artifacts: Vec::new(),
+            tail: Vec::new(),
+        }
+    }
+
+    /// One line of cargo's standard output: a JSON message, of which only artifacts matter.
+    fn message(&mut self, line: &str) {
+        let Ok(artifact) = serde_json::from_str::<Artifact>(line) else { return };
+        if artifact.target.kind.iter().any(|kind| kind == "custom-build") {
+            return;
+        }
+        let name = package_name(&artifact);
+        self.current.retain(|current| *current != name);
+        self.finished.insert(artifact.package_id.clone());
+        self.artifacts.push(artifact);
+    }
+
+    /// One line of cargo's standard error: what it starts, what it waits for, what went wrong.
+    fn said(&mut self, line: String, progress: &mut dyn FnMut(SetupEvent)) {
+        let words: Vec<&str> = line.split_whitespace().collect();
+        match words.as_slice() {
+            ["Compiling", name, ..] => self.current.push((*name).to_owned()),
+            ["Blocking", "waiting", ..] => {
+                progress(SetupEvent::Waiting { reason: "another cargo build to end".to_owned() });
+            }
+            _ => {}
+        }
+        if self.tail.len() == TAIL {
+            self.tail.remove(0);
+        }
+        self.tail.push(line);
+    }
+
+    fn event(&self, elapsed: Duration) -> SetupEvent {
+        let done = self.finished.len().min(self.total);
+        SetupEvent::Building { done, total: self.total, current: self.current.clone(), elapsed }
+    }
+}
+
+/// The name that cargo prints when it starts the package; targets may have names of their own.
+fn package_name(artifact: &Artifact) -> String {
+    let id = &artifact.package_id;
+    let after = id.rsplit_once('#').map_or(id.as_str(), |(_, after)| after);
+    match after.split_once('@') {
+        Some((name, _)) => name.to_owned(),
+        None => artifact.target.name.replace('_', "-"),
+    }
+}
+
+fn failed(workspace: &Path, status: String, lines: impl Iterator<Item = String>) -> SetupError {
+    let lines: Vec<String> = lines.filter(|line| !is_progress(line)).collect();
+    let tail = lines[lines.len().saturating_sub(TAIL)..].to_vec();
+    SetupError::BuildFailed { workspace: workspace.to_owned(), status, tail }
+}
+
+fn is_progress(line: &str) -> bool {
+    ["Compiling ", "Blocking ", "Downloading ", "Downloaded ", "Finished "]
+        .iter()
+        .any(|word| line.trim_start().starts_with(word))
+}
+
+fn same_file(one: &Path, other: &Path) -> bool {
+    one == other
+        || one.canonicalize().ok().is_some_and(|one| Some(one) == other.canonicalize().ok())
+}
+
+#[cfg(test)]
+mod tests {
+    use super::*;
+
+    /// A message as `cargo build --message-format=json` writes it (The Cargo Book, "External tools").
+    const ARTIFACT: &str = r#"{"reason":"compiler-artifact","package_id":"registry+https://example.invalid#serde_json@1.0.1","manifest_path":"/m","target":{"kind":["lib"],"crate_types":["lib"],"name":"serde_json","src_path":"/s","edition":"2021","doc":true,"doctest":true,"test":true},"profile":{"opt_level":"3","debuginfo":0,"debug_assertions":false,"overflow_checks":false,"test":false},"features":["std"],"filenames":["/t/libserde_json-1.rlib","/t/libserde_json-1.rmeta"],"executable":null,"fresh":true}"#;
+
+    #[test]
+    fn a_build_is_followed_from_cargo_s_own_words() {
+        let mut watched = Watched::new(2);
+        let mut events = Vec::new();
+        watched.said("   Compiling serde_json v1.0.1".to_owned(), &mut |e| events.push(e));
+        watched
+            .said("    Blocking waiting for file lock on build directory".to_owned(), &mut |e| {
+                events.push(e)
+            });
+        assert!(matches!(events.as_slice(), [SetupEvent::Waiting { .. }]));
+        assert_eq!(watched.current, ["serde_json"]);
+        watched.message(ARTIFACT);
+        watched.message("{\"reason\":\"build-finished\",\"success\":true}");
+        assert!(watched.current.is_empty());
+        assert_eq!(watched.artifacts[0].filenames.len(), 2);
+        let SetupEvent::Building { done, total, .. } = watched.event(Duration::ZERO) else {
+            panic!("a running build reports itself");
+        };
+        assert_eq!((done, total), (1, 2));
+    }
+
+    #[test]
+    fn what_stands_behind_a_macro_or_a_build_script_is_not_inside_the_library() {
+        let package = |id: &str, kind: &str| Package {
+            id: id.to_owned(),
+            name: id.to_owned(),
+            version: "1.0.0".to_owned(),
+            manifest_path: PathBuf::new(),
+            targets: vec![Target { kind: vec![kind.to_owned()], name: id.to_owned() }],
+        };
+        let node = |id: &str, deps: &[(&str, Option<&str>)]| Node {
+            id: id.to_owned(),
+            deps: deps
+                .iter()
+                .map(|(pkg, kind)| NodeDependency {
+                    pkg: (*pkg).to_owned(),
+                    dep_kinds: vec![DependencyKind { kind: kind.map(str::to_owned) }],
+                })
+                .collect(),
+        };
+        let packages: BTreeMap<String, Package> = [
+            ("root", "lib"),
+            ("inside", "lib"),
+            ("macro", "proc-macro"),
+            ("behind", "lib"),
+            ("script", "lib"),
+            ("test", "lib"),
+        ]
+        .into_iter()
+        .map(|(id, kind)| (id.to_owned(), package(id, kind)))
+        .collect();
+        let resolve = Resolve {
+            nodes: vec![
+                node(
+                    "root",
+                    &[
+                        ("inside", None),
+                        ("macro", None),
+                        ("script", Some("build")),
+                        ("test", Some("dev")),
+                    ],
+                ),
+                node("macro", &[("behind", None)]),
+            ],
+        };
+        let names = |everything| {
+            reachable(&resolve, &packages, "root", everything).into_iter().collect::<Vec<_>>()
+        };
+        assert_eq!(names(false), ["inside", "root"]);
+        assert_eq!(names(true), ["behind", "inside", "macro", "root", "script"]);
+    }
+}

@@ -1,0 +1,308 @@
+//! The words of the prelude's errors.
+//!
+//! Messages are lower case without a final period. Text that comes from outside is cut when long
+//! and printed with its control characters escaped.
+
+use std::fmt;
+
+use super::Error;
+
+impl fmt::Display for Error {
+    fn fmt(&self, f: &mut fmt::Formatter<'_>) -> fmt::Result {
+        match self {
+            Error::FileMissing { path, working_dir, similar } => {
+                write!(f, "there is no file {}", Name(&path.display().to_string()))?;
+                if path.is_relative() {
+                    let dir = working_dir.display().to_string();
+                    write!(f, "; relative paths start from {}", Name(&dir))?;
+                }
+                if !similar.is_empty() {
+                    write!(f, "; that folder has {}", Names(similar))?;
+                }
+                Ok(())
+            }
+            Error::IsFolder { path, readable } => {
+                write!(f, "{} is a folder, not a file", Name(&path.display().to_string()))?;
+                if readable.is_empty() {
+                    write!(f, ", and no file in it can be read as a table")
+                } else {
+                    write!(f, "; files in it that can be read: {}", Names(readable))
+                }
+            }
+            Error::UnknownExtension { path, accepted } => {
+                let path_text = path.display().to_string();
+                write!(f, "the name {} does not say what kind of file it is", Name(&path_text))?;
+                write!(f, "; accepted extensions: {}", accepted.join(", "))
+            }
+            Error::EmptyFile { path } => {
+                write!(f, "{} is empty; a header line was expected", file(path))
+            }
+            Error::NotText { path, line, byte } => write!(
+                f,
+                "{} is not text in UTF-8: line {line} holds the byte 0x{byte:02X}; \
+                 save it as UTF-8 text, or name it after its real kind",
+                file(path)
+            ),
+            Error::RaggedRows { path, line, expected, found, n_ragged, n_rows } => {
+                write!(f, "{}, line {line}: {}", file(path), plural(*found, "field"))?;
+                write!(f, " where the header has {expected}")?;
+                if *n_ragged > 1 {
+                    write!(f, "; {n_ragged} of {n_rows} rows differ from the header")?;
+                }
+                Ok(())
+            }
+            Error::WrongDelimiter { path, used, seen, n_fields } => write!(
+                f,
+                "{} was read with {} between fields, but its header looks like {n_fields} fields \
+                 with {} between them; use `read_table_with(path, TableOptions::new().delimiter({seen:?}))`",
+                file(path),
+                delimiter(*used),
+                delimiter(*seen)
+            ),
+            Error::UnclosedQuote { path, line } => {
+                write!(
+                    f,
+                    "{}: the quoted field that opens in line {line} is never closed",
+                    file(path)
+                )
+            }
+            Error::UnnamedColumn { path, position } => write!(
+                f,
+                "{}: column {position} has no name; name it in the header, or read it with \
+                 `read_table_with(path, TableOptions::new().unnamed(\"row\"))`",
+                file(path)
+            ),
+            Error::DuplicateColumns { columns } => {
+                write!(f, "column names must differ, but ")?;
+                list(f, columns, |f, c| {
+                    write!(f, "{} stands there {} times", Name(&c.column), c.count)
+                })
+            }
+            Error::BadJsonLine { path, line, reason } => {
+                write!(f, "{}, line {line}: not a JSON object: {}", file(path), Plain(reason))
+            }
+            Error::Unreadable { path, format, reason } => write!(
+                f,
+                "{} cannot be read as {format}; it is damaged, cut short or of another kind: {}",
+                file(path),
+                Plain(reason)
+            ),
+            Error::Io { action, path, source } => match path {
+                Some(path) => write!(f, "cannot {action} {}: {source}", file(path)),
+                None => write!(f, "cannot {action}: {source}"),
+            },
+            Error::Polars { source } => write!(f, "{source}"),
+            Error::UnknownColumn { name, nearest, available } => {
+                write!(f, "there is no column {}", Name(name))?;
+                match nearest {
+                    Some(nearest) => write!(f, "; did you mean {}?", Name(nearest)),
+                    None => write!(f, "; the columns are {}", Names(available)),
+                }
+            }
+            Error::UnknownLabel { label, nearest } => {
+                write!(f, "there is no row labelled {}", Name(label))?;
+                match nearest {
+                    Some(nearest) => write!(f, "; did you mean {}?", Name(nearest)),
+                    None => Ok(()),
+                }
+            }
+            Error::RepeatedRequest { name } => write!(f, "{} was asked for twice", Name(name)),
+            Error::NoNumericColumns { columns } => {
+                write!(f, "no column is numeric: ")?;
+                list(f, columns, |f, (name, dtype)| write!(f, "{} is {dtype}", Name(name)))
+            }
+            Error::NotNumeric { column, dtype, example } => {
+                write!(f, "column {} is not numeric but {dtype}", Name(column))?;
+                match example {
+                    Some((value, row)) => write!(f, "; row {row} holds {}", Name(value)),
+                    None => Ok(()),
+                }
+            }
+            Error::MissingValues { columns, n_rows, n_complete } => {
+                write!(f, "values are missing: ")?;
+                list(f, columns, |f, c| write!(f, "{} in {}", c.count, Name(&c.column)))?;
+                write!(f, "; {n_complete} of {n_rows} rows are complete")?;
+                write!(f, "; leave those columns out, or drop the incomplete rows with ")?;
+                write!(f, "`.data_matrix_with(MatrixOptions::new().missing(Missing::DropRows))`")
+            }
+            Error::AllMissing { columns } => {
+                let (noun, verb) =
+                    if columns.len() == 1 { ("column", "holds") } else { ("columns", "hold") };
+                write!(
+                    f,
+                    "{noun} {} {verb} no value at all; leave out what is empty",
+                    Names(columns)
+                )
+            }
+            Error::NoCompleteRow { columns, n_rows } => {
+                write!(f, "none of {n_rows} rows is complete; missing values: ")?;
+                list(f, columns, |f, c| write!(f, "{} in {}", c.count, Name(&c.column)))
+            }
+            Error::NonFinite { column, row, label, value, count } => {
+                write!(f, "column {} holds {value} in row {row}", Name(column))?;
+                if *label != row.to_string() {
+                    write!(f, " ({})", Name(label))?;
+                }
+                if *count > 1 {
+                    write!(
+                        f,
+                        ", and {} that are not finite elsewhere",
+                        plural(count - 1, "value")
+                    )?;
+                }
+                write!(f, "; only finite numbers are accepted")
+            }
+            Error::NoRows => write!(f, "there are no rows"),
+            Error::NoColumns => write!(f, "there are no columns"),
+            Error::MissingLabels { column, row, count } => write!(
+                f,
+                "the label column {} has {} missing, the first in row {row}",
+                Name(column),
+                plural(*count, "label")
+            ),
+            Error::RepeatedLabel { column, label, rows } => {
+                if let Some(column) = column {
+                    write!(f, "the label column {} does not tell rows apart: ", Name(column))?;
+                }
+                write!(f, "rows {} and {} are both labelled {}", rows.0, rows.1, Name(label))
+            }
+            Error::ShapeMismatch { what, expected, found } => {
+                write!(f, "{what}: {expected} needed, {found} given")
+            }
+            Error::TooFewRows { method, needed, found } => {
+                write!(
+                    f,
+                    "{method} needs at least {}, there {}",
+                    plural(*needed, "row"),
+                    are(*found)
+                )
+            }
+            Error::TooFewColumns { method, needed, found } => {
+                write!(
+                    f,
+                    "{method} needs at least {}, there {}",
+                    plural(*needed, "column"),
+                    are(*found)
+                )
+            }
+            Error::ConstantColumns { columns } => {
+                write!(f, "a column that does not vary has no correlation: ")?;
+                list(f, columns, |f, (name, value)| {
+                    write!(f, "{} is {value} in every row", Name(name))
+                })?;
+                write!(f, "; leave it out or use the covariance")
+            }
+            Error::NoVariation { n_rows } => {
+                write!(f, "no column varies over the {n_rows} rows")
+            }
+            Error::Magnitude { column, value, least, most } => write!(
+                f,
+                "column {} deviates from its mean by up to {value:e}; \
+                 squares stay exact only between {least:e} and {most:e}, so change its unit",
+                Name(column)
+            ),
+            Error::ComponentOutOfRange { asked, available } => {
+                write!(f, "{asked} components were asked for; accepted: 1 to {available}")
+            }
+            Error::VariablesDiffer { missing, extra, order } => {
+                write!(f, "the variables are not those of the analysis")?;
+                if !missing.is_empty() {
+                    write!(f, "; missing: {}", Names(missing))?;
+                }
+                if !extra.is_empty() {
+                    write!(f, "; unknown to it: {}", Names(extra))?;
+                }
+                if let Some((place, wanted, found)) = order {
+                    write!(f, "; place {place} holds {} instead of {}", Name(found), Name(wanted))?;
+                }
+                Ok(())
+            }
+            Error::OptionOutOfRange { option, value, accepted } => {
+                write!(f, "the option `{option}` is {value}; accepted: {accepted}")
+            }
+            Error::Interrupted => write!(f, "the computation was asked to stop"),
+            Error::NoConvergence { method } => {
+                write!(f, "{method} did not converge; please report this with the data")
+            }
+        }
+    }
+}
+
+/// How many names or entries a message lists before it says "and n more".
+const LISTED: usize = 12;
+
+/// How many characters of one name a message shows.
+const SHOWN: usize = 80;
+
+/// A name that comes from data, made safe to print.
+struct Name<'a>(&'a str);
+
+impl fmt::Display for Name<'_> {
+    fn fmt(&self, f: &mut fmt::Formatter<'_>) -> fmt::Result {
+        write!(f, "`{}`", Plain(self.0))
+    }
+}
+
+/// Text that comes from outside, cut and with control characters escaped.
+struct Plain<'a>(&'a str);
+
+impl fmt::Display for Plain<'_> {
+    fn fmt(&self, f: &mut fmt::Formatter<'_>) -> fmt::Result {
+        let limit = SHOWN.max(if self.0.contains(' ') { 300 } else { 0 });
+        for (place, c) in self.0.chars().enumerate() {
+            if place == limit {
+                return f.write_str("…");
+            }
+            if c.is_control() { write!(f, "{}", c.escape_debug())? } else { write!(f, "{c}")? }
+        }
+        Ok(())
+    }
+}
+
+struct Names<'a>(&'a [String]);
+
+impl fmt::Display for Names<'_> {
+    fn fmt(&self, f: &mut fmt::Formatter<'_>) -> fmt::Result {
+        list(f, self.0, |f, name| write!(f, "{}", Name(name)))
+    }
+}
+
+fn list<T>(
+    f: &mut fmt::Formatter<'_>,
+    items: &[T],
+    one: impl Fn(&mut fmt::Formatter<'_>, &T) -> fmt::Result,
+) -> fmt::Result {
+    for (place, item) in items.iter().take(LISTED).enumerate() {
+        if place > 0 {
+            f.write_str(", ")?;
+        }
+        one(f, item)?;
+    }
+    if items.len() > LISTED {
+        write!(f, " and {} more", items.len() - LISTED)?;
+    }
+    Ok(())
+}
+
+fn file(path: &std::path::Path) -> String {
+    format!("{}", Name(&path.display().to_string()))
+}
+
+fn plural(count: usize, noun: &str) -> String {
+    if count == 1 { format!("1 {noun}") } else { format!("{count} {noun}s") }
+}
+
+fn are(count: usize) -> String {
+    if count == 1 { "is 1".to_owned() } else { format!("are {count}") }
+}
+
+fn delimiter(c: char) -> String {
+    match c {
+        '\t' => "a tab".to_owned(),
+        ',' => "a comma".to_owned(),
+        ';' => "a semicolon".to_owned(),
+        '|' => "a bar".to_owned(),
+        ' ' => "a space".to_owned(),
+        other => format!("{other:?}"),
+    }
+}
