@@ -1,5 +1,8 @@
 //! Everything that crosses crates.
 
+pub mod client;
+pub mod debian;
 pub mod evaluator;
 pub mod place;
+pub mod python;
 pub mod sequences;

@@ -92,7 +92,10 @@ async fn output_without_a_newline_appears_at_once() {
     // The cell sleeps for three seconds between the two; half of that tells the cases apart on a
     // machine that is busy.
     let between = arrived.elapsed();
-    assert!(between > Duration::from_millis(1500), "the first word came {between:?} before the end");
+    assert!(
+        between > Duration::from_millis(1500),
+        "the first word came {between:?} before the end"
+    );
     client.shutdown(false).await;
 }
 

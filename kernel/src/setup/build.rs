@@ -6,6 +6,7 @@
 //! dependencies are shared with an ordinary release build of the workspace.
 
 use std::collections::{BTreeMap, BTreeSet};
+use std::ffi::OsStr;
 use std::io::{BufRead, BufReader, Read};
 use std::path::{Path, PathBuf};
 use std::process::{Command, Stdio};
@@ -15,6 +16,7 @@ use std::time::{Duration, Instant};
 
 use serde::Deserialize;
 
+use super::Place;
 use super::compiler::{Compiler, command_path};
 use super::error::SetupError;
 use super::progress::SetupEvent;
@@ -116,11 +118,12 @@ struct DependencyKind {
 /// # Errors
 /// There is no cargo, the build fails, or the disk is full.
 pub fn build(
-    workspace: &Path,
+    place: &Place,
     compiler: &Compiler,
     progress: &mut dyn FnMut(SetupEvent),
 ) -> Result<Built, SetupError> {
     let cargo = cargo(compiler)?;
+    let workspace = &place.workspace;
     let metadata = metadata(&cargo, workspace, compiler)?;
     let prelude = workspace.join("prelude").join("Cargo.toml");
     let root = metadata
@@ -132,7 +135,7 @@ pub fn build(
     let packages: BTreeMap<String, Package> =
         metadata.packages.into_iter().map(|package| (package.id.clone(), package)).collect();
     let all = reachable(&metadata.resolve, &packages, &root, true);
-    let artifacts = run_cargo(&cargo, workspace, compiler, all.len(), progress)?;
+    let artifacts = run_cargo(&cargo, place, compiler, all.len(), progress)?;
     let dylib = artifacts
         .iter()
         .rev()
@@ -144,7 +147,8 @@ pub fn build(
     let within = reachable(&metadata.resolve, &packages, &root, false);
     let inside =
         packages.into_iter().filter(|(id, _)| within.contains(id) && *id != root).collect();
-    Ok(Built { dylib, artifacts, inside, target_dir: metadata.target_directory })
+    let target_dir = place.target_dir.clone().unwrap_or(metadata.target_directory);
+    Ok(Built { dylib, artifacts, inside, target_dir })
 }
 
 fn cargo(compiler: &Compiler) -> Result<PathBuf, SetupError> {
@@ -226,13 +230,17 @@ enum Line {
 
 fn run_cargo(
     cargo: &Path,
-    workspace: &Path,
+    place: &Place,
     compiler: &Compiler,
     total: usize,
     progress: &mut dyn FnMut(SetupEvent),
 ) -> Result<Vec<Artifact>, SetupError> {
+    let workspace = &place.workspace;
+    let chosen =
+        place.target_dir.iter().flat_map(|dir| [OsStr::new("--target-dir"), dir.as_os_str()]);
     let mut child = cargo_command(cargo, workspace)
         .args(["rustc", "--release", "--locked", "-p", "semiaxis", "--crate-type", "dylib"])
+        .args(chosen)
         .args(["--message-format=json-render-diagnostics", "--color=never", "--"])
         .args(prelude_flags(compiler))
         .stdout(Stdio::piped())
