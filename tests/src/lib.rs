@@ -1,6 +1,8 @@
 //! Everything that crosses crates.
 
 pub mod client;
+pub mod command;
+pub mod compare;
 pub mod debian;
 pub mod evaluator;
 pub mod place;

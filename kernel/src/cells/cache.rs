@@ -37,10 +37,19 @@ pub struct Cache {
 
 const ACCOUNT: &str = "account.json";
 
+/// How the names of folders begin in which a cell is being compiled.
+const WORKPLACE: &str = "new-";
+
 impl Cache {
     /// The cache of this user for this build of the prelude.
     pub fn new(stamp: &str) -> Self {
         Self { root: user_folder().join("semiaxis").join("cells").join(stamp) }
+    }
+
+    /// Where extra crates are kept, for the same build of the prelude.
+    pub fn extras_folder(&self) -> PathBuf {
+        let stamp = self.root.file_name().unwrap_or_default();
+        user_folder().join("semiaxis").join("extras").join(stamp)
     }
 
     /// Where a cell's folder is, or would be.
@@ -69,7 +78,7 @@ impl Cache {
     /// When the cache cannot be written; the message names the folder.
     pub fn workplace(&self) -> io::Result<tempfile::TempDir> {
         std::fs::create_dir_all(&self.root)
-            .and_then(|()| tempfile::Builder::new().prefix("new-").tempdir_in(&self.root))
+            .and_then(|()| tempfile::Builder::new().prefix(WORKPLACE).tempdir_in(&self.root))
             .map_err(|error| self.explain(error))
     }
 
@@ -110,8 +119,11 @@ impl Cache {
         let Some(all) = self.root.parent() else { return };
         for stamp in folders(all) {
             for shelf in folders(&stamp) {
-                if is_old(&shelf) && shelf.file_name().is_some_and(|n| n.to_string_lossy().starts_with("new-")) {
-                    let _ = std::fs::remove_dir_all(&shelf);
+                // A workplace belongs to a kernel that is compiling, unless it was left by a crash.
+                if shelf.file_name().is_some_and(|name| name.to_string_lossy().starts_with(WORKPLACE)) {
+                    if is_old(&shelf) {
+                        let _ = std::fs::remove_dir_all(&shelf);
+                    }
                     continue;
                 }
                 for cell in folders(&shelf) {
@@ -119,14 +131,12 @@ impl Cache {
                         let _ = std::fs::remove_dir_all(&cell);
                     }
                 }
-                // Only succeeds when nothing is left in it.
-                let _ = std::fs::remove_dir(&shelf);
             }
-            let _ = std::fs::remove_dir(&stamp);
         }
     }
 
-    fn explain(&self, error: io::Error) -> io::Error {
+    /// An error of the file system, with the folder it is about.
+    pub fn explain(&self, error: io::Error) -> io::Error {
         let place = self.root.display();
         io::Error::new(error.kind(), format!("compiled cells cannot be kept in {place}: {error}"))
     }

@@ -19,7 +19,11 @@ const MOST_ERRORS: usize = 12;
 
 /// The failure of a cell that does not compile.
 pub fn compile_failure(answer: &Answer, text: &Generated, account: &Account, file: &str) -> CellFailure {
-    let errors: Vec<&Said> = answer.errors().collect();
+    let mut errors: Vec<&Said> = answer.errors().collect();
+    // What an error in the cell brings about in the text around it is no news.
+    if errors.iter().any(|said| primary(said, text, file).is_some()) {
+        errors.retain(|said| primary(said, text, file).is_some());
+    }
     let mut traceback = Vec::new();
     for said in errors.iter().take(MOST_ERRORS) {
         push_lines(&mut traceback, &render(said, text, account, file));
@@ -47,6 +51,18 @@ pub fn header_failure(cell: &Arc<CellText>, fault: &HeaderFault) -> CellFailure 
     let place = Place { cell: Arc::clone(cell), range: fault.range.clone() };
     let title = format!("in the header of the cell: {}", fault.message);
     failure_at("HeaderError", title.clone(), Some(&place), &title, &[])
+}
+
+/// The failure of a cell whose header names crates that cannot be had.
+pub fn dependencies_failure(cell: &Arc<CellText>, header: Range<usize>, words: &str) -> CellFailure {
+    // The line that names the table, or the whole header's first line.
+    let table = cell.text[header.clone()].find("[dependencies]").map(|at| header.start + at);
+    let start = table.unwrap_or(header.start);
+    let end = cell.text[start..].find('\n').map_or(cell.text.len(), |at| start + at);
+    let place = Place { cell: Arc::clone(cell), range: start..end };
+    let title = "the crates of this header could not be had";
+    let first = words.lines().find(|line| !line.trim().is_empty()).unwrap_or(title).trim();
+    failure_at("HeaderError", format!("{title}: {first}"), Some(&place), title, &[words.to_owned()])
 }
 
 /// A failure with a title, a place in a cell and lines of notes below it.
@@ -315,12 +331,12 @@ pub fn why_absent(name: &str, absent: &Absent) -> String {
 
 /// Why a type cannot be named from another cell, and what to do.
 pub fn nameless_words(type_text: &str) -> String {
-    if type_text.contains("{closure") {
+    if type_text.starts_with("{closure") {
         "a closure's type has no name; box it (`Box<dyn Fn(f64) -> f64>`), or write it as a function".to_owned()
-    } else if type_text.contains("{") && type_text.contains("fn(") {
+    } else if type_text.starts_with("fn(") && type_text.contains('{') {
         "a function's own type has no name; give the variable a type such as `fn(f64) -> f64`".to_owned()
-    } else if type_text.contains("impl ") {
-        "a type known only as `impl …` has no name; collect the values, or box it (`Box<dyn …>`)".to_owned()
+    } else if type_text.contains("{closure") || type_text.contains("impl ") {
+        "its type has no name that another cell could write; collect the values (`.collect::<Vec<_>>()`), or box it (`Box<dyn …>`)".to_owned()
     } else {
         format!("its type cannot be named from another cell: {type_text}")
     }

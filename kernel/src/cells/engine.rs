@@ -235,7 +235,11 @@ impl Engine {
     ) -> Result<Ready, CellFailure> {
         let headed = header::read(&cell.text).map_err(|fault| diagnose::header_failure(cell, &fault))?;
         if !headed.header.dependencies.is_empty() {
-            self.extras.ensure(&self.kit, &headed.header.dependencies).await?;
+            let wanted = &headed.header.dependencies;
+            self.extras.ensure(&self.kit, &self.cache, wanted, events).await.map_err(|words| {
+                let range = 0..headed.body_start;
+                diagnose::dependencies_failure(cell, range, &words)
+            })?;
         }
         let seed = headed.header.seed.unwrap_or_else(|| seed_of(self.options.seed, &cell.text));
         let optimise = headed.header.optimise.unwrap_or(OPTIMISE);
@@ -307,8 +311,13 @@ impl Engine {
             }
         }
         let imports = self.account.imports(&mentions, &own);
-        let takes = takes.into_iter().collect();
-        Plan { cell: Arc::clone(cell), parsed, items, takes, declares, imports, absorption }
+        let takes = takes.into_iter().map(|(name, variable)| {
+            let variable = absorption.rename(variable);
+            (name, variable)
+        });
+        let takes = takes.collect();
+        let preamble = self.extras.preamble();
+        Plan { cell: Arc::clone(cell), preamble, parsed, items, takes, declares, imports, absorption }
     }
 
     /// Finds the compiled cell, or compiles it.
@@ -351,7 +360,8 @@ impl Engine {
         let mut without = Without::default();
         for _ in 0..MOST_ATTEMPTS {
             let text = filled(generate::generate(plan, &without));
-            let answer = call.compile(&text).await.map_err(|error| {
+            call.write(&text).map_err(|error| trouble(self.cache.explain(error)))?;
+            let answer = call.compile().await.map_err(|error| {
                 let words = match error.kind() {
                     io::ErrorKind::NotFound => format!(
                         "the compiler is no longer at {}; start the kernel again to find or ask for another",
@@ -424,7 +434,7 @@ impl Engine {
         events: &mpsc::Sender<CellEvent>,
         interrupts: &mut watch::Receiver<u64>,
     ) -> Outcome {
-        let mut libraries: Vec<PathBuf> = self.extras.libraries().to_vec();
+        let mut libraries: Vec<PathBuf> = self.extras.libraries().cloned().collect();
         for name in self.account.closure(&ready.plan.crates) {
             libraries.push(self.account.crates[&name].library.clone());
         }
@@ -567,7 +577,7 @@ impl Engine {
         let mut dropped = Vec::new();
         // Variables of types that are no longer what they were.
         for (home, name) in &plan.absorption.tainted {
-            for (variable, _) in account.variables.iter().filter(|(_, v)| names_type(&v.type_text, home, name)) {
+            for (variable, _) in account.variables.iter().filter(|(_, v)| homes::names_type(&v.type_text, home, name)) {
                 dropped.push((variable.clone(), Absent::Redefined { cell: ready.cell.number, type_name: name.clone() }));
             }
         }
@@ -629,6 +639,14 @@ impl Engine {
         let done = matches!(ended.how, How::Done);
         for declared in ready.plan.declares.iter().filter(|_| done) {
             let name = &declared.name;
+            if ready.entry.without.spent.contains(name) {
+                // The name is bound to nothing now, whatever it was bound to before.
+                if self.account.variables.remove(name).is_some() {
+                    forget.push(name.clone());
+                }
+                self.account.absent.insert(name.clone(), Absent::Moved { cell: number });
+                continue;
+            }
             let shown = ready.entry.types.get(name).map(String::as_str).unwrap_or("a type that the compiler did not tell");
             let why = if ready.entry.without.keeps.contains(name) {
                 Some(Absent::Borrowing { cell: number })
@@ -736,15 +754,6 @@ fn keeps_old(plan: &Plan<'_>) -> String {
         cells.join(", "),
         names.join(", ")
     )
-}
-
-/// Whether a type is made of this type.
-fn names_type(type_text: &str, home: &Home, name: &str) -> bool {
-    let path = format!("{}::{name}", home.path());
-    type_text.match_indices(&path).any(|(at, _)| {
-        let after = type_text[at + path.len()..].chars().next();
-        !after.is_some_and(|c| c.is_alphanumeric() || c == '_')
-    })
 }
 
 fn kind_of(space: Namespace, form: &ItemForm) -> Option<ItemKind> {

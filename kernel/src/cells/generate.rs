@@ -29,6 +29,8 @@ pub const NAME_HERE: &str = "cell_0000000000000000";
 pub struct Plan<'a> {
     /// The cell.
     pub cell: Arc<CellText>,
+    /// Lines about extra crates.
+    pub preamble: String,
     /// Taken apart.
     pub parsed: &'a Parsed,
     /// Those of its items that are to be compiled; the others are what they were.
@@ -50,6 +52,8 @@ pub struct Without {
     pub returns: BTreeSet<String>,
     /// Declared variables that cannot outlive the cell.
     pub keeps: BTreeSet<String>,
+    /// Declared variables that the cell itself moves on, or never gives a value.
+    pub spent: BTreeSet<String>,
     /// `use` lines of earlier cells that no longer hold, by place in the account.
     pub uses: BTreeSet<usize>,
 }
@@ -64,6 +68,7 @@ impl Without {
     pub fn extend(&mut self, other: Self) {
         self.returns.extend(other.returns);
         self.keeps.extend(other.keeps);
+        self.spent.extend(other.spent);
         self.uses.extend(other.uses);
     }
 }
@@ -78,6 +83,7 @@ const QUIET: &str = "#![allow(unused_imports, unused_variables, unused_mut, unus
 pub fn generate(plan: &Plan<'_>, without: &Without) -> Generated {
     let mut text = Generated::default();
     text.own(QUIET);
+    text.own(&plan.preamble);
     for absorbed in &plan.absorption.parts {
         module(&mut text, absorbed, plan);
     }
@@ -227,11 +233,12 @@ fn entry(text: &mut Generated, plan: &Plan<'_>, without: &Without) {
     if let Some(tail) = &plan.parsed.tail {
         final_expression(text, plan, tail);
     }
-    for declared in &plan.declares {
+    let left = || plan.declares.iter().filter(|declared| !without.spent.contains(&declared.name));
+    for declared in left() {
         let line = format!("::core::mem::drop(&{});\n", raw(&declared.name));
         text.of(Origin::Type(declared.name.clone()), &line);
     }
-    for declared in plan.declares.iter().filter(|d| !without.keeps.contains(&d.name)) {
+    for declared in left().filter(|declared| !without.keeps.contains(&declared.name)) {
         let line = format!("__semiaxis.put({0:?}, {1});\n", declared.name, raw(&declared.name));
         text.of(Origin::Keep(declared.name.clone()), &line);
     }

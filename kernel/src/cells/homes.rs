@@ -18,7 +18,7 @@
 use std::collections::{BTreeMap, BTreeSet};
 use std::sync::Arc;
 
-use super::account::{Account, Home, Import, Part};
+use super::account::{Account, Home, Import, Part, Variable};
 use super::generate::module_of;
 use super::parse::{Binding, ImplBlock, Item, ItemForm, Namespace};
 use super::source::Edit;
@@ -439,8 +439,34 @@ fn taint(account: &Account, absorption: &mut Absorption) {
 }
 
 impl Absorption {
+    /// A variable whose type is compiled again, as the new crate itself must write the type. One
+    /// whose type changes keeps its old name; the cell may use it a last time.
+    pub fn rename(&self, mut variable: Variable) -> Variable {
+        if self.tainted.iter().any(|(home, name)| names_type(&variable.type_text, home, name)) {
+            return variable;
+        }
+        for absorbed in &self.parts {
+            let old = format!("{}::", absorbed.from.path());
+            if variable.type_text.contains(&old) {
+                let new = format!("crate::{}::", absorbed.part.module);
+                variable.type_text = variable.type_text.replace(&old, &new);
+                variable.relabelled = true;
+            }
+        }
+        variable
+    }
+
     /// Whether nothing is compiled again.
     pub fn is_empty(&self) -> bool {
         self.parts.is_empty()
     }
+}
+
+/// Whether a type is made of this type.
+pub fn names_type(type_text: &str, home: &Home, name: &str) -> bool {
+    let path = format!("{}::{name}", home.path());
+    type_text.match_indices(&path).any(|(at, _)| {
+        let after = type_text[at + path.len()..].chars().next();
+        !after.is_some_and(|c| c.is_alphanumeric() || c == '_')
+    })
 }

@@ -127,9 +127,19 @@ impl Call<'_> {
         .collect()
     }
 
-    /// Compiles; the error is that the compiler could not be run at all.
-    pub async fn compile(&self, text: &Generated) -> io::Result<Answer> {
-        tokio::fs::write(self.folder.join(self.file()), text.text()).await?;
+    /// Writes the text where the compiler will read it.
+    ///
+    /// # Errors
+    /// When the folder cannot be written.
+    pub fn write(&self, text: &Generated) -> io::Result<()> {
+        std::fs::write(self.folder.join(self.file()), text.text())
+    }
+
+    /// Compiles what was written.
+    ///
+    /// # Errors
+    /// When the compiler cannot be run at all.
+    pub async fn compile(&self) -> io::Result<Answer> {
         let mut command = tokio::process::Command::new(self.rustc);
         command
             .current_dir(self.folder)
@@ -246,11 +256,17 @@ impl Answer {
         let mut without = Without::default();
         for said in self.errors() {
             let mut found = Without::default();
+            let code = said.code.as_ref().map(|code| code.code.as_str());
+            // Used after it was moved, or without ever having got a value.
+            let spent = matches!(code, Some("E0382" | "E0381"));
             // Whatever the message names, the line that cannot be had is the kernel's.
             let spans = said.spans.iter().chain(said.children.iter().flat_map(|child| &child.spans));
             for span in spans.flat_map(|span| span.all_in(&self.file)) {
                 match text.origin(&(span.byte_start..span.byte_end)) {
                     Some(Origin::Return(name)) => _ = found.returns.insert(name.clone()),
+                    Some(Origin::Keep(name) | Origin::Type(name)) if spent => {
+                        found.spent.insert(name.clone());
+                    }
                     Some(Origin::Keep(name)) => _ = found.keeps.insert(name.clone()),
                     Some(Origin::Import(idx)) => _ = found.uses.insert(*idx),
                     _ => {}
@@ -260,6 +276,11 @@ impl Answer {
                 return None;
             }
             without.extend(found);
+        }
+        // A new variable that borrows from a taken one keeps the taken one from going back; without
+        // the new one it may go.
+        if !without.keeps.is_empty() {
+            without.returns.clear();
         }
         (!without.is_empty()).then_some(without)
     }

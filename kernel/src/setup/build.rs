@@ -113,13 +113,14 @@ struct DependencyKind {
     kind: Option<String>,
 }
 
-/// Builds the prelude of a workspace.
+/// Builds the prelude of a workspace for a kit of a given name (hexadecimal digits).
 ///
 /// # Errors
 /// There is no cargo, the build fails, or the disk is full.
 pub fn build(
     place: &Place,
     compiler: &Compiler,
+    name: &str,
     progress: &mut dyn FnMut(SetupEvent),
 ) -> Result<Built, SetupError> {
     let cargo = cargo(compiler)?;
@@ -135,14 +136,8 @@ pub fn build(
     let packages: BTreeMap<String, Package> =
         metadata.packages.into_iter().map(|package| (package.id.clone(), package)).collect();
     let all = reachable(&metadata.resolve, &packages, &root, true);
-    let artifacts = run_cargo(&cargo, place, compiler, all.len(), progress)?;
-    let dylib = artifacts
-        .iter()
-        .rev()
-        .filter(|artifact| artifact.package_id == root)
-        .flat_map(|artifact| &artifact.filenames)
-        .find(|file| file.extension().is_some_and(|end| end == std::env::consts::DLL_EXTENSION))
-        .cloned()
+    let artifacts = run_cargo(&cargo, place, compiler, name, all.len(), progress)?;
+    let dylib = library(&artifacts, &root)
         .ok_or_else(|| SetupError::UnexpectedBuild { what: "the prelude's library".to_owned() })?;
     let within = reachable(&metadata.resolve, &packages, &root, false);
     let inside =
@@ -232,6 +227,7 @@ fn run_cargo(
     cargo: &Path,
     place: &Place,
     compiler: &Compiler,
+    name: &str,
     total: usize,
     progress: &mut dyn FnMut(SetupEvent),
 ) -> Result<Vec<Artifact>, SetupError> {
@@ -242,7 +238,7 @@ fn run_cargo(
         .args(["rustc", "--release", "--locked", "-p", "semiaxis", "--crate-type", "dylib"])
         .args(chosen)
         .args(["--message-format=json-render-diagnostics", "--color=never", "--"])
-        .args(prelude_flags(compiler))
+        .args(prelude_flags(compiler, name))
         .stdout(Stdio::piped())
         .stderr(Stdio::piped())
         .spawn()
@@ -280,13 +276,29 @@ fn run_cargo(
 
 /// The flags for the prelude's library alone: cells and it share one standard library, and it finds
 /// that library beside itself or in the compiler's own folder.
-fn prelude_flags(compiler: &Compiler) -> Vec<String> {
+///
+/// The name of the kit goes into the linker's build identifier for cargo's sake. Cargo compares times
+/// of files under names relative to the workspace, so of two workspaces that share a folder for build
+/// results it would take the other's library for this one's; flags it compares as they are.
+fn prelude_flags(compiler: &Compiler, name: &str) -> Vec<String> {
     let library = compiler.sysroot.join("lib");
     vec![
         "-Cprefer-dynamic".to_owned(),
         "-Clink-arg=-Wl,-rpath,$ORIGIN".to_owned(),
         format!("-Clink-arg=-Wl,-rpath,{}", library.display()),
+        format!("-Clink-arg=-Wl,--build-id=0x{name}"),
     ]
+}
+
+/// The library among the files that cargo made.
+fn library(artifacts: &[Artifact], root: &str) -> Option<PathBuf> {
+    artifacts
+        .iter()
+        .rev()
+        .filter(|artifact| artifact.package_id == root)
+        .flat_map(|artifact| &artifact.filenames)
+        .find(|file| file.extension().is_some_and(|end| end == std::env::consts::DLL_EXTENSION))
+        .cloned()
 }
 
 fn forward(

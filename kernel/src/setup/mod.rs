@@ -118,12 +118,13 @@ fn build_once(
         }
         Err(TryLockError::Error(error)) => return Err(SetupError::files("lock", &path)(error)),
     }
-    let dir = home.folder(&sources.stamp(compiler));
+    let name = sources.stamp(compiler);
+    let dir = home.folder(&name);
     if let Some(kit) = Kit::load(&dir).filter(|kit| kit.compiler.is_unchanged()) {
         return Ok(kit);
     }
     progress(SetupEvent::Needed(reason(home, &dir, compiler)));
-    let built = build::build(place, compiler, progress)?;
+    let built = build::build(place, compiler, &name, progress)?;
     progress(SetupEvent::Assembling);
     let kit = assemble::assemble(home, workspace, sources, compiler, &built)?;
     home.prune(&kit.dir);

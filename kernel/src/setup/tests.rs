@@ -152,6 +152,27 @@ fn a_cell_compiles_against_the_kit_alone() {
 }
 
 #[test]
+fn two_workspaces_that_share_a_target_folder_do_not_mix_up_their_libraries() {
+    let (one, other) = (Tiny::new(), Tiny::new());
+    let shared = one.place().target_dir;
+    other.set_prelude("pub fn other() {}\n");
+    let ensure = |tiny: &Tiny| {
+        let place = Place { target_dir: shared.clone(), ..tiny.place() };
+        ensure_at(&place, &mut |_| ()).unwrap()
+    };
+    let first = ensure(&one);
+    let second = ensure(&other);
+    assert_ne!(first.stamp, second.stamp);
+    let symbols =
+        |kit: &Kit| String::from_utf8_lossy(&fs::read(&kit.prelude).unwrap()).into_owned();
+    assert!(symbols(&first).contains("twice") && !symbols(&first).contains("other"));
+    // The first workspace's files are older than the library that was built over its own.
+    fs::remove_dir_all(&first.dir).unwrap();
+    let again = ensure(&one);
+    assert!(symbols(&again).contains("twice") && !symbols(&again).contains("other"));
+}
+
+#[test]
 fn of_two_that_start_at_once_one_builds_and_the_other_waits() {
     let tiny = Tiny::new();
     let barrier = Barrier::new(2);

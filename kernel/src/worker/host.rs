@@ -3,7 +3,7 @@
 use std::os::fd::RawFd;
 use std::path::Path;
 
-use super::message::ENTRY;
+use super::message::{ENTRY, linker_words};
 
 /// Runs the worker until the kernel lets go of it; gives the exit status.
 pub fn main(prelude: &Path, commands: RawFd, reports: RawFd) -> i32 {
@@ -16,7 +16,7 @@ pub fn main(prelude: &Path, commands: RawFd, reports: RawFd) -> i32 {
     let library = match unsafe { libloading::Library::new(prelude) } {
         Ok(library) => library,
         Err(error) => {
-            eprintln!("the prelude would not load: {error}");
+            eprintln!("the prelude would not load: {}", linker_words(&error));
             return 3;
         }
     };
