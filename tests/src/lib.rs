@@ -3,3 +3,8 @@
 pub mod client;
 pub mod command;
 pub mod compare;
+pub mod debian;
+pub mod evaluator;
+pub mod place;
+pub mod python;
+pub mod sequences;
