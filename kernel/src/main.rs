@@ -8,13 +8,142 @@ mod setup;
 mod wire;
 mod worker;
 
-fn main() {
-    let mut reporter = setup::Reporter::new();
-    match setup::ensure(&mut |event| reporter.show(event)) {
-        Ok(kit) => println!("{}", kit.dir.display()),
-        Err(error) => {
-            eprintln!("semiaxis: {error}");
-            std::process::exit(2);
+use std::path::{Path, PathBuf};
+use std::process::ExitCode;
+
+use clap::{Parser, Subcommand};
+
+use cells::Engine;
+use cells::types::EngineOptions;
+use setup::install::Place;
+use setup::{Kit, Reporter};
+
+/// Everything went as it should.
+const OK: u8 = 0;
+/// A cell failed.
+const FAILED: u8 = 1;
+/// There was nothing to fail: the notebook, the compiler or the place for results is missing.
+const COULD_NOT: u8 = 2;
+
+/// A notebook kernel for multivariate work in compiled Rust.
+#[derive(Parser)]
+#[command(name = "semiaxis", version)]
+struct Arguments {
+    #[command(subcommand)]
+    command: Command,
+}
+
+#[derive(Subcommand)]
+enum Command {
+    /// Run a notebook from top to bottom without any client, and write the executed notebook.
+    ///
+    /// The status is 0 if every cell ran, 1 if a cell failed, 2 if the notebook could not be run.
+    Run {
+        /// The notebook; it is not changed. Cells run in its folder.
+        notebook: PathBuf,
+        /// Where to write the executed notebook [default: NOTEBOOK with .executed before its ending]
+        #[arg(long, value_name = "FILE")]
+        output: Option<PathBuf>,
+    },
+    /// Serve a notebook client; clients start this themselves, with a connection file.
+    ///
+    /// The status is 0 after an orderly shutdown, 2 if the connection file cannot be used and 3 if
+    /// a socket that it names cannot be bound.
+    Kernel {
+        /// The file in which the client says where it will look for the kernel.
+        connection_file: PathBuf,
+    },
+    /// Register this program as a kernel, so that notebook clients offer it.
+    Install {
+        /// Register it for you alone; this is what happens without any option, too.
+        #[arg(long, conflicts_with = "prefix")]
+        user: bool,
+        /// Register it in DIR/share/jupyter, for a Python environment or a whole machine.
+        #[arg(long, value_name = "DIR")]
+        prefix: Option<PathBuf>,
+    },
+    /// Build what cells compile against, as the first start of a kernel does, and say where it is.
+    Prepare,
+    /// Runs the cells of a kernel; kernels start this themselves.
+    #[command(hide = true)]
+    Worker {
+        /// The prelude's library.
+        prelude: PathBuf,
+        /// The descriptor that commands come from.
+        commands: i32,
+        /// The descriptor that reports go to.
+        reports: i32,
+    },
+}
+
+fn main() -> ExitCode {
+    match Arguments::parse().command {
+        Command::Run { notebook, output } => run(&notebook, output.as_deref()),
+        Command::Kernel { connection_file } => {
+            session::serve(&connection_file, EngineOptions::default())
+        }
+        Command::Install { user: _, prefix } => {
+            install(&prefix.map_or(Place::User, Place::Prefix))
+        }
+        Command::Prepare => prepare(),
+        Command::Worker { prelude, commands, reports } => {
+            let status = worker::host::main(&prelude, commands, reports);
+            std::process::exit(status)
         }
     }
+}
+
+fn install(place: &Place) -> ExitCode {
+    match setup::install::install(place) {
+        Ok(installed) => {
+            println!("{installed}");
+            ExitCode::from(OK)
+        }
+        Err(error) => could_not(&error),
+    }
+}
+
+/// Finds or builds the kit while a person watches.
+fn kit() -> Result<Kit, setup::SetupError> {
+    let mut reporter = Reporter::new();
+    setup::ensure(&mut |event| reporter.show(event))
+}
+
+fn prepare() -> ExitCode {
+    match kit() {
+        Ok(kit) => {
+            println!("{}", kit.dir.display());
+            ExitCode::from(OK)
+        }
+        Err(error) => could_not(&error),
+    }
+}
+
+fn run(notebook: &Path, output: Option<&Path>) -> ExitCode {
+    let runtime = match tokio::runtime::Builder::new_current_thread().enable_all().build() {
+        Ok(runtime) => runtime,
+        Err(error) => return could_not(&error),
+    };
+    let working_dir = notebook.parent().and_then(|folder| match folder.as_os_str().is_empty() {
+        true => std::env::current_dir().ok(),
+        false => folder.canonicalize().ok(),
+    });
+    let start = async || {
+        let kit = kit().map_err(|error| error.to_string())?;
+        let options = EngineOptions { working_dir, ..EngineOptions::default() };
+        Engine::start(kit, options).await.map_err(|error| error.to_string())
+    };
+    match runtime.block_on(notebook::run::run_file(notebook, output, RUST, start)) {
+        Ok(summary) if summary.failed => ExitCode::from(FAILED),
+        Ok(_) => ExitCode::from(OK),
+        Err(error) => could_not(&error),
+    }
+}
+
+/// The Rust release that cells can count on.
+const RUST: &str = env!("CARGO_PKG_RUST_VERSION");
+
+fn could_not(error: &dyn std::fmt::Display) -> ExitCode {
+    eprintln!("semiaxis: {error}");
+    ExitCode::from(COULD_NOT)
 }

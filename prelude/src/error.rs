@@ -8,6 +8,8 @@
 //! characters escaped, so that a hostile name cannot forge a message or move a terminal's cursor.
 
 mod message;
+#[cfg(test)]
+mod tests;
 
 use std::path::PathBuf;
 
@@ -100,6 +102,20 @@ pub enum Error {
         /// The line where the quote opens.
         line: usize,
     },
+    /// A quote stands inside a field that is not quoted, or text follows a closing quote.
+    StrayQuote {
+        /// The file.
+        path: PathBuf,
+        /// The line.
+        line: usize,
+    },
+    /// A delimiter that could also be part of a number, a quote or a line end.
+    BadDelimiter {
+        /// The delimiter.
+        delimiter: char,
+        /// Whether numbers are written with a comma.
+        decimal_comma: bool,
+    },
     /// A column of the file has no name.
     UnnamedColumn {
         /// The file.
@@ -120,6 +136,17 @@ pub enum Error {
         line: usize,
         /// What the JSON reader found.
         reason: String,
+    },
+    /// A column of a JSON-lines file holds values of two kinds.
+    MixedKinds {
+        /// The file.
+        path: PathBuf,
+        /// The column.
+        column: String,
+        /// The kind it begins with, and the line.
+        first: (&'static str, usize),
+        /// The other kind, and the line where it turns up.
+        other: (&'static str, usize),
     },
     /// The file is damaged, cut short, or not of the kind its extension says.
     Unreadable {
@@ -180,6 +207,17 @@ pub enum Error {
         dtype: String,
         /// The first value that is not a number, and its row.
         example: Option<(String, usize)>,
+    },
+    /// Most cells of a column are numbers and some are not, so that it was read as text.
+    MixedColumn {
+        /// The column.
+        column: String,
+        /// Cells that are numbers.
+        n_numbers: usize,
+        /// Cells that are not.
+        n_others: usize,
+        /// The first value that is not a number, and its row.
+        example: (String, usize),
     },
     /// Values are missing and no policy for them was chosen.
     MissingValues {

@@ -12,3 +12,7 @@ pub mod table;
 pub use error::{Error, Result};
 pub use nalgebra;
 pub use polars;
+
+#[cfg(test)]
+#[path = "../../tests/src/compare.rs"]
+mod compare;

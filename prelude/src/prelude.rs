@@ -1,1 +1,38 @@
 //! The names that every cell can use without a `use` line.
+//!
+//! Chosen one by one: a glob of the data-frame library's own prelude would bring some two thousand
+//! names, among them a `Result` of its own. Whoever needs more of it writes
+//! `use polars::prelude::*;` in a cell.
+
+// From tables to statistics.
+pub use crate::components::{
+    PrincipalComponents, Reconstruction, Route, Scaling, principal_components,
+};
+pub use crate::error::{Error, Result};
+pub use crate::exhibit::{Bundle, Content, Exhibit};
+pub use crate::parallel::{Noise, ParallelAnalysis, ParallelOptions, parallel_analysis};
+pub use crate::random::{Generator, random_generator, random_normal};
+pub use crate::table::{
+    ColumnDescription, ColumnDescriptions, DataMatrix, FrameToMatrix, Label, MatrixOptions,
+    Missing, MissingPattern, MissingValues, NamedMatrix, TableOptions, describe_columns,
+    missing_values, read_table, read_table_with,
+};
+
+// Matrices and vectors.
+pub use nalgebra::{self, DMatrix, DVector, dmatrix, dvector};
+
+// Data frames: what filtering, grouping, joining and deriving columns take.
+pub use polars;
+pub use polars::prelude::{
+    AnyValue, BooleanChunked, ChunkAgg, ChunkCompareEq, ChunkCompareIneq, ChunkUnique, Column,
+    DataFrame, DataFrameJoinOps, DataType, Expr, Field, FillNullStrategy, Float64Chunked,
+    Int64Chunked, IntoColumn, IntoLazy, IntoSeries, JoinArgs, JoinType, LazyFrame, NamedFrom,
+    PlSmallStr, QuantileMethod, Schema, Series, SortMultipleOptions, StringChunked,
+    UniqueKeepStrategy, all, as_struct, coalesce, col, cols, concat, df, len, lit, when,
+};
+
+// What a generator needs to be of use.
+pub use rand::RngExt;
+pub use rand_distr::Distribution;
+
+pub use std::collections::{BTreeMap, HashMap};

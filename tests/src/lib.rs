@@ -1,1 +1,4 @@
 //! Everything that crosses crates.
+
+pub mod client;
+pub mod compare;

@@ -15,7 +15,7 @@ use super::compiler::Compiler;
 use super::error::SetupError;
 use super::index::{self, Source};
 use super::kit::{INTERFACE, Kit, KitHome, KitPackage};
-use super::stamp::Sources;
+use super::stamp::{DIGITS, Sources};
 
 /// The crates that a cell may name without asking for them in its header.
 const NAMED: [&str; 5] = ["polars", "nalgebra", "rand", "rand_distr", "rayon"];
@@ -39,11 +39,10 @@ pub fn assemble(
     compiler: &Compiler,
     built: &Built,
 ) -> Result<Kit, SetupError> {
-    let stamp = sources.stamp(compiler);
-    let dir = home.folder(&stamp);
+    let dir = home.folder(&sources.stamp(compiler));
     let building = home.kits.join(format!(".building-{}", std::process::id()));
     remove(&building)?;
-    let outcome = fill(&building, &dir, stamp, workspace, sources, compiler, built);
+    let outcome = fill(&building, &dir, workspace, sources, compiler, built);
     let kit = match outcome {
         Ok(kit) => kit,
         Err(error) => {
@@ -60,7 +59,6 @@ pub fn assemble(
 fn fill(
     building: &Path,
     dir: &Path,
-    stamp: String,
     workspace: &Path,
     sources: &Sources,
     compiler: &Compiler,
@@ -108,7 +106,7 @@ fn fill(
 
     let kit = Kit {
         dir: dir.to_owned(),
-        stamp,
+        stamp: library_stamp(&built.dylib)?,
         interface: INTERFACE,
         prelude: dir.join(library),
         dependencies: dir.join("dependencies"),
@@ -127,6 +125,15 @@ fn fill(
     };
     write_json(&building.join("kit.json"), &kit)?;
     Ok(kit)
+}
+
+/// The hash of the library itself. Equal sources built in another folder make a library with other
+/// symbols, and a cell compiled against the one does not load with the other.
+fn library_stamp(library: &Path) -> Result<String, SetupError> {
+    let mut hasher = blake3::Hasher::new();
+    let mut file = fs::File::open(library).map_err(SetupError::files("read", library))?;
+    std::io::copy(&mut file, &mut hasher).map_err(SetupError::files("read", library))?;
+    Ok(hasher.finalize().to_hex()[..DIGITS].to_owned())
 }
 
 /// The sources that the index of names is made from.

@@ -6,6 +6,7 @@
 //! dependencies are shared with an ordinary release build of the workspace.
 
 use std::collections::{BTreeMap, BTreeSet};
+use std::ffi::OsStr;
 use std::io::{BufRead, BufReader, Read};
 use std::path::{Path, PathBuf};
 use std::process::{Command, Stdio};
@@ -15,6 +16,7 @@ use std::time::{Duration, Instant};
 
 use serde::Deserialize;
 
+use super::Place;
 use super::compiler::{Compiler, command_path};
 use super::error::SetupError;
 use super::progress::SetupEvent;
@@ -111,16 +113,18 @@ struct DependencyKind {
     kind: Option<String>,
 }
 
-/// Builds the prelude of a workspace.
+/// Builds the prelude of a workspace for a kit of a given name (hexadecimal digits).
 ///
 /// # Errors
 /// There is no cargo, the build fails, or the disk is full.
 pub fn build(
-    workspace: &Path,
+    place: &Place,
     compiler: &Compiler,
+    name: &str,
     progress: &mut dyn FnMut(SetupEvent),
 ) -> Result<Built, SetupError> {
     let cargo = cargo(compiler)?;
+    let workspace = &place.workspace;
     let metadata = metadata(&cargo, workspace, compiler)?;
     let prelude = workspace.join("prelude").join("Cargo.toml");
     let root = metadata
@@ -132,19 +136,14 @@ pub fn build(
     let packages: BTreeMap<String, Package> =
         metadata.packages.into_iter().map(|package| (package.id.clone(), package)).collect();
     let all = reachable(&metadata.resolve, &packages, &root, true);
-    let artifacts = run_cargo(&cargo, workspace, compiler, all.len(), progress)?;
-    let dylib = artifacts
-        .iter()
-        .rev()
-        .filter(|artifact| artifact.package_id == root)
-        .flat_map(|artifact| &artifact.filenames)
-        .find(|file| file.extension().is_some_and(|end| end == std::env::consts::DLL_EXTENSION))
-        .cloned()
+    let artifacts = run_cargo(&cargo, place, compiler, name, all.len(), progress)?;
+    let dylib = library(&artifacts, &root)
         .ok_or_else(|| SetupError::UnexpectedBuild { what: "the prelude's library".to_owned() })?;
     let within = reachable(&metadata.resolve, &packages, &root, false);
     let inside =
         packages.into_iter().filter(|(id, _)| within.contains(id) && *id != root).collect();
-    Ok(Built { dylib, artifacts, inside, target_dir: metadata.target_directory })
+    let target_dir = place.target_dir.clone().unwrap_or(metadata.target_directory);
+    Ok(Built { dylib, artifacts, inside, target_dir })
 }
 
 fn cargo(compiler: &Compiler) -> Result<PathBuf, SetupError> {
@@ -226,15 +225,20 @@ enum Line {
 
 fn run_cargo(
     cargo: &Path,
-    workspace: &Path,
+    place: &Place,
     compiler: &Compiler,
+    name: &str,
     total: usize,
     progress: &mut dyn FnMut(SetupEvent),
 ) -> Result<Vec<Artifact>, SetupError> {
+    let workspace = &place.workspace;
+    let chosen =
+        place.target_dir.iter().flat_map(|dir| [OsStr::new("--target-dir"), dir.as_os_str()]);
     let mut child = cargo_command(cargo, workspace)
         .args(["rustc", "--release", "--locked", "-p", "semiaxis", "--crate-type", "dylib"])
+        .args(chosen)
         .args(["--message-format=json-render-diagnostics", "--color=never", "--"])
-        .args(prelude_flags(compiler))
+        .args(prelude_flags(compiler, name))
         .stdout(Stdio::piped())
         .stderr(Stdio::piped())
         .spawn()
@@ -272,13 +276,29 @@ fn run_cargo(
 
 /// The flags for the prelude's library alone: cells and it share one standard library, and it finds
 /// that library beside itself or in the compiler's own folder.
-fn prelude_flags(compiler: &Compiler) -> Vec<String> {
+///
+/// The name of the kit goes into the linker's build identifier for cargo's sake. Cargo compares times
+/// of files under names relative to the workspace, so of two workspaces that share a folder for build
+/// results it would take the other's library for this one's; flags it compares as they are.
+fn prelude_flags(compiler: &Compiler, name: &str) -> Vec<String> {
     let library = compiler.sysroot.join("lib");
     vec![
         "-Cprefer-dynamic".to_owned(),
         "-Clink-arg=-Wl,-rpath,$ORIGIN".to_owned(),
         format!("-Clink-arg=-Wl,-rpath,{}", library.display()),
+        format!("-Clink-arg=-Wl,--build-id=0x{name}"),
     ]
+}
+
+/// The library among the files that cargo made.
+fn library(artifacts: &[Artifact], root: &str) -> Option<PathBuf> {
+    artifacts
+        .iter()
+        .rev()
+        .filter(|artifact| artifact.package_id == root)
+        .flat_map(|artifact| &artifact.filenames)
+        .find(|file| file.extension().is_some_and(|end| end == std::env::consts::DLL_EXTENSION))
+        .cloned()
 }
 
 fn forward(

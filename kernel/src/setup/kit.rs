@@ -1,6 +1,6 @@
 //! The kit: everything that cells compile against, built once and found again.
 //!
-//! A kit is one folder under the user's data folder, named after its stamp. It holds the prelude as
+//! A kit is one folder under the user's data folder, named after a hash of its sources and compiler. It holds the prelude as
 //! one shared library, the metadata of every crate inside it, copies of what decided how it was
 //! built, and `kit.json`, which is the [`Kit`] itself. A folder is written under another name and
 //! renamed, so a folder with a `kit.json` is always whole.
@@ -16,8 +16,7 @@ use serde::{Deserialize, Serialize};
 use super::compiler::Compiler;
 use super::error::SetupError;
 
-/// The version of the agreement between kernel and worker; a kit of another one is never used.
-pub const INTERFACE: u32 = 1;
+pub use crate::worker::message::INTERFACE;
 
 /// How long a kit that nobody started is kept beside the current one.
 const KEEP_UNUSED: Duration = Duration::from_secs(30 * 24 * 60 * 60);
@@ -27,7 +26,7 @@ const KEEP_UNUSED: Duration = Duration::from_secs(30 * 24 * 60 * 60);
 pub struct Kit {
     /// The folder of this kit.
     pub dir: PathBuf,
-    /// The hash of everything that decided how the kit was built.
+    /// The hash of the prelude's library: two kits of one stamp run each other's cells.
     pub stamp: String,
     /// The version of the agreement between kernel and worker.
     pub interface: u32,

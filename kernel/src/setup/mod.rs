@@ -11,6 +11,7 @@ pub mod build;
 pub mod compiler;
 pub mod error;
 pub mod index;
+pub mod install;
 pub mod kit;
 pub mod progress;
 pub mod stamp;
@@ -32,24 +33,34 @@ use stamp::Sources;
 /// # Errors
 /// There is no usable compiler, the build fails, or the kit cannot be written; see [`SetupError`].
 pub fn ensure(progress: &mut dyn FnMut(SetupEvent)) -> Result<Kit, SetupError> {
+    let kernel = Path::new(env!("CARGO_MANIFEST_DIR"));
+    let workspace = kernel.parent().unwrap_or(kernel).to_owned();
+    ensure_at(&Place { home: KitHome::find()?, workspace, target_dir: None }, progress)
+}
+
+/// Where kits are kept and what they are built from.
+pub struct Place {
+    /// The folder of kits.
+    pub home: KitHome,
+    /// The workspace with the prelude.
+    pub workspace: PathBuf,
+    /// A folder for cargo's files instead of the one that cargo chooses.
+    pub target_dir: Option<PathBuf>,
+}
+
+/// As [`ensure`], for a given place.
+///
+/// # Errors
+/// As [`ensure`].
+pub fn ensure_at(place: &Place, progress: &mut dyn FnMut(SetupEvent)) -> Result<Kit, SetupError> {
     let started = Instant::now();
-    let home = KitHome::find()?;
-    let workspace = workspace();
-    let kit = match find(&home, &workspace)? {
+    let kit = match find(&place.home, &place.workspace)? {
         Found::Kit(kit) => *kit,
-        Found::Missing { sources, compiler } => {
-            build_once(&home, &workspace, &sources, &compiler, progress)?
-        }
+        Found::Missing { sources, compiler } => build_once(place, &sources, &compiler, progress)?,
     };
     kit.hold()?;
     progress(SetupEvent::Ready { elapsed: started.elapsed() });
     Ok(kit)
-}
-
-/// The workspace that this program was built from.
-fn workspace() -> PathBuf {
-    let kernel = Path::new(env!("CARGO_MANIFEST_DIR"));
-    kernel.parent().unwrap_or(kernel).to_owned()
 }
 
 enum Found {
@@ -89,12 +100,12 @@ fn find(home: &KitHome, workspace: &Path) -> Result<Found, SetupError> {
 /// Builds the kit while holding the lock of the folder, so that of two kernels that start at once on
 /// a cold folder one builds and the other waits.
 fn build_once(
-    home: &KitHome,
-    workspace: &Path,
+    place: &Place,
     sources: &Sources,
     compiler: &Compiler,
     progress: &mut dyn FnMut(SetupEvent),
 ) -> Result<Kit, SetupError> {
+    let Place { home, workspace, .. } = place;
     fs::create_dir_all(&home.kits).map_err(SetupError::files("create", &home.kits))?;
     let path = home.kits.join("lock");
     let lock = File::create(&path).map_err(SetupError::files("open", &path))?;
@@ -107,12 +118,13 @@ fn build_once(
         }
         Err(TryLockError::Error(error)) => return Err(SetupError::files("lock", &path)(error)),
     }
-    let dir = home.folder(&sources.stamp(compiler));
+    let name = sources.stamp(compiler);
+    let dir = home.folder(&name);
     if let Some(kit) = Kit::load(&dir).filter(|kit| kit.compiler.is_unchanged()) {
         return Ok(kit);
     }
     progress(SetupEvent::Needed(reason(home, &dir, compiler)));
-    let built = build::build(workspace, compiler, progress)?;
+    let built = build::build(place, compiler, &name, progress)?;
     progress(SetupEvent::Assembling);
     let kit = assemble::assemble(home, workspace, sources, compiler, &built)?;
     home.prune(&kit.dir);
@@ -132,3 +144,6 @@ fn reason(home: &KitHome, dir: &Path, compiler: &Compiler) -> Reason {
         Some(_) => Reason::SourcesChanged,
     }
 }
+
+#[cfg(test)]
+mod tests;

@@ -1,4 +1,4 @@
-//! The stamp: one hash of everything that decides how a kit is built.
+//! One hash of everything that decides how a kit is built, by which it is found again.
 
 use std::fs;
 use std::path::{Path, PathBuf};
@@ -8,7 +8,7 @@ use super::error::SetupError;
 use super::kit::INTERFACE;
 
 /// How many hexadecimal digits of a hash name a folder: 96 bits, far beyond chance.
-const DIGITS: usize = 24;
+pub const DIGITS: usize = 24;
 
 /// What the sources say about the build.
 pub struct Sources {
@@ -50,7 +50,7 @@ impl Sources {
         Ok(Some(Self { hash: hasher.finalize().to_hex()[..DIGITS].to_owned(), needed, profile }))
     }
 
-    /// The stamp of a kit built from these sources by a compiler.
+    /// The name of the kit built from these sources by a compiler.
     pub fn stamp(&self, compiler: &Compiler) -> String {
         let mut hasher = blake3::Hasher::new();
         hasher.update(self.hash.as_bytes());

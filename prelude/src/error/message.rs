@@ -66,6 +66,19 @@ impl fmt::Display for Error {
                     file(path)
                 )
             }
+            Error::StrayQuote { path, line } => write!(
+                f,
+                "{}, line {line}: a quote inside a field; put the whole field in quotes and \
+                 double the quotes in it",
+                file(path)
+            ),
+            Error::BadDelimiter { delimiter, decimal_comma } => {
+                write!(f, "{delimiter:?} cannot stand between fields")?;
+                if *decimal_comma && *delimiter == ',' {
+                    write!(f, " when numbers are written with a comma")?;
+                }
+                write!(f, "; accepted: one ASCII character such as ',', ';', '|' or '\\t'")
+            }
             Error::UnnamedColumn { path, position } => write!(
                 f,
                 "{}: column {position} has no name; name it in the header, or read it with \
@@ -81,6 +94,16 @@ impl fmt::Display for Error {
             Error::BadJsonLine { path, line, reason } => {
                 write!(f, "{}, line {line}: not a JSON object: {}", file(path), Plain(reason))
             }
+            Error::MixedKinds { path, column, first, other } => write!(
+                f,
+                "{}, line {}: {} is {} here and {} in line {}",
+                file(path),
+                other.1,
+                Name(column),
+                other.0,
+                first.0,
+                first.1
+            ),
             Error::Unreadable { path, format, reason } => write!(
                 f,
                 "{} cannot be read as {format}; it is damaged, cut short or of another kind: {}",
@@ -118,6 +141,17 @@ impl fmt::Display for Error {
                     None => Ok(()),
                 }
             }
+            Error::MixedColumn { column, n_numbers, n_others, example } => write!(
+                f,
+                "column {} holds {} and {} that are not, such as {} in row {}; mend it, name it \
+                 missing with `TableOptions::new().missing([…])`, or choose columns with \
+                 `.data_matrix_of([…])`",
+                Name(column),
+                plural(*n_numbers, "number"),
+                plural(*n_others, "value"),
+                Name(&example.0),
+                example.1
+            ),
             Error::MissingValues { columns, n_rows, n_complete } => {
                 write!(f, "values are missing: ")?;
                 list(f, columns, |f, c| write!(f, "{} in {}", c.count, Name(&c.column)))?;
@@ -144,11 +178,7 @@ impl fmt::Display for Error {
                     write!(f, " ({})", Name(label))?;
                 }
                 if *count > 1 {
-                    write!(
-                        f,
-                        ", and {} that are not finite elsewhere",
-                        plural(count - 1, "value")
-                    )?;
+                    write!(f, " and has {} not finite", plural(count - 1, "more value"))?;
                 }
                 write!(f, "; only finite numbers are accepted")
             }

@@ -136,6 +136,11 @@ pub struct Place {
     pub column: u32,
 }
 
+/// What the dynamic linker says; the error around it only says that it failed.
+pub fn linker_words(error: &dyn std::error::Error) -> String {
+    error.source().map_or_else(|| error.to_string(), |cause| format!("{cause:?}").trim_matches('"').to_owned())
+}
+
 /// Writes one frame.
 ///
 /// # Errors

@@ -17,7 +17,7 @@ use std::time::Duration;
 
 use super::cell::{Cell, note_panics};
 use super::message::{
-    Command, Ended, Form, How, INTERFACE, Report, Run, Trouble, read_frame, write_frame,
+    Command, Ended, Form, How, INTERFACE, Report, Run, Trouble, linker_words, read_frame, write_frame,
 };
 use super::shelf::Shelf;
 
@@ -163,7 +163,7 @@ impl Libraries {
                 // SAFETY: the library was compiled for this worker by its kernel; its initializers
                 // are those of Rust code, which has none of its own.
                 let library = unsafe { libloading::Library::new(path) }
-                    .map_err(|error| format!("the compiled cell would not load: {error}"))?;
+                    .map_err(|error| format!("the compiled cell would not load: {}", linker_words(&error)))?;
                 self.loaded.insert(path.clone(), library);
             }
         }

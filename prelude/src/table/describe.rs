@@ -1,6 +1,10 @@
 //! What is in each column of a table, and where it has holes.
 
-use crate::error::ColumnCount;
+use std::collections::HashMap;
+
+use polars::prelude::{Column, DataFrame, DataType};
+
+use crate::error::{ColumnCount, Result};
 
 /// Each column of a table in a few numbers; made by [`describe_columns`].
 #[derive(Debug, Clone, PartialEq)]
@@ -109,4 +113,121 @@ impl MissingValues {
     pub fn n_complete_rows(&self) -> usize {
         self.patterns.iter().filter(|pattern| pattern.columns.is_empty()).map(|p| p.n_rows).sum()
     }
+}
+
+/// Each column of a table in a few numbers: how many values, how many missing, how many different
+/// ones, and for numbers mean, standard deviation (divisor n − 1), extremes and quartiles.
+///
+/// ```
+/// use semiaxis::polars::prelude::*;
+/// use semiaxis::table::describe_columns;
+///
+/// let table = df! { "length" => [Some(1.0), Some(2.0), Some(4.0), None] }?;
+/// let length = describe_columns(&table)?.column("length").unwrap().numbers.unwrap();
+/// assert_eq!((length.lower_quartile, length.median, length.upper_quartile), (1.5, 2.0, 3.0));
+/// # Ok::<(), Box<dyn std::error::Error>>(())
+/// ```
+///
+/// # Errors
+///
+/// Those of the data-frame library, for types it cannot count.
+pub fn describe_columns(table: &DataFrame) -> Result<ColumnDescriptions> {
+    let columns = table.columns().iter().map(describe).collect::<Result<_>>()?;
+    Ok(ColumnDescriptions { n_rows: table.height(), columns })
+}
+
+/// Where a table has holes: how many in each column, and which columns miss values together.
+///
+/// ```
+/// use semiaxis::polars::prelude::*;
+/// use semiaxis::table::missing_values;
+///
+/// let table = df! {
+///     "length" => [Some(1.0), None, None],
+///     "width" => [Some(1.0), None, Some(2.0)],
+/// }?;
+/// let missing = missing_values(&table);
+/// assert_eq!((missing.n_missing(), missing.n_complete_rows()), (3, 1));
+/// assert_eq!(missing.patterns().len(), 3);
+/// # Ok::<(), Box<dyn std::error::Error>>(())
+/// ```
+pub fn missing_values(table: &DataFrame) -> MissingValues {
+    let name = |column: &Column| column.name().to_string();
+    let columns: Vec<ColumnCount> = table
+        .columns()
+        .iter()
+        .map(|column| ColumnCount { column: name(column), count: column.null_count() })
+        .collect();
+    let holed: Vec<&Column> = table.columns().iter().filter(|c| c.null_count() > 0).collect();
+    let masks: Vec<Vec<bool>> = holed
+        .iter()
+        .map(|column| column.is_null().iter().map(|missing| missing == Some(true)).collect())
+        .collect();
+    let mut places: HashMap<Vec<bool>, usize> = HashMap::new();
+    let mut patterns: Vec<MissingPattern> = Vec::new();
+    for row in 0..table.height() {
+        let mask: Vec<bool> = masks.iter().map(|mask| mask[row]).collect();
+        let place = *places.entry(mask).or_insert_with_key(|mask| {
+            let missing = holed.iter().zip(mask).filter(|(_, missing)| **missing);
+            let columns = missing.map(|(column, _)| name(column)).collect();
+            patterns.push(MissingPattern { columns, n_rows: 0 });
+            patterns.len() - 1
+        });
+        patterns[place].n_rows += 1;
+    }
+    // Stable, so that groups of the same size keep the order of their first rows.
+    patterns.sort_by_key(|pattern| std::cmp::Reverse(pattern.n_rows));
+    MissingValues { n_rows: table.height(), columns, patterns }
+}
+
+fn describe(column: &Column) -> Result<ColumnDescription> {
+    let missing = column.null_count();
+    let numbers = if column.dtype().is_primitive_numeric() {
+        let numbers = column.cast(&DataType::Float64)?;
+        Some(describe_numbers(numbers.f64()?.iter().flatten().collect()))
+    } else {
+        None
+    };
+    Ok(ColumnDescription {
+        column: column.name().to_string(),
+        dtype: column.dtype().to_string(),
+        count: column.len() - missing,
+        missing,
+        n_distinct: column.drop_nulls().n_unique()?,
+        numbers,
+    })
+}
+
+fn describe_numbers(mut values: Vec<f64>) -> NumberDescription {
+    let n_values = values.len();
+    values.retain(|value| value.is_finite());
+    let n_not_finite = n_values - values.len();
+    values.sort_unstable_by(f64::total_cmp);
+    let n = values.len() as f64;
+    let first = values.first().copied().unwrap_or(f64::NAN);
+    // Deviations from a value of the column keep the digits that a large offset would cost.
+    let mean = first + values.iter().map(|value| value - first).sum::<f64>() / n;
+    let squares: f64 = values.iter().map(|value| (value - mean).powi(2)).sum();
+    let standard_deviation = if n < 2.0 { f64::NAN } else { (squares / (n - 1.0)).sqrt() };
+    NumberDescription {
+        mean,
+        standard_deviation,
+        min: first,
+        lower_quartile: quantile(&values, 0.25),
+        median: quantile(&values, 0.5),
+        upper_quartile: quantile(&values, 0.75),
+        max: values.last().copied().unwrap_or(f64::NAN),
+        n_not_finite,
+    }
+}
+
+/// Definition 7 of Hyndman and Fan: the value at (n − 1) q, counted from zero.
+fn quantile(sorted: &[f64], q: f64) -> f64 {
+    if sorted.is_empty() {
+        return f64::NAN;
+    }
+    let position = (sorted.len() - 1) as f64 * q;
+    let below = position.floor() as usize;
+    let above = (below + 1).min(sorted.len() - 1);
+    sorted[below] + (position - below as f64) * (sorted[above] - sorted[below])
 }

@@ -9,17 +9,27 @@
 //! messages; a missing value is a cell without content, or one that says `NA` (see
 //! [`TableOptions`]), and is not the same as a number that is not finite.
 
-mod describe;
+mod read;
+
+mod frame;
 mod matrix;
 mod named;
-mod nearest;
 mod notes;
 mod options;
 
+mod describe;
+mod nearest;
+
+#[cfg(test)]
+mod tests;
+
 pub use describe::{
     ColumnDescription, ColumnDescriptions, MissingPattern, MissingValues, NumberDescription,
+    describe_columns, missing_values,
 };
+pub use frame::FrameToMatrix;
 pub use matrix::DataMatrix;
 pub use named::NamedMatrix;
 pub use notes::{DroppedRow, LabelSource, LeftOut, LeftOutReason, MatrixNotes};
 pub use options::{Label, MatrixOptions, Missing};
+pub use read::{READABLE, TableOptions, read_table, read_table_with};

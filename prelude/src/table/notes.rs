@@ -29,6 +29,8 @@ pub struct LeftOut {
 pub enum LeftOutReason {
     /// It is not numeric but of this type.
     NotNumeric(String),
+    /// It holds no value at all.
+    Empty,
     /// It labels the rows.
     Labels,
 }
@@ -72,6 +74,7 @@ impl fmt::Display for LeftOutReason {
     fn fmt(&self, f: &mut fmt::Formatter<'_>) -> fmt::Result {
         match self {
             LeftOutReason::NotNumeric(dtype) => write!(f, "not numeric ({dtype})"),
+            LeftOutReason::Empty => write!(f, "holds no value"),
             LeftOutReason::Labels => write!(f, "labels the rows"),
         }
     }

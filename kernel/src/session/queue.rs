@@ -1,0 +1,116 @@
+//! Cells that wait, and the one that runs.
+
+use std::collections::VecDeque;
+
+use chrono::{DateTime, Utc};
+use jupyter_protocol::{ExecuteRequest, JupyterMessage};
+
+use super::engine::Job;
+use crate::cells::types::CellRequest;
+use crate::wire::Inlet;
+
+/// A cell that a client asked to run.
+#[derive(Debug)]
+pub struct Order {
+    /// Where it came from.
+    pub inlet: Inlet,
+    /// The request as it came, the parent of everything the cell causes.
+    pub message: JupyterMessage,
+    /// Its content.
+    pub execute: ExecuteRequest,
+}
+
+/// The cell at the head of the queue.
+#[derive(Debug)]
+pub struct Running {
+    /// What was asked.
+    pub order: Order,
+    /// The number shown as cell `[n]`.
+    pub count: usize,
+    /// When it got its turn.
+    pub since: DateTime<Utc>,
+    /// Whether the engine has it, or it still waits for the engine to be ready.
+    pub handed_over: bool,
+    /// The plain text of its result, for the history.
+    pub output: Option<String>,
+}
+
+impl Running {
+    /// Whether clients see what it shows.
+    pub fn is_heard(&self) -> bool {
+        !self.order.execute.silent
+    }
+
+    /// Whether it is counted and remembered. A silent cell never is, whatever else it asks.
+    pub fn is_stored(&self) -> bool {
+        self.order.execute.store_history && !self.order.execute.silent
+    }
+
+    /// What the engine is given.
+    pub fn job(&self) -> Job {
+        let expressions = self.order.execute.user_expressions.iter().flatten();
+        let mut expressions: Vec<_> =
+            expressions.map(|(name, text)| (name.clone(), text.clone())).collect();
+        // The protocol's map has no order; sorting makes a run repeatable.
+        expressions.sort();
+        let cell_id = self.order.message.metadata.get("cellId").and_then(|id| id.as_str());
+        Job {
+            request: CellRequest {
+                code: self.order.execute.code.clone(),
+                count: u32::try_from(self.count).unwrap_or(u32::MAX),
+                cell_id: cell_id.map(str::to_owned),
+                silent: self.order.execute.silent,
+            },
+            expressions,
+        }
+    }
+}
+
+/// The cells of one session.
+#[derive(Debug, Default)]
+pub struct Queue {
+    /// Those that have not had their turn.
+    waiting: VecDeque<Order>,
+    /// The one that has.
+    pub running: Option<Running>,
+    /// How many stored cells have had their turn.
+    counted: usize,
+}
+
+impl Queue {
+    /// Adds a cell at the end.
+    pub fn push(&mut self, order: Order) {
+        self.waiting.push_back(order);
+    }
+
+    /// Gives the next cell its turn and its number, if none is running.
+    ///
+    /// A cell that is not stored shows the number the next stored one will get.
+    pub fn advance(&mut self) -> Option<&Running> {
+        if self.running.is_some() {
+            return None;
+        }
+        let order = self.waiting.pop_front()?;
+        let running = Running {
+            order,
+            count: self.counted + 1,
+            since: Utc::now(),
+            handed_over: false,
+            output: None,
+        };
+        if running.is_stored() {
+            self.counted += 1;
+        }
+        Some(self.running.insert(running))
+    }
+
+    /// Takes everything that waits.
+    pub fn drain(&mut self) -> VecDeque<Order> {
+        std::mem::take(&mut self.waiting)
+    }
+
+    /// The number that an aborted or malformed request reports.
+    pub fn counted(&self) -> usize {
+        self.counted
+    }
+}

@@ -1,0 +1,202 @@
+//! Numbers from outside: books, and other programs on open data. `references/README.md` says how
+//! the files were made.
+
+use nalgebra::{DMatrix, dmatrix};
+use semiaxis::components::{Scaling, principal_components};
+use semiaxis::parallel::{ParallelOptions, parallel_analysis};
+use semiaxis::polars::prelude::{Column, DataFrame, NamedFrom, Series};
+use semiaxis::table::{DataMatrix, describe_columns};
+use semiaxis_tests::compare::{
+    assert_all_relative, assert_columns_up_to_sign, assert_relative, assert_zero,
+};
+use serde_json::Value;
+
+fn load(name: &str) -> Value {
+    let path = format!("{}/references/{name}", env!("CARGO_MANIFEST_DIR"));
+    serde_json::from_str(&std::fs::read_to_string(path).unwrap()).unwrap()
+}
+
+fn cases(file: &Value) -> impl Iterator<Item = &Value> {
+    file["cases"].as_array().unwrap().iter()
+}
+
+fn numbers(value: &Value) -> Vec<f64> {
+    value.as_array().unwrap().iter().map(|number| number.as_f64().unwrap()).collect()
+}
+
+fn matrix(value: &Value) -> DMatrix<f64> {
+    let rows: Vec<Vec<f64>> = value.as_array().unwrap().iter().map(numbers).collect();
+    DMatrix::from_fn(rows.len(), rows[0].len(), |i, j| rows[i][j])
+}
+
+fn data(case: &Value) -> DataMatrix {
+    let values = matrix(&case["data"]);
+    let names: Vec<&str> =
+        case["variables"].as_array().unwrap().iter().map(|name| name.as_str().unwrap()).collect();
+    let labels: Vec<String> = (1..=values.nrows()).map(|row| row.to_string()).collect();
+    DataMatrix::from_values(values, names, labels).unwrap()
+}
+
+fn scaling(case: &Value) -> Scaling {
+    match case["scaling"].as_str().unwrap() {
+        "correlation" => Scaling::Correlation,
+        "covariance" => Scaling::Covariance,
+        other => panic!("{other}"),
+    }
+}
+
+/// Compares everything a case holds; `vectors` is the tolerance for loadings and scores.
+fn check_components(case: &Value, roots: f64, vectors: f64) {
+    let x = data(case);
+    let pca = principal_components(&x, scaling(case)).unwrap();
+    let what = format!("{} by {} ({})", case["name"], case["by"], scaling(case));
+    let expected = numbers(&case["variances"]);
+    assert_eq!(pca.n_components(), expected.len(), "{what}");
+    assert_all_relative(pca.variances().as_slice(), &expected, roots, &what);
+    if !case["proportions"].is_null() {
+        let expected = numbers(&case["proportions"]);
+        assert_all_relative(pca.proportions().as_slice(), &expected, roots, &what);
+    }
+    let loadings = matrix(&case["loadings"]);
+    assert_columns_up_to_sign(pca.loadings(), &loadings, vectors, &what);
+    if !case["scores"].is_null() {
+        // A score has the sign of its component's loadings, here ours.
+        let mut expected = matrix(&case["scores"]);
+        for (k, mut column) in expected.column_iter_mut().enumerate() {
+            if loadings.column(k).dot(&pca.loadings().column(k)) < 0.0 {
+                column.neg_mut();
+            }
+        }
+        let scores = pca.scores().rows(0, expected.nrows()).into_owned();
+        semiaxis_tests::compare::assert_matrix(&scores, &expected, vectors, &what);
+    }
+}
+
+/// NIST/SEMATECH e-Handbook of Statistical Methods, section 6.5.5.2, "Numerical example": the
+/// table, its correlation matrix's roots and vectors, and the factor structure, as printed with
+/// four decimals. From memory; numpy 2.4.6 gives the same digits.
+#[test]
+fn the_worked_example_of_the_engineering_statistics_handbook() {
+    let x = dmatrix![
+        7.0, 4.0, 3.0; 4.0, 1.0, 8.0; 6.0, 3.0, 5.0; 8.0, 6.0, 1.0; 8.0, 5.0, 7.0;
+        7.0, 2.0, 9.0; 5.0, 3.0, 3.0; 9.0, 5.0, 8.0; 7.0, 4.0, 5.0; 8.0, 2.0, 2.0
+    ];
+    let x = DataMatrix::from_unnamed(x).unwrap();
+    let pca = principal_components(&x, Scaling::Correlation).unwrap();
+    let half_a_unit = 0.5e-4;
+    for (actual, printed) in pca.variances().iter().zip([1.7688, 0.9271, 0.3041]) {
+        assert_zero(actual - printed, half_a_unit + 1e-6, "root"); // 0.30415 was cut, not rounded
+    }
+    let printed = dmatrix![
+        0.6420, 0.3847, -0.6632; 0.6864, 0.0971, 0.7207; -0.3417, 0.9179, 0.2017
+    ];
+    assert_columns_up_to_sign(pca.loadings(), &printed, half_a_unit / 0.9179, "vectors");
+    let structure = dmatrix![
+        0.8538, 0.3704, -0.3658; 0.9128, 0.0935, 0.3975; -0.4544, 0.8838, 0.1112
+    ];
+    let actual = pca.structure();
+    assert_columns_up_to_sign(&actual, &structure, half_a_unit / 0.9128, "structure");
+    assert_zero(pca.mean()[0] - 6.9, 1e-12, "mean of the first variable");
+}
+
+#[test]
+fn open_data_by_a_full_singular_value_decomposition() {
+    let file = load("components.json");
+    let mut n_cases = 0;
+    for case in cases(&file).filter(|case| case["by"].as_str().unwrap().contains("PCA")) {
+        // Loadings of the breast cancer data belong to roots over ten orders of magnitude; the
+        // reference itself holds those of the smallest to some nine digits only.
+        let cancer = case["name"] == "breast_cancer";
+        let (roots, vectors) = if cancer { (1e-8, 1e-8) } else { (1e-10, 1e-10) };
+        check_components(case, roots, vectors);
+        n_cases += 1;
+    }
+    assert_eq!(n_cases, 8);
+}
+
+#[test]
+fn open_data_by_the_statistics_language() {
+    for case in cases(&load("arrests.json")) {
+        check_components(case, 1e-10, 1e-10);
+    }
+}
+
+#[test]
+fn ill_conditioned_data_in_sixty_digits() {
+    let file = load("components.json");
+    let mut n_cases = 0;
+    for case in cases(&file).filter(|case| case["by"].as_str().unwrap().contains("mpmath")) {
+        let x = data(case);
+        let pca = principal_components(&x, scaling(case)).unwrap();
+        let expected = numbers(&case["variances"]);
+        let what = format!("{} ({})", case["name"], scaling(case));
+        // Each singular value is known to about ε times the largest (twice that for its square);
+        // far from the origin, to ε times the offset, a thousand times the spread.
+        let far = case["name"].as_str().unwrap().contains("1000");
+        let unit = f64::EPSILON * if far { 3000.0 } else { 1.0 };
+        for (k, expected) in expected.iter().enumerate() {
+            if k >= pca.n_components() {
+                // What is not reported lies below what the rounding of the data allows to know.
+                assert!(*expected <= pca.tolerance(), "{what}: root {k}, {expected:e}");
+                continue;
+            }
+            let allowed = 20.0 * unit * (numbers(&case["variances"])[0] / expected).sqrt();
+            assert_relative(pca.variances()[k], *expected, allowed.max(1e-13), &what);
+        }
+        assert!(pca.n_components() >= if far { 4 } else { 7 }, "{what}: {}", pca.n_components());
+        n_cases += 1;
+    }
+    assert_eq!(n_cases, 4);
+}
+
+/// The simulation of the other program draws whole tables; here the cross-product is drawn. Means
+/// of 20 000 and of as many tables may differ by five standard errors of their difference; the
+/// percentile's error is taken as three times the mean's (its own, for normal roots, is 2.1 times).
+#[test]
+fn noise_has_the_roots_of_an_independent_simulation() {
+    for case in cases(&load("parallel.json")) {
+        let n = case["n_rows"].as_u64().unwrap() as usize;
+        let p = case["n_variables"].as_u64().unwrap() as usize;
+        let replicates = case["replicates"].as_u64().unwrap() as usize;
+        // Any data of this shape that vary and have full rank will do.
+        let x = DMatrix::from_fn(n, p, |i, j| ((i * i + 3 * i * j + 7 * j) as f64 * 0.37).sin());
+        let x = DataMatrix::from_unnamed(x).unwrap();
+        let options = ParallelOptions::new().replicates(replicates).seed(20);
+        let result = parallel_analysis(&x, options).unwrap();
+        let (mean, deviation) = (numbers(&case["mean"]), numbers(&case["deviation"]));
+        let percentile = numbers(&case["percentile_95"]);
+        assert_eq!(result.noise_mean().len(), mean.len(), "{n} x {p}");
+        for k in 0..mean.len() {
+            let error = deviation[k] * (2.0 / replicates as f64).sqrt();
+            let what = format!("{n} x {p}, root {}", k + 1);
+            assert_zero(result.noise_mean()[k] - mean[k], 5.0 * error, &what);
+            assert_zero(result.noise_percentile()[k] - percentile[k], 15.0 * error, &what);
+            // A standard deviation of N values has a relative error of about 1/√(2N).
+            assert_relative(result.noise_deviation()[k], deviation[k], 0.05, &what);
+        }
+    }
+}
+
+#[test]
+fn column_summaries_by_the_statistics_language() {
+    let file = load("arrests.json");
+    let case = cases(&file).next().unwrap();
+    let x = data(case);
+    let columns: Vec<Column> = x
+        .variables()
+        .iter()
+        .map(|name| Series::new(name.as_str().into(), x.variable(name).unwrap()).into())
+        .collect();
+    let described = describe_columns(&DataFrame::new(x.n_rows(), columns).unwrap()).unwrap();
+    for summary in file["summaries"].as_array().unwrap() {
+        let name = summary["column"].as_str().unwrap();
+        let actual = described.column(name).unwrap().numbers.unwrap();
+        assert_relative(actual.mean, summary["mean"].as_f64().unwrap(), 1e-14, name);
+        let deviation = summary["standard_deviation"].as_f64().unwrap();
+        assert_relative(actual.standard_deviation, deviation, 1e-14, name);
+        let quartiles = numbers(&summary["quartiles"]);
+        let ours =
+            [actual.min, actual.lower_quartile, actual.median, actual.upper_quartile, actual.max];
+        assert_all_relative(&ours, &quartiles, 1e-14, name);
+    }
+}
