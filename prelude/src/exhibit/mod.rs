@@ -20,6 +20,9 @@ mod values;
 mod numbers;
 mod text;
 
+#[cfg(test)]
+mod tests;
+
 pub use chart::{Chart, Names, Reference, biplot, loading_plot, score_plot, scree};
 pub use numbers::{fixed, significant, stored};
 pub use tables::{NumberFormat, Table, TableColumn};
@@ -76,10 +79,12 @@ impl Bundle {
 
     /// The text of one form, if it is there and is text.
     pub fn text(&self, mime: &str) -> Option<&str> {
-        self.entries.iter().find(|(known, _)| known == mime).and_then(|(_, content)| match content {
-            Content::Text(text) => Some(text.as_str()),
-            _ => None,
-        })
+        self.entries.iter().find(|(known, _)| known == mime).and_then(
+            |(_, content)| match content {
+                Content::Text(text) => Some(text.as_str()),
+                _ => None,
+            },
+        )
     }
 
     /// Whether the bundle shows nothing.

@@ -140,9 +140,14 @@ impl Arrows {
             let top: Vec<String> = order
                 .into_iter()
                 .take(3)
-                .map(|v| format!("{} ({})", shortened(&self.names[v], 40), fixed(of(&self.tips[v]), 3)))
+                .map(|v| {
+                    format!("{} ({})", shortened(&self.names[v], 40), fixed(of(&self.tips[v]), 3))
+                })
                 .collect();
-            words.push_str(&format!(" Largest loadings on component {component}: {}.", top.join(", ")));
+            words.push_str(&format!(
+                " Largest loadings on component {component}: {}.",
+                top.join(", ")
+            ));
         }
         words
     }
@@ -175,8 +180,7 @@ impl Arrows {
 }
 
 fn arrow(from: (f64, f64), to: (f64, f64), with_head: bool) -> String {
-    let mut path =
-        format!("M{} {}L{} {}", tenth(from.0), tenth(from.1), tenth(to.0), tenth(to.1));
+    let mut path = format!("M{} {}L{} {}", tenth(from.0), tenth(from.1), tenth(to.0), tenth(to.1));
     let length = (to.0 - from.0).hypot(to.1 - from.1);
     if with_head && length > 2.0 {
         let head = HEAD.min(length * 0.6);

@@ -74,6 +74,7 @@ pub(super) fn draw(source: &Source, settings: &Settings) -> Drawing {
         let n_variables = placed.len();
         units.block(&mut space, &plane);
         let names = units.wishes(&plane, MOST_NAMED_OF_MANY);
+        units.draw_named(svg, &names);
         placed.extend(space.place(&names, LABEL_SIZE, LABEL_MOST).into_iter().flatten());
         push_labels(svg, &placed, LABEL_SIZE);
         notes.extend(arrows.notes(n_variables));

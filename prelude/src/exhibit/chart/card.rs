@@ -223,8 +223,7 @@ fn with_rest(
     if let Some(line) = lines.last_mut() {
         // The last entries make way until the count fits behind them.
         while let Some((x, entry)) = line.last() {
-            let end =
-                x + sign_room(&entry.sign) + width(&entry.text, LEGEND_SIZE, Weight::Regular);
+            let end = x + sign_room(&entry.sign) + width(&entry.text, LEGEND_SIZE, Weight::Regular);
             let text = format!("and {left} more");
             if end + 18.0 + width(&text, LEGEND_SIZE, Weight::Regular) <= inner {
                 let entry = LegendEntry { sign: LegendSign::Nothing, text };
@@ -257,7 +256,11 @@ fn draw_entry(svg: &mut Svg, x: f64, y: f64, entry: &LegendEntry) {
                 .with("stroke", color)
                 .with("stroke-width", "2")
                 .with("fill", "none");
-            if dashes.is_empty() { line.done() } else { line.with("stroke-dasharray", dashes).done() }
+            if dashes.is_empty() {
+                line.done()
+            } else {
+                line.with("stroke-dasharray", dashes).done()
+            }
         }
         LegendSign::Swatch(color) => svg
             .element("rect")

@@ -84,7 +84,12 @@ impl LabelSpace {
     }
 
     /// Places labels in the order of the wishes; `None` for one that finds no place.
-    pub fn place(&mut self, wishes: &[Wish], size: f64, most_width: f64) -> Vec<Option<PlacedLabel>> {
+    pub fn place(
+        &mut self,
+        wishes: &[Wish],
+        size: f64,
+        most_width: f64,
+    ) -> Vec<Option<PlacedLabel>> {
         wishes
             .iter()
             .map(|wish| {
@@ -155,8 +160,11 @@ impl LabelSpace {
 
 /// Writes placed labels; a rim in the card's colour keeps them readable over lines.
 pub(super) fn push_labels(svg: &mut Svg, labels: &[PlacedLabel], size: f64) {
-    svg.element("g").with("class", "leaders").with("stroke", FAINT).with("stroke-width", ".8").around(
-        |svg| {
+    svg.element("g")
+        .with("class", "leaders")
+        .with("stroke", FAINT)
+        .with("stroke-width", ".8")
+        .around(|svg| {
             for (from, to) in labels.iter().filter_map(|label| label.leader) {
                 svg.element("line")
                     .at("x1", from.0)
@@ -165,8 +173,7 @@ pub(super) fn push_labels(svg: &mut Svg, labels: &[PlacedLabel], size: f64) {
                     .at("y2", to.1)
                     .done();
             }
-        },
-    );
+        });
     svg.element("g")
         .with("class", "labels")
         .at("font-size", size)
@@ -193,7 +200,15 @@ fn area_towards(wish: &Wish, angle: f64, radius: f64, (w, h): (f64, f64)) -> Are
     let (cos, sin) = (angle.cos(), -angle.sin());
     let (x, y) = (wish.x + radius * cos, wish.y + radius * sin);
     // A smooth rule would slide the box along; thirds give the usual eight places.
-    let shift = |part: f64| if part > 0.38 { 0.0 } else if part < -0.38 { 1.0 } else { 0.5 };
+    let shift = |part: f64| {
+        if part > 0.38 {
+            0.0
+        } else if part < -0.38 {
+            1.0
+        } else {
+            0.5
+        }
+    };
     let (left, top) = (x - w * shift(cos), y - h * shift(sin));
     Area { left, top, right: left + w, bottom: top + h }
 }
@@ -201,7 +216,8 @@ fn area_towards(wish: &Wish, angle: f64, radius: f64, (w, h): (f64, f64)) -> Are
 fn leader(wish: &Wish, angle: f64, area: &Area) -> ((f64, f64), (f64, f64)) {
     let (cos, sin) = (angle.cos(), -angle.sin());
     let start = (wish.x + wish.clearance * cos, wish.y + wish.clearance * sin);
-    let end = (start.0.clamp(area.left, area.right), start.1.clamp(area.top + 2.0, area.bottom - 2.0));
+    let end =
+        (start.0.clamp(area.left, area.right), start.1.clamp(area.top + 2.0, area.bottom - 2.0));
     (start, end)
 }
 
@@ -223,15 +239,22 @@ mod tests {
         for &(x, y) in &points {
             space.add_mark(x, y, 4.0);
         }
-        let wishes: Vec<Wish> =
-            points.iter().enumerate().map(|(i, &(x, y))| wish(x, y, &format!("tile {i}"))).collect();
-        let placed: Vec<PlacedLabel> = space.place(&wishes, 11.0, 100.0).into_iter().flatten().collect();
+        let wishes: Vec<Wish> = points
+            .iter()
+            .enumerate()
+            .map(|(i, &(x, y))| wish(x, y, &format!("tile {i}")))
+            .collect();
+        let placed: Vec<PlacedLabel> =
+            space.place(&wishes, 11.0, 100.0).into_iter().flatten().collect();
         assert!(placed.len() > 20, "{}", placed.len());
         for (i, a) in placed.iter().enumerate() {
             assert!(SPACE.contains(&a.area));
             assert!(placed[..i].iter().all(|b| !a.area.overlaps(&b.area)));
             for &(x, y) in &points {
-                let (dx, dy) = (x.clamp(a.area.left, a.area.right) - x, y.clamp(a.area.top, a.area.bottom) - y);
+                let (dx, dy) = (
+                    x.clamp(a.area.left, a.area.right) - x,
+                    y.clamp(a.area.top, a.area.bottom) - y,
+                );
                 assert!(dx.hypot(dy) > 1.0, "label {} covers the mark at {x}, {y}", a.text);
             }
         }

@@ -158,7 +158,8 @@ fn count_classes(most: usize) -> Vec<(usize, usize, &'static str)> {
     let mut classes: Vec<(usize, usize, &'static str)> = Vec::new();
     let mut low = 1;
     for (place, color) in COUNTS.iter().enumerate() {
-        let high = if place + 1 == n { most } else { factor.powi(place as i32 + 1).floor() as usize };
+        let high =
+            if place + 1 == n { most } else { factor.powi(place as i32 + 1).floor() as usize };
         if high >= low {
             classes.push((low, high, color));
             low = high + 1;

@@ -45,6 +45,7 @@ pub use settings::Reference;
 use self::card::Card;
 use self::settings::Settings;
 use self::source::Source;
+use super::text::visible;
 use super::{Bundle, Exhibit};
 use crate::components::PrincipalComponents;
 use crate::error::Result;
@@ -206,7 +207,7 @@ impl Chart {
 impl Exhibit for Chart {
     fn exhibit(&self) -> Bundle {
         match self.draw() {
-            Ok(drawing) => Bundle::new().with_svg(drawing.svg).with_plain(drawing.words),
+            Ok(drawing) => Bundle::new().with_svg(drawing.svg).with_plain(visible(&drawing.words)),
             Err(error) => {
                 let message = format!("this chart cannot be drawn: {error}");
                 Bundle::new().with_svg(error_card(&error.to_string())).with_plain(message)

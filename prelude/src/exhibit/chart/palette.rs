@@ -25,15 +25,17 @@ pub(super) const FAINT: &str = "#8d8a84";
 ///
 /// Found by a search over CIELAB for the largest smallest distance under normal vision and the
 /// three simulated dichromacies, with lightness between 22 and 64; the tests measure it.
-pub(super) const GROUPS: [&str; 8] = [
-    "#2d2582", "#b8983c", "#ca467a", "#065948", "#2495e0", "#ba6f55", "#944a97", "#3d450f",
-];
+pub(super) const GROUPS: [&str; 8] =
+    ["#2d2582", "#b8983c", "#ca467a", "#065948", "#2495e0", "#ba6f55", "#944a97", "#3d450f"];
 
 /// Units without a group.
 pub(super) const NO_GROUP: &str = FAINT;
 
-/// The shades of aggregated counts, from few to many.
-pub(super) const COUNTS: [&str; 5] = ["#c9d3e6", "#97a9d4", "#6a78bd", "#463f9d", "#2d2582"];
+/// The shades of aggregated counts, from few to many; neutral, so that groups stand out on them.
+pub(super) const COUNTS: [&str; 5] = ["#e6e2d9", "#d0cbc0", "#b5afa3", "#989287", "#7b756c"];
+/// The segments of a divided strip and the ink on each; the last serves all that follow.
+pub(super) const SEGMENTS: [(&str, &str); 4] =
+    [("#2d2582", CARD), ("#463f9d", CARD), ("#97a9d4", INK), ("#c9d3e6", INK)];
 
 /// The shape of a mark.
 #[derive(Debug, Clone, Copy, PartialEq, Eq)]
@@ -140,11 +142,8 @@ mod tests {
     ];
     const NORMAL: [Triple; 3] = [[1.0, 0.0, 0.0], [0.0, 1.0, 0.0], [0.0, 0.0, 1.0]];
     // IEC 61966-2-1 (sRGB), linear RGB to CIE XYZ, white point D65.
-    const TO_XYZ: [Triple; 3] = [
-        [0.4124, 0.3576, 0.1805],
-        [0.2126, 0.7152, 0.0722],
-        [0.0193, 0.1192, 0.9505],
-    ];
+    const TO_XYZ: [Triple; 3] =
+        [[0.4124, 0.3576, 0.1805], [0.2126, 0.7152, 0.0722], [0.0193, 0.1192, 0.9505]];
 
     fn times(matrix: &[Triple; 3], v: Triple) -> Triple {
         matrix.map(|row| row[0] * v[0] + row[1] * v[1] + row[2] * v[2])
@@ -227,6 +226,9 @@ mod tests {
         assert!(contrast(INK_SOFT, CARD) >= 4.5);
         for color in GROUPS {
             assert!(contrast(color, CARD) >= 2.5, "{color}: {:.2}", contrast(color, CARD));
+        }
+        for (ground, ink) in SEGMENTS {
+            assert!(contrast(ground, ink) >= 4.5, "{ink} on {ground}");
         }
         // Checked against the definition: black on white is 21 to 1.
         assert!((contrast("#000000", "#ffffff") - 21.0).abs() < 1e-9);

@@ -13,7 +13,7 @@ use super::ticks::{Ticks, nice_step};
 const TICK_SIZE: f64 = 11.0;
 const TITLE_SIZE: f64 = 12.0;
 const BELOW: f64 = 40.0;
-const ABOVE: f64 = 18.0;
+const ABOVE: f64 = 24.0;
 
 /// A plane fitted into an area of the card.
 #[derive(Debug, Clone)]
@@ -111,8 +111,11 @@ impl Plane {
     /// Grid, zero lines, tick texts and titles.
     pub fn draw(&self, svg: &mut Svg, x_title: &str, y_title: &str) {
         let area = &self.area;
-        svg.element("g").with("class", "axes").at("font-size", TICK_SIZE).with("fill", INK_SOFT).around(
-            |svg| {
+        svg.element("g")
+            .with("class", "axes")
+            .at("font-size", TICK_SIZE)
+            .with("fill", INK_SOFT)
+            .around(|svg| {
                 for value in self.x_ticks.values() {
                     let (x, _) = self.place(value, 0.0);
                     line(svg, (x, area.top), (x, area.bottom), value == 0.0);
@@ -131,10 +134,9 @@ impl Plane {
                         .with("text-anchor", "end")
                         .text(&self.y_ticks.text(value));
                 }
-            },
-        );
+            });
         let most = area.width() * 0.9;
-        axis_title(svg, self.title_left, area.top - 7.0, "start", &format!("↑ {y_title}"), most);
+        axis_title(svg, self.title_left, area.top - 13.0, "start", &format!("↑ {y_title}"), most);
         axis_title(svg, area.right, area.bottom + 33.0, "end", &format!("{x_title} →"), most);
     }
 }

@@ -31,7 +31,8 @@ fn png(svg: &str, path: &Path) -> Result<Vec<u8>> {
 }
 
 fn draw(svg: &str) -> std::result::Result<Pixmap, Box<dyn std::error::Error + Send + Sync>> {
-    let options = Options { fontdb: fonts(), font_family: "DejaVu Sans".to_owned(), ..Options::default() };
+    let options =
+        Options { fontdb: fonts(), font_family: "DejaVu Sans".to_owned(), ..Options::default() };
     let tree = Tree::from_str(svg, &options)?;
     let size = tree.size().to_int_size().scale_by(PNG_SCALE).ok_or("the chart has no size")?;
     let mut picture = Pixmap::new(size.width(), size.height()).ok_or("the picture has no size")?;

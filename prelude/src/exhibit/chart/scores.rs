@@ -43,6 +43,7 @@ pub(super) fn draw(source: &Source, settings: &Settings) -> Drawing {
         let mut space = LabelSpace::new(plane.area);
         units.block(&mut space, &plane);
         let wishes = units.wishes(&plane, MOST_NAMED_OF_MANY);
+        units.draw_named(svg, &wishes);
         let placed: Vec<_> =
             space.place(&wishes, LABEL_SIZE, LABEL_MOST).into_iter().flatten().collect();
         push_labels(svg, &placed, LABEL_SIZE);

@@ -6,7 +6,7 @@
 use super::Drawing;
 use super::card::{Area, Card, LegendEntry, LegendSign};
 use super::measure::{Weight, width};
-use super::palette::{CARD, COUNTS, FAINT, GRID, GROUPS, INK, INK_SOFT};
+use super::palette::{CARD, FAINT, GRID, GROUPS, INK, INK_SOFT, SEGMENTS};
 use super::plane::axis_title;
 use super::settings::{Reference, Settings};
 use super::source::Source;
@@ -75,11 +75,8 @@ pub(super) fn draw(source: &Source, settings: &Settings) -> Drawing {
             bottom: room.bottom - BELOW_STEMS,
         };
         draw_stems(svg, area, source, &lines, n_shown);
-        let strip = Area {
-            top: room.bottom - STRIP_HEIGHT - 22.0,
-            bottom: room.bottom - 22.0,
-            ..area
-        };
+        let strip =
+            Area { top: room.bottom - STRIP_HEIGHT - 22.0, bottom: room.bottom - 22.0, ..area };
         draw_strip(svg, strip, source);
     });
     Drawing { svg, words }
@@ -98,30 +95,32 @@ fn draw_stems(svg: &mut Svg, area: Area, source: &Source, lines: &[Line], n_show
     let slot = area.width() / n_shown as f64;
     let x_of = |place: usize| area.left + (place as f64 + 0.5) * slot;
     let y_of = |value: f64| area.bottom - value / highest * area.height();
-    svg.element("g").with("class", "axes").at("font-size", TEXT).with("fill", INK_SOFT).around(|svg| {
-        for value in ticks.values() {
-            svg.element("line")
-                .at("x1", area.left)
-                .at("y1", y_of(value))
-                .at("x2", area.right)
-                .at("y2", y_of(value))
-                .with("stroke", if value == 0.0 { FAINT } else { GRID })
-                .done();
-            svg.element("text")
-                .at("x", area.left - 6.0)
-                .at("y", y_of(value) + 4.0)
-                .with("text-anchor", "end")
-                .text(&ticks.text(value));
-        }
-        let every = if slot >= 17.0 { 1 } else { 5 };
-        for number in (1..=n_shown).filter(|number| *number == 1 || number % every == 0) {
-            svg.element("text")
-                .at("x", x_of(number - 1))
-                .at("y", area.bottom + 15.0)
-                .with("text-anchor", "middle")
-                .text(&number.to_string());
-        }
-    });
+    svg.element("g").with("class", "axes").at("font-size", TEXT).with("fill", INK_SOFT).around(
+        |svg| {
+            for value in ticks.values() {
+                svg.element("line")
+                    .at("x1", area.left)
+                    .at("y1", y_of(value))
+                    .at("x2", area.right)
+                    .at("y2", y_of(value))
+                    .with("stroke", if value == 0.0 { FAINT } else { GRID })
+                    .done();
+                svg.element("text")
+                    .at("x", area.left - 6.0)
+                    .at("y", y_of(value) + 4.0)
+                    .with("text-anchor", "end")
+                    .text(&ticks.text(value));
+            }
+            let every = if slot >= 17.0 { 1 } else { 5 };
+            for number in (1..=n_shown).filter(|number| *number == 1 || number % every == 0) {
+                svg.element("text")
+                    .at("x", x_of(number - 1))
+                    .at("y", area.bottom + 15.0)
+                    .with("text-anchor", "middle")
+                    .text(&number.to_string());
+            }
+        },
+    );
     axis_title(svg, area.left - 44.0, area.top - 10.0, "start", "↑ Variance", area.width());
     axis_title(svg, area.right, area.bottom + 33.0, "end", "Component →", area.width());
     let dots: Vec<(f64, f64)> =
@@ -148,8 +147,11 @@ fn draw_stems(svg: &mut Svg, area: Area, source: &Source, lines: &[Line], n_show
 }
 
 fn draw_dots(svg: &mut Svg, area: Area, source: &Source, dots: &[(f64, f64)]) {
-    svg.element("g").with("class", "marks").with("fill", GROUPS[0]).with("stroke", GROUPS[0]).around(
-        |svg| {
+    svg.element("g")
+        .with("class", "marks")
+        .with("fill", GROUPS[0])
+        .with("stroke", GROUPS[0])
+        .around(|svg| {
             let mut sum = 0.0;
             for (place, &(x, y)) in dots.iter().enumerate() {
                 let share = source.share(place + 1);
@@ -173,8 +175,7 @@ fn draw_dots(svg: &mut Svg, area: Area, source: &Source, dots: &[(f64, f64)]) {
                     .with("stroke", CARD)
                     .around(|svg| svg.element("title").text(&text));
             }
-        },
-    );
+        });
 }
 
 // Shares stand right above their dots, as far as they leave the neighbours' dots and texts free.
@@ -234,15 +235,10 @@ fn draw_strip(svg: &mut Svg, area: Area, source: &Source) {
         if to - from < 1.0 && component < source.n_components() {
             let rest = percent(1.0 - (sum - share));
             let words = format!("the remaining components, from {component} on: {rest}");
-            push_segment(svg, area, (from, area.right), COUNTS[0], &words);
+            push_segment(svg, area, (from, area.right), SEGMENTS[3].0, &words);
             return;
         }
-        let (color, ink) = match component {
-            1 => (COUNTS[4], CARD),
-            2 => (COUNTS[3], CARD),
-            3 => (COUNTS[1], INK),
-            _ => (COUNTS[0], INK),
-        };
+        let (color, ink) = SEGMENTS[(component - 1).min(SEGMENTS.len() - 1)];
         let words = format!("component {component}: {}, together {}", percent(share), percent(sum));
         push_segment(svg, area, (from, to), color, &words);
         if to - from >= 18.0 {

@@ -116,7 +116,12 @@ impl Settings {
         };
         let is_scree = kind == Kind::Scree;
         for (setting, is_set, fits, charts) in [
-            ("components", self.components.is_some(), !is_scree, "score plot, loading plot, biplot"),
+            (
+                "components",
+                self.components.is_some(),
+                !is_scree,
+                "score plot, loading plot, biplot",
+            ),
             ("groups", self.groups.is_some(), has_units, "score plot, biplot"),
             ("labels", self.labels.is_some(), !is_scree, "score plot, loading plot, biplot"),
             ("coverage", self.coverage.is_some(), has_units, "score plot, biplot"),

@@ -104,14 +104,17 @@ impl<'a> Units<'a> {
     /// Ellipses and marks; returns the lines to set under the chart.
     pub fn draw(&self, svg: &mut Svg, plane: &Plane) -> Vec<String> {
         let mut notes = Vec::new();
-        self.draw_ellipses(svg, plane);
         if self.count() > MOST_MARKS {
             let all: Vec<usize> = (0..self.count()).collect();
             let classes = push_counts(svg, &self.spots(plane, &all));
             let shades: Vec<String> = classes
                 .iter()
                 .map(|(low, high, _)| {
-                    if low == high { grouped(*low) } else { format!("{}–{}", grouped(*low), grouped(*high)) }
+                    if low == high {
+                        grouped(*low)
+                    } else {
+                        format!("{}–{}", grouped(*low), grouped(*high))
+                    }
                 })
                 .collect();
             notes.push(format!(
@@ -121,6 +124,7 @@ impl<'a> Units<'a> {
             ));
             self.draw_ellipses(svg, plane);
         } else {
+            self.draw_ellipses(svg, plane);
             self.draw_marks(svg, plane, &mut notes);
         }
         self.draw_centres(svg, plane);
@@ -143,7 +147,13 @@ impl<'a> Units<'a> {
             .groups
             .iter()
             .filter(|group| group.ellipse.is_none() && group.cue.color != NO_GROUP)
-            .map(|group| if self.has_groups { shortened(&group.name, 24).into_owned() } else { "the units".to_owned() })
+            .map(|group| {
+                if self.has_groups {
+                    shortened(&group.name, 24).into_owned()
+                } else {
+                    "the units".to_owned()
+                }
+            })
             .collect();
         if !without.is_empty() {
             notes.push(format!(
@@ -166,7 +176,7 @@ impl<'a> Units<'a> {
         }
     }
 
-    /// The names to be set beside units, the farthest first, and how many units may have one.
+    /// The names to be set beside units, the farthest first.
     pub fn wishes(&self, plane: &Plane, most_of_many: usize) -> Vec<Wish> {
         let few = self.count() <= MOST_NAMED_OF_FEW;
         let most = match (self.names_are_chosen, few) {
@@ -174,9 +184,11 @@ impl<'a> Units<'a> {
             (false, true) => MOST_NAMED_OF_FEW,
             (false, false) => most_of_many,
         };
-        let clearance = if self.count() > MOST_MARKS { 1.0 } else { mark_radius(self.count()) };
+        let clearance = if self.count() > MOST_MARKS { 2.0 } else { mark_radius(self.count()) };
         self.farthest()
-            .filter_map(|unit| Some((unit, self.names[unit].filter(|name| !name.trim().is_empty())?)))
+            .filter_map(|unit| {
+                Some((unit, self.names[unit].filter(|name| !name.trim().is_empty())?))
+            })
             .take(most)
             .map(|(unit, name)| {
                 let (x, y) = self.points[unit];
@@ -185,6 +197,16 @@ impl<'a> Units<'a> {
                 Wish { x: px, y: py, text: name.to_owned(), clearance, outward }
             })
             .collect()
+    }
+
+    /// Dots for named units where hexagons stand in place of marks.
+    pub fn draw_named(&self, svg: &mut Svg, wishes: &[Wish]) {
+        if self.count() > MOST_MARKS {
+            for wish in wishes {
+                let cue = Cue { color: INK, shape: Shape::Disc };
+                push_mark(svg, cue, (wish.x, wish.y), 1.8, None);
+            }
+        }
     }
 
     /// What a chart says of the units it names.
@@ -210,7 +232,8 @@ impl<'a> Units<'a> {
                 .groups
                 .iter()
                 .map(|group| {
-                    let members: Vec<_> = group.members.iter().map(|&unit| self.points[unit]).collect();
+                    let members: Vec<_> =
+                        group.members.iter().map(|&unit| self.points[unit]).collect();
                     let centre = mean(&members);
                     format!(
                         "{} ({}, centre {}, {})",
@@ -240,7 +263,8 @@ impl<'a> Units<'a> {
 
     // Distance in standard deviations of each component: scores are uncorrelated and centred.
     fn farthest(&self) -> impl Iterator<Item = usize> {
-        let variance = |component: Option<usize>| component.map_or(1.0, |c| self.source.variances[c - 1]);
+        let variance =
+            |component: Option<usize>| component.map_or(1.0, |c| self.source.variances[c - 1]);
         let (vx, vy) = (variance(self.components.0), variance(self.components.1));
         let distance = |unit: usize| {
             let (x, y) = self.points[unit];
@@ -323,9 +347,10 @@ impl<'a> Units<'a> {
                 .with("fill", group.cue.color)
                 .with("fill-opacity", ".07")
                 .with("stroke", group.cue.color)
-                .with("stroke-width", "1.3")
+                .with("stroke-width", "1.5")
                 .around(|svg| {
-                    let text = format!("{}: {coverage} % of a normal distribution", shortened(name, 60));
+                    let text =
+                        format!("{}: {coverage} % of a normal distribution", shortened(name, 60));
                     svg.element("title").text(&text);
                 });
         }
@@ -335,10 +360,14 @@ impl<'a> Units<'a> {
         if !self.has_groups {
             return;
         }
-        svg.element("g").with("class", "centres").with("stroke", INK).with("stroke-width", "1.4").around(
-            |svg| {
+        svg.element("g")
+            .with("class", "centres")
+            .with("stroke", INK)
+            .with("stroke-width", "1.4")
+            .around(|svg| {
                 for group in self.groups.iter().filter(|group| group.ellipse.is_some()) {
-                    let members: Vec<_> = group.members.iter().map(|&unit| self.points[unit]).collect();
+                    let members: Vec<_> =
+                        group.members.iter().map(|&unit| self.points[unit]).collect();
                     let centre = mean(&members);
                     let text = format!(
                         "centre of {} · {} · {}, {}",
@@ -349,8 +378,7 @@ impl<'a> Units<'a> {
                     );
                     push_mark(svg, group.cue, plane.place(centre.0, centre.1), 6.5, Some(&text));
                 }
-            },
-        );
+            });
     }
 }
 

@@ -189,12 +189,22 @@ impl TableColumn {
         Self::new(heading, Align::Point, values.into_iter().map(cell))
     }
 
-    /// A column of counts.
-    pub fn counts(
+    /// As [`numbers`](TableColumn::numbers), with an empty cell where there is none.
+    pub(crate) fn numbers_where(
         heading: impl Into<String>,
-        counts: impl IntoIterator<Item = usize>,
+        values: impl IntoIterator<Item = Option<f64>>,
+        format: NumberFormat,
     ) -> Self {
-        Self::new(heading, Align::Point, counts.into_iter().map(|n| Cell::of(grouped(n))))
+        let cell = |value: Option<f64>| match value {
+            Some(value) => Cell { value: Some(value), ..Cell::of(format.format(value)) },
+            None => Cell::of(String::new()),
+        };
+        Self::new(heading, Align::Point, values.into_iter().map(cell))
+    }
+
+    /// A column of counts.
+    pub fn counts(heading: impl Into<String>, counts: impl IntoIterator<Item = usize>) -> Self {
+        Self::new(heading, Align::Point, counts.into_iter().map(|n| Cell::of(n.to_string())))
     }
 
     /// Numbers that are written already, or are missing where there is `None`.
@@ -204,7 +214,11 @@ impl TableColumn {
         cells: impl IntoIterator<Item = Option<String>>,
     ) -> Self {
         let align = if numeric { Align::Point } else { Align::Start };
-        Self::new(heading, align, cells.into_iter().map(|cell| cell.map_or(Cell::missing(), Cell::of)))
+        Self::new(
+            heading,
+            align,
+            cells.into_iter().map(|cell| cell.map_or(Cell::missing(), Cell::of)),
+        )
     }
 
     /// The column that stands for `count` columns that were left out.
