@@ -31,7 +31,7 @@ pub use polars::prelude::{
     DataFrame, DataFrameJoinOps, DataType, Expr, Field, FillNullStrategy, Float64Chunked,
     Int64Chunked, IntoColumn, IntoLazy, IntoSeries, JoinArgs, JoinType, LazyFrame, NamedFrom,
     PlSmallStr, QuantileMethod, Schema, Series, SortMultipleOptions, StringChunked,
-    UniqueKeepStrategy, all, as_struct, coalesce, col, cols, concat, df, len, lit, when,
+    UniqueKeepStrategy, all, coalesce, col, cols, concat, df, len, lit, when,
 };
 
 // What a generator needs to be of use.

@@ -1,4 +1,10 @@
 //! Everything that crosses crates.
 
 pub mod client;
+pub mod command;
 pub mod compare;
+pub mod debian;
+pub mod evaluator;
+pub mod place;
+pub mod python;
+pub mod sequences;

@@ -46,6 +46,12 @@ impl Cache {
         Self { root: user_folder().join("semiaxis").join("cells").join(stamp) }
     }
 
+    /// Where extra crates are kept, for the same build of the prelude.
+    pub fn extras_folder(&self) -> PathBuf {
+        let stamp = self.root.file_name().unwrap_or_default();
+        user_folder().join("semiaxis").join("extras").join(stamp)
+    }
+
     /// Where a cell's folder is, or would be.
     pub fn folder(&self, crate_name: &str) -> PathBuf {
         // Two levels, so that no folder grows to many thousands of entries.

@@ -53,6 +53,18 @@ pub fn header_failure(cell: &Arc<CellText>, fault: &HeaderFault) -> CellFailure 
     failure_at("HeaderError", title.clone(), Some(&place), &title, &[])
 }
 
+/// The failure of a cell whose header names crates that cannot be had.
+pub fn dependencies_failure(cell: &Arc<CellText>, header: Range<usize>, words: &str) -> CellFailure {
+    // The line that names the table, or the whole header's first line.
+    let table = cell.text[header.clone()].find("[dependencies]").map(|at| header.start + at);
+    let start = table.unwrap_or(header.start);
+    let end = cell.text[start..].find('\n').map_or(cell.text.len(), |at| start + at);
+    let place = Place { cell: Arc::clone(cell), range: start..end };
+    let title = "the crates of this header could not be had";
+    let first = words.lines().find(|line| !line.trim().is_empty()).unwrap_or(title).trim();
+    failure_at("HeaderError", format!("{title}: {first}"), Some(&place), title, &[words.to_owned()])
+}
+
 /// A failure with a title, a place in a cell and lines of notes below it.
 pub fn failure_at(
     name: &str,

@@ -235,7 +235,11 @@ impl Engine {
     ) -> Result<Ready, CellFailure> {
         let headed = header::read(&cell.text).map_err(|fault| diagnose::header_failure(cell, &fault))?;
         if !headed.header.dependencies.is_empty() {
-            self.extras.ensure(&self.kit, &headed.header.dependencies).await?;
+            let wanted = &headed.header.dependencies;
+            self.extras.ensure(&self.kit, &self.cache, wanted, events).await.map_err(|words| {
+                let range = 0..headed.body_start;
+                diagnose::dependencies_failure(cell, range, &words)
+            })?;
         }
         let seed = headed.header.seed.unwrap_or_else(|| seed_of(self.options.seed, &cell.text));
         let optimise = headed.header.optimise.unwrap_or(OPTIMISE);
@@ -312,7 +316,8 @@ impl Engine {
             (name, variable)
         });
         let takes = takes.collect();
-        Plan { cell: Arc::clone(cell), parsed, items, takes, declares, imports, absorption }
+        let preamble = self.extras.preamble();
+        Plan { cell: Arc::clone(cell), preamble, parsed, items, takes, declares, imports, absorption }
     }
 
     /// Finds the compiled cell, or compiles it.
@@ -429,7 +434,7 @@ impl Engine {
         events: &mpsc::Sender<CellEvent>,
         interrupts: &mut watch::Receiver<u64>,
     ) -> Outcome {
-        let mut libraries: Vec<PathBuf> = self.extras.libraries().to_vec();
+        let mut libraries: Vec<PathBuf> = self.extras.libraries().cloned().collect();
         for name in self.account.closure(&ready.plan.crates) {
             libraries.push(self.account.crates[&name].library.clone());
         }

@@ -29,6 +29,8 @@ pub const NAME_HERE: &str = "cell_0000000000000000";
 pub struct Plan<'a> {
     /// The cell.
     pub cell: Arc<CellText>,
+    /// Lines about extra crates.
+    pub preamble: String,
     /// Taken apart.
     pub parsed: &'a Parsed,
     /// Those of its items that are to be compiled; the others are what they were.
@@ -81,6 +83,7 @@ const QUIET: &str = "#![allow(unused_imports, unused_variables, unused_mut, unus
 pub fn generate(plan: &Plan<'_>, without: &Without) -> Generated {
     let mut text = Generated::default();
     text.own(QUIET);
+    text.own(&plan.preamble);
     for absorbed in &plan.absorption.parts {
         module(&mut text, absorbed, plan);
     }

@@ -231,14 +231,18 @@ pub fn owner_name(of: &Type) -> Option<String> {
             let last = path.path.segments.last()?;
             match last.ident.to_string().as_str() {
                 "Box" | "Rc" | "Arc" => owner_name(&inside(of)?),
-                // Names that nalgebra gives to its one matrix type.
-                "DMatrix" | "DVector" | "RowDVector" | "OMatrix" | "DMatrixView" => {
-                    Some("Matrix".to_owned())
-                }
-                name => Some(name.to_owned()),
+                name => Some(canonical(name).to_owned()),
             }
         }
         _ => None,
+    }
+}
+
+/// The name under which a type's members are found; nalgebra has many names for its one matrix type.
+pub fn canonical(name: &str) -> &str {
+    match name {
+        "DMatrix" | "DVector" | "RowDVector" | "OMatrix" | "DMatrixView" => "Matrix",
+        other => other,
     }
 }
 

@@ -1,6 +1,7 @@
 //! One view of every name that help knows, wherever it is defined.
 
 use super::index::{Entry, EntryKind, Index};
+use super::types::canonical;
 use crate::cells::types::{ItemInfo, Scope};
 
 /// A name with what is to be said about it.
@@ -98,6 +99,7 @@ pub fn preloaded(index: &Index) -> impl Iterator<Item = Word> + '_ {
 
 /// What belongs to a type or trait, each name once.
 pub fn members(owner: &str, scope: &Scope, index: &Index) -> Vec<Word> {
+    let owner = canonical(owner);
     let defined = scope.items.iter().filter(|item| item.name == owner).flat_map(|item| {
         item.methods.iter().map(|(name, signature, docs)| Word {
             name: name.clone(),

@@ -13,6 +13,9 @@ use syn::spanned::Spanned;
 use super::error::SetupError;
 use crate::help::index::{Entry, EntryKind, Index};
 
+/// The crate whose exported macros are in every cell.
+const PRELUDE: &str = "semiaxis";
+
 /// A crate to be read.
 pub struct Source<'a> {
     /// The crate's name.
@@ -21,7 +24,7 @@ pub struct Source<'a> {
     pub root: PathBuf,
     /// The features that it was compiled with.
     pub features: &'a [String],
-    /// The types whose members are wanted; empty for everything public.
+    /// The types whose members are wanted, of a crate below the prelude.
     pub types: &'a [&'a str],
 }
 
@@ -41,6 +44,8 @@ pub fn read_sources(sources: &[Source<'_>]) -> Result<Index, SetupError> {
         reader.add_implemented();
         if place == 0 {
             preloaded = std::mem::take(&mut reader.uses);
+        } else {
+            reader.keep_wanted(&preloaded);
         }
         entries.append(&mut reader.entries);
     }
@@ -51,7 +56,7 @@ pub fn read_sources(sources: &[Source<'_>]) -> Result<Index, SetupError> {
 fn mark_preloaded(entries: &mut Vec<Entry>, uses: Vec<(String, String)>) {
     let mut known = BTreeSet::new();
     for entry in entries.iter_mut().filter(|entry| entry.owner.is_none()) {
-        let exported_macro = entry.kind == EntryKind::Macro;
+        let exported_macro = entry.kind == EntryKind::Macro && entry.origin == PRELUDE;
         if exported_macro || uses.iter().any(|(name, _)| *name == entry.name) {
             entry.preloaded = true;
             known.insert(entry.name.clone());
@@ -108,8 +113,7 @@ impl Reader<'_> {
                     collect_uses(&item.tree, String::new(), &mut self.uses);
                 }
                 syn::Item::Impl(block) => self.implementation(block),
-                _ if self.source.types.is_empty() => self.item(item),
-                _ => {}
+                _ => self.item(item),
             }
         }
         Ok(())
@@ -117,7 +121,7 @@ impl Reader<'_> {
 
     fn module(&mut self, module: &syn::ItemMod, folder: &Path) -> Result<(), SetupError> {
         let name = module.ident.to_string();
-        if self.source.types.is_empty() && is_public(&module.vis) {
+        if is_public(&module.vis) {
             self.add(&name, EntryKind::Module, format!("mod {name}"), &module.attrs, None);
         }
         let is_prelude = name == "prelude";
@@ -201,10 +205,6 @@ impl Reader<'_> {
 
     fn implementation(&mut self, block: &syn::ItemImpl) {
         let Some(owner) = type_name(&block.self_ty) else { return };
-        let types = self.source.types;
-        if !types.is_empty() && !types.contains(&owner.as_str()) {
-            return;
-        }
         if let Some((_, path, _)) = &block.trait_ {
             let name = path.segments.last().map(|segment| segment.ident.to_string());
             self.implemented.extend(name.map(|name| (name, owner)));
@@ -245,6 +245,20 @@ impl Reader<'_> {
             );
         }
         self.entries.extend(more);
+    }
+
+    /// Of another crate, members of the wanted types stay, and free names that the prelude hands on.
+    fn keep_wanted(&mut self, preloaded: &[(String, String)]) {
+        let types = self.source.types;
+        self.entries.retain(|entry| match &entry.owner {
+            Some(owner) => types.contains(&owner.as_str()),
+            None => {
+                entry.kind != EntryKind::Module
+                    && preloaded
+                        .iter()
+                        .any(|(name, path)| *name == entry.name && !path.starts_with("crate::"))
+            }
+        });
     }
 
     fn add(
@@ -332,6 +346,11 @@ fn collect_uses(tree: &syn::UseTree, before: String, uses: &mut Vec<(String, Str
     match tree {
         syn::UseTree::Path(path) => {
             collect_uses(&path.tree, format!("{before}{}::", path.ident), uses);
+        }
+        // `use nalgebra::{self}` names the module itself.
+        syn::UseTree::Name(name) if name.ident == "self" => {
+            let path = before.trim_end_matches("::").to_owned();
+            uses.push((path.rsplit("::").next().unwrap_or_default().to_owned(), path));
         }
         syn::UseTree::Name(name) => {
             uses.push((name.ident.to_string(), format!("{before}{}", name.ident)));
@@ -425,15 +444,20 @@ fn one_line(text: &str) -> String {
 mod tests {
     use super::*;
 
-    fn index(files: &[(&str, &str)], features: &[String], types: &[&str]) -> Index {
+    fn written(files: &[(&str, &str)]) -> tempfile::TempDir {
         let folder = tempfile::tempdir().unwrap();
         for (name, text) in files {
             let file = folder.path().join(name);
             fs::create_dir_all(file.parent().unwrap()).unwrap();
             fs::write(file, text).unwrap();
         }
+        folder
+    }
+
+    fn index(files: &[(&str, &str)], features: &[String], types: &[&str]) -> Index {
+        let folder = written(files);
         let root = folder.path().join("lib.rs");
-        read_sources(&[Source { name: "tiles", root, features, types }]).unwrap()
+        read_sources(&[Source { name: "semiaxis", root, features, types }]).unwrap()
     }
 
     fn find<'a>(index: &'a Index, name: &str, owner: Option<&str>) -> Option<&'a Entry> {
@@ -481,8 +505,31 @@ mod tests {
             impl Other { pub fn skipped(&self) {} }\npub fn free() {}";
         let files =
             [("lib.rs", text), ("lazy.rs", "impl Frame { pub fn lazy(self) -> Lazy { loop {} } }")];
-        let index = index(&files, &["lazy".to_owned()], &["Frame"]);
-        let names: Vec<&str> = index.entries.iter().map(|entry| entry.name.as_str()).collect();
-        assert_eq!(names, ["lazy", "height"]);
+        let folder = written(&files);
+        let prelude =
+            written(&[("lib.rs", "pub mod prelude { pub use frames::{self, free, Frame}; }")]);
+        let features = ["lazy".to_owned()];
+        let source = |name, folder: &tempfile::TempDir, types| Source {
+            name,
+            root: folder.path().join("lib.rs"),
+            features: &features,
+            types,
+        };
+        let index = read_sources(&[
+            source("semiaxis", &prelude, &[]),
+            source("frames", &folder, &["Frame"]),
+        ])
+        .unwrap();
+        let names: Vec<(&str, bool)> =
+            index.entries.iter().map(|entry| (entry.name.as_str(), entry.preloaded)).collect();
+        let expected = [
+            ("prelude", false),
+            ("lazy", false),
+            ("height", false),
+            ("free", true),
+            ("frames", true),
+            ("Frame", true),
+        ];
+        assert_eq!(names, expected);
     }
 }
