@@ -5,7 +5,7 @@
 
 use super::marks::push_mark;
 use super::measure::{FONTS, Weight, fitted, width, wrapped};
-use super::palette::{CARD, CARD_EDGE, Cue, FAINT, INK, INK_SOFT};
+use super::palette::{CARD, CARD_EDGE, Cue, INK, INK_SOFT};
 use super::svg::Svg;
 
 const MARGIN: f64 = 18.0;
@@ -64,7 +64,6 @@ pub(super) struct LegendEntry {
 pub(super) enum LegendSign {
     Mark(Cue),
     Line { color: &'static str, dashes: &'static str },
-    Swatch(&'static str),
     Nothing,
 }
 
@@ -241,7 +240,6 @@ fn sign_room(sign: &LegendSign) -> f64 {
     match sign {
         LegendSign::Mark(_) => 16.0,
         LegendSign::Line { .. } => 32.0,
-        LegendSign::Swatch(_) => 20.0,
         LegendSign::Nothing => 0.0,
     }
 }
@@ -262,16 +260,6 @@ fn draw_entry(svg: &mut Svg, x: f64, y: f64, entry: &LegendEntry) {
                 line.with("stroke-dasharray", dashes).done()
             }
         }
-        LegendSign::Swatch(color) => svg
-            .element("rect")
-            .at("x", x)
-            .at("y", y - 10.0)
-            .at("width", 14.0)
-            .at("height", 11.0)
-            .with("fill", color)
-            .with("stroke", FAINT)
-            .with("stroke-width", ".5")
-            .done(),
         LegendSign::Nothing => {}
     }
     svg.element("text")

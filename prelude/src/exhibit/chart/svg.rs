@@ -22,11 +22,6 @@ impl Svg {
         Svg { out: String::with_capacity(16 * 1024) }
     }
 
-    /// The bytes written so far.
-    pub fn len(&self) -> usize {
-        self.out.len()
-    }
-
     /// A name for use in `id` attributes and references, unique to this chart.
     pub fn name(stem: &str) -> String {
         format!("{stem}-{DIGEST_MARK}")
@@ -37,11 +32,6 @@ impl Svg {
         self.out.push('<');
         self.out.push_str(tag);
         Element { svg: self, tag }
-    }
-
-    /// Appends text that is markup already.
-    pub fn raw(&mut self, markup: &str) {
-        self.out.push_str(markup);
     }
 
     /// The document with its names filled in.

@@ -1,6 +1,7 @@
 //! What charts must hold: marks and labels that are there, nothing that escapes, the same bytes.
 
 use nalgebra::DMatrix;
+use polars::prelude::{NamedFrom, Series};
 use resvg::usvg::roxmltree;
 
 use super::*;
@@ -128,7 +129,7 @@ fn ellipses_say_what_they_are_and_what_they_are_not() {
 #[test]
 fn small_and_missing_groups_are_named_not_guessed() {
     let pca = analysis(12, 4);
-    let groups = polars::prelude::Series::new(
+    let groups = Series::new(
         "kiln".into(),
         [
             Some("a"),
