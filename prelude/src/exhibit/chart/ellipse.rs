@@ -64,16 +64,6 @@ impl Ellipse {
         let (a, b) = self.semi_axes;
         ((a * cos).hypot(b * sin), (a * sin).hypot(b * cos))
     }
-
-    /// Points along the rim.
-    pub fn rim(&self, n: usize) -> impl Iterator<Item = (f64, f64)> + '_ {
-        let (sin, cos) = self.angle.sin_cos();
-        (0..n).map(move |i| {
-            let (s, c) = (i as f64 / n as f64 * std::f64::consts::TAU).sin_cos();
-            let (u, v) = (self.semi_axes.0 * c, self.semi_axes.1 * s);
-            (self.centre.0 + u * cos - v * sin, self.centre.1 + u * sin + v * cos)
-        })
-    }
 }
 
 /// The mean of some points; not a number when there are none.
@@ -86,6 +76,16 @@ pub(super) fn mean(points: &[(f64, f64)]) -> (f64, f64) {
 #[cfg(test)]
 mod tests {
     use super::*;
+
+    // Points along the rim.
+    fn rim(ellipse: &Ellipse, n: usize) -> impl Iterator<Item = (f64, f64)> + '_ {
+        let (sin, cos) = ellipse.angle.sin_cos();
+        (0..n).map(move |i| {
+            let (s, c) = (i as f64 / n as f64 * std::f64::consts::TAU).sin_cos();
+            let (u, v) = (ellipse.semi_axes.0 * c, ellipse.semi_axes.1 * s);
+            (ellipse.centre.0 + u * cos - v * sin, ellipse.centre.1 + u * sin + v * cos)
+        })
+    }
 
     #[test]
     fn the_rim_is_where_the_formula_says() {
@@ -100,7 +100,7 @@ mod tests {
         let determinant = xx * yy - xy * xy;
         // Quantile of chi-square with 2 degrees of freedom at 0.95: 5.991, NIST/SEMATECH
         // e-Handbook of Statistical Methods, section 1.3.6.7.4, table of upper critical values.
-        for (x, y) in ellipse.rim(16) {
+        for (x, y) in rim(&ellipse, 16) {
             let (dx, dy) = (x - m.0, y - m.1);
             let q = (yy * dx * dx - 2.0 * xy * dx * dy + xx * dy * dy) / determinant;
             assert!((q - 5.991).abs() < 5e-4, "{q}");
@@ -112,7 +112,7 @@ mod tests {
         let points = [(1.0, 2.0), (3.0, 1.0), (4.0, 5.0), (-2.0, 0.5)];
         let ellipse = Ellipse::around(&points, 0.9).unwrap();
         let half = ellipse.half_box();
-        let reach = ellipse.rim(3600).fold((0.0f64, 0.0f64), |reach, (x, y)| {
+        let reach = rim(&ellipse, 3600).fold((0.0f64, 0.0f64), |reach, (x, y)| {
             (reach.0.max(x - ellipse.centre.0), reach.1.max(y - ellipse.centre.1))
         });
         assert!((half.0 - reach.0).abs() < 1e-4 && (half.1 - reach.1).abs() < 1e-4);
