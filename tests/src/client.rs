@@ -138,6 +138,8 @@ impl Client {
         let mut command = Command::new(kernel_executable());
         command.arg("kernel").arg(&connection_file).envs(&start.environment);
         command.stdin(Stdio::null()).kill_on_drop(true);
+        // What cargo adds to the environment of tests, users do not have.
+        command.env_remove("LD_LIBRARY_PATH").env_remove("CARGO");
         if let Some(working_dir) = &start.working_dir {
             command.current_dir(working_dir);
         }
