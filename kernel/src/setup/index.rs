@@ -271,7 +271,9 @@ impl Reader<'_> {
         attrs: &[syn::Attribute],
         owner: Option<&str>,
     ) {
-        if has_hidden_docs(attrs) || has_attribute(attrs, "deprecated") {
+        // A leading underscore is how a crate says that a public name is not for its users.
+        let hidden = name.starts_with('_') || has_hidden_docs(attrs);
+        if hidden || has_attribute(attrs, "deprecated") {
             return;
         }
         let mut docs = documentation(attrs);
