@@ -105,10 +105,12 @@ pub fn kernel_executable() -> &'static Path {
             .ancestors()
             .find(|folder| folder.ends_with("deps"))
             .and_then(Path::parent)
-            .expect("a test executable lies in <profile>/deps");
+            .expect("a test executable lies in <target>/<profile>/deps");
+        // Where the tests were built, for that need not be where cargo would build by itself.
+        let target = folder.parent().expect("a profile's folder lies in the target folder");
         let mut build =
             std::process::Command::new(std::env::var_os("CARGO").unwrap_or("cargo".into()));
-        build.args(["build", "--quiet", "-p", "semiaxis-kernel"]);
+        build.args(["build", "--quiet", "-p", "semiaxis-kernel", "--target-dir"]).arg(target);
         if folder.ends_with("release") {
             build.arg("--release");
         }
