@@ -77,15 +77,11 @@ impl Kit {
     /// Reads the kit in a folder back, if there is one and it is whole and of this interface.
     pub fn load(dir: &Path) -> Option<Self> {
         let text = fs::read(dir.join("kit.json")).ok()?;
-        let mut kit: Self = serde_json::from_slice(&text).ok()?;
+        let kit: Self = serde_json::from_slice(&text).ok()?;
         let whole = kit.dir == dir
             && kit.interface == INTERFACE
             && [&kit.prelude, &kit.dependencies, &kit.lock, &kit.index].iter().all(|p| p.exists())
             && kit.externs.values().all(|file| file.exists());
-        if !kit.target_dir.is_dir() {
-            // What cargo built may have been cleaned away; extra dependencies then start afresh.
-            kit.target_dir = target_dir(&kit.workspace);
-        }
         whole.then_some(kit)
     }
 
