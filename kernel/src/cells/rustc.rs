@@ -116,7 +116,14 @@ impl Call<'_> {
             "--crate-type=dylib",
             "-Cprefer-dynamic",
             "-Cdebuginfo=0",
+            "-Cdebug-assertions=no",
             "-Cembed-bitcode=no",
+            // A cell is small: splitting it costs more than a second core gives.
+            "-Ccodegen-units=1",
+            // What the prelude has instantiated of generic code is not instantiated again.
+            "-Zshare-generics=y",
+            // A sum that does not fit is an error at every level of optimisation.
+            "-Coverflow-checks=yes",
             "--error-format=json",
             "--diagnostic-width=100000",
             "-Ztrim-diagnostic-paths=no",

@@ -10,6 +10,7 @@ use std::fmt::Write;
 use super::palette::{CARD, COUNTS, Cue, INK, Shape};
 use super::svg::{Svg, tenth};
 use crate::exhibit::numbers::counted;
+use crate::exhibit::text::push_markup;
 
 /// As many units as are drawn one by one.
 pub(super) const MOST_MARKS: usize = 20_000;
@@ -38,10 +39,20 @@ pub(super) fn mark_radius(n_marks: usize) -> f64 {
 }
 
 /// Whether hover titles of these texts fit into a chart.
-pub(super) fn hover_fits(n_marks: usize, text_bytes: usize) -> bool {
+pub(super) fn hover_fits(texts: impl ExactSizeIterator<Item = String>) -> bool {
     // A mark with a title takes about this many bytes besides the text.
-    const MARKUP: usize = 70;
-    n_marks * MARKUP + text_bytes <= MOST_HOVER_BYTES
+    const MARKUP: usize = 80;
+    let mut room = MOST_HOVER_BYTES.checked_sub(texts.len() * MARKUP);
+    let mut escaped = String::new();
+    for text in texts {
+        if room.is_none() {
+            break;
+        }
+        escaped.clear();
+        push_markup(&mut escaped, &text);
+        room = room.and_then(|room| room.checked_sub(escaped.len()));
+    }
+    room.is_some()
 }
 
 /// One mark.
@@ -64,12 +75,12 @@ pub(super) fn push_hovering(
     svg: &mut Svg,
     cue: Cue,
     spots: &[Spot],
-    radius: f64,
+    (radius, opacity): (f64, &str),
     hover: impl Fn(usize) -> String,
 ) {
     svg.element("g")
         .with("fill", cue.color)
-        .with("fill-opacity", ".88")
+        .with("fill-opacity", opacity)
         .with("stroke", CARD)
         .with("stroke-width", ".7")
         .with("class", "marks")
@@ -87,7 +98,7 @@ pub(super) fn push_hovering(
 }
 
 /// The marks of one group in one path, without hover texts.
-pub(super) fn push_dense(svg: &mut Svg, cue: Cue, spots: &[Spot], radius: f64) {
+pub(super) fn push_dense(svg: &mut Svg, cue: Cue, spots: &[Spot], (radius, opacity): (f64, &str)) {
     let mut path = String::with_capacity(spots.len() * 14);
     let (mut from_x, mut from_y) = (0i64, 0i64);
     let as_dot = matches!(cue.shape, Shape::Disc | Shape::Square);
@@ -109,12 +120,12 @@ pub(super) fn push_dense(svg: &mut Svg, cue: Cue, spots: &[Spot], radius: f64) {
         group
             .with("fill", "none")
             .with("stroke", cue.color)
-            .with("stroke-opacity", ".62")
+            .with("stroke-opacity", opacity)
             .at("stroke-width", size * radius)
             .with("stroke-linecap", cap)
             .done();
     } else {
-        group.with("fill", cue.color).with("fill-opacity", ".62").done();
+        group.with("fill", cue.color).with("fill-opacity", opacity).done();
     }
 }
 

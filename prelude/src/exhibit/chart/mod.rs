@@ -21,6 +21,8 @@ mod scores;
 mod scree;
 
 mod arrows;
+mod groups;
+mod references;
 mod units;
 
 mod card;
@@ -51,6 +53,9 @@ use crate::components::PrincipalComponents;
 use crate::error::Result;
 
 /// A chart of an analysis, with its settings.
+///
+/// Marks carry their unit's name and values as hover texts. A client that inlines the SVG, such
+/// as a notebook converted to HTML, shows them; one that shows it as a picture does not.
 ///
 /// Made by [`scree`], [`score_plot`], [`loading_plot`] and [`biplot`]. A setting that does not
 /// fit (a component that does not exist, as many groups as there are not units) is reported by
@@ -92,7 +97,7 @@ pub fn score_plot(pca: &PrincipalComponents) -> Chart {
 /// The variables in the plane of two components: each one's two loadings as an arrow.
 ///
 /// Loadings are the unit-length coefficients, not correlations. Arrows shorter than √(2/p), the
-/// length that each of p variables has when all share both components equally, are drawn faint.
+/// length that each of p variables has when all share both components equally, are drawn thin and grey.
 pub fn loading_plot(pca: &PrincipalComponents) -> Chart {
     Chart::new(Kind::Loadings, Source::without_units(pca))
 }

@@ -391,6 +391,38 @@ fn thousands_of_units_stay_small() {
 }
 
 #[test]
+fn thousands_of_variables_and_awkward_names_stay_small() {
+    let pca = analysis(6, 5_000);
+    let svg = loading_plot(&pca).svg();
+    assert!(svg.len() < 400_000, "{} bytes", svg.len());
+    assert!(svg.contains("The 400 longest of 5000 arrows are drawn."));
+    assert_eq!(of_class(&tree(&svg), "arrows")[0].children().count(), 400);
+    // Each of these characters takes six bytes once it is escaped.
+    let names: Vec<String> = (0..2_000).map(|i| format!("{i}{}", "\"".repeat(90))).collect();
+    let pca = analysis(2_000, 4);
+    let svg = biplot(&pca).labels(&names).groups(kilns(2_000)).svg();
+    assert!(svg.len() < 400_000, "{} bytes", svg.len());
+    assert!(svg.contains("Too many units for hover texts."));
+}
+
+#[test]
+fn extreme_sizes_of_values_are_drawn() {
+    for factor in [1e-120, 1e-9, 1e9, 1e120] {
+        let labels = (0..9).map(|i| format!("tile {i}"));
+        let variables = ["a", "b", "c"].map(String::from);
+        let x = DataMatrix::from_values(mixture(9, 3) * factor, variables, labels).unwrap();
+        let pca = principal_components(&x, Scaling::Covariance).unwrap();
+        for chart in [score_plot(&pca).coverage(0.9), biplot(&pca), scree(&pca), loading_plot(&pca)]
+        {
+            let svg = chart.svg();
+            tree(&svg);
+            assert!(!svg.contains("NaN") && !svg.contains("inf\""), "{factor}");
+            assert!(svg.len() < 40_000, "{factor}: {}", svg.len());
+        }
+    }
+}
+
+#[test]
 fn the_same_chart_gives_the_same_bytes_and_other_charts_other_names() {
     let pca = analysis(30, 5);
     let draw = || score_plot(&pca).groups(kilns(30)).svg();
