@@ -415,10 +415,9 @@ impl Engine {
             arguments.push(argument);
         };
         folder(&self.kit.dependencies);
+        // A crate that another crate needs is looked for in folders only, named or not.
         for name in self.account.closure(crates) {
-            if !crates.contains(&name)
-                && let Some(parent) = self.account.crates[&name].library.parent()
-            {
+            if let Some(parent) = self.account.crates[&name].library.parent() {
                 folder(parent);
             }
         }

@@ -93,6 +93,7 @@ impl Extras {
             named.extend(set.named.iter());
             arguments.push(joined("-Ldependency=", &set.folder));
             if let (Some(name), Some(library)) = (&set.crate_name, &set.library) {
+                arguments.push(joined("-Ldependency=", library.parent().unwrap_or(&set.folder)));
                 arguments.push("--extern".into());
                 arguments.push(joined(&format!("{name}="), library));
             }

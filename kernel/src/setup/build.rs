@@ -242,7 +242,7 @@ fn run_cargo(
         .args(chosen)
         .args(["--message-format=json-render-diagnostics", "--color=never", "--"])
         .args(prelude_flags(compiler, name))
-        .env("RUSTC_WORKSPACE_WRAPPER", wrapper()?)
+        .env("RUSTC_WORKSPACE_WRAPPER", wrapper(&place.home)?)
         .stdout(Stdio::piped())
         .stderr(Stdio::piped())
         .spawn()
@@ -288,8 +288,8 @@ fn run_cargo(
 /// with the flags that stable compilers keep back. Said to cargo itself, the same would make build
 /// scripts run, and everything behind them be compiled, again. Cargo takes the place of the script
 /// for a part of what is built, so it must not change.
-fn wrapper() -> Result<PathBuf, SetupError> {
-    let path = KitHome::find()?.compile_script();
+fn wrapper(home: &KitHome) -> Result<PathBuf, SetupError> {
+    let path = home.compile_script();
     let script = "#!/bin/sh\nRUSTC_BOOTSTRAP=1 exec \"$@\"\n";
     if fs::read_to_string(&path).is_ok_and(|text| text == script) {
         return Ok(path);
