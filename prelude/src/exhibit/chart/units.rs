@@ -201,7 +201,7 @@ impl<'a> Units<'a> {
             (true, false) => ".88",
             (false, false) => ".62",
         };
-        for group in self.groups.list() {
+        for (place, group) in self.groups.list().iter().enumerate() {
             let spots = self.spots(plane, group.members.iter().copied());
             if spots.is_empty() {
                 continue;
@@ -210,7 +210,7 @@ impl<'a> Units<'a> {
             if hovers {
                 push_hovering(svg, group.cue, &spots, look, |unit| self.hover(unit, group));
             } else {
-                push_dense(svg, group.cue, &spots, look);
+                push_dense(svg, group.cue, &spots, look, &format!("mark{place}"));
             }
         }
         (!hovers).then(|| "Too many units for hover texts.".to_owned())
