@@ -78,14 +78,17 @@ impl Shelf {
         match self.slots.get(name) {
             None => Err(format!("there is no variable `{name}`")),
             Some(slot) if slot.fits(kind) => Ok(()),
-            Some(slot) => Err(format!("`{name}` holds a {}, not a {}", slot.kind.type_name, kind.type_name)),
+            Some(slot) => {
+                Err(format!("`{name}` holds a {}, not a {}", slot.kind.type_name, kind.type_name))
+            }
         }
     }
 
     /// Takes a variable off the shelf: the content of a box of the type, which the caller now owns.
     pub(super) fn take(&mut self, name: &str, kind: &Kind) -> Result<*mut (), String> {
         self.fits(name, kind)?;
-        let slot = self.slots.remove(name).ok_or_else(|| format!("there is no variable `{name}`"))?;
+        let slot =
+            self.slots.remove(name).ok_or_else(|| format!("there is no variable `{name}`"))?;
         let value = slot.value;
         std::mem::forget(slot);
         Ok(value)
@@ -96,7 +99,12 @@ impl Shelf {
     ///
     /// # Safety
     /// `value` must come from `Box::into_raw` on a box of the type of `kind`; the shelf owns it now.
-    pub(super) unsafe fn put(&mut self, name: &str, value: *mut (), kind: Kind) -> Option<Discarded> {
+    pub(super) unsafe fn put(
+        &mut self,
+        name: &str,
+        value: *mut (),
+        kind: Kind,
+    ) -> Option<Discarded> {
         let slot = Slot { value, kind, relabelled: false };
         self.slots.insert(name.to_owned(), slot).map(Discarded)
     }
@@ -126,6 +134,7 @@ impl Discarded {
 
     /// Drops the value; a panic in its destructor is reported instead of spread.
     pub(super) fn drop_quietly(self) -> Result<(), String> {
-        catch_unwind(AssertUnwindSafe(|| drop(self.0))).map_err(|panic| super::cell::words_of(&panic))
+        catch_unwind(AssertUnwindSafe(|| drop(self.0)))
+            .map_err(|panic| super::cell::words_of(&panic))
     }
 }

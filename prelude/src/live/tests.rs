@@ -163,6 +163,7 @@ fn the_best_way_to_show_a_value_is_found_by_what_it_implements() {
 
 #[test]
 fn the_words_of_a_panic_are_found_inside_a_box() {
-    let carried: Box<dyn std::any::Any + Send> = Box::new(Box::new("inner") as Box<dyn std::any::Any + Send>);
+    let carried: Box<dyn std::any::Any + Send> =
+        Box::new(Box::new("inner") as Box<dyn std::any::Any + Send>);
     assert_eq!(words_of(&*carried), "inner");
 }

@@ -65,7 +65,10 @@ async fn main() {
 /// Kinds of cell; `#` stands for a number that makes each new.
 const KINDS: [(&str, &str); 5] = [
     ("arithmetic", "let n# = (1..=#).map(|k| k as f64).sum::<f64>();\nn#"),
-    ("prelude call", "let pca# = principal_components(&x, Scaling::Covariance)?;\npca#.proportions()[0] * #.0"),
+    (
+        "prelude call",
+        "let pca# = principal_components(&x, Scaling::Covariance)?;\npca#.proportions()[0] * #.0",
+    ),
     (
         "table expressions",
         "let by_kiln# = tiles.clone().lazy().group_by([col(\"kiln\")])\
@@ -163,7 +166,8 @@ struct Compiler {
 
 impl Compiler {
     fn find() -> Self {
-        let output = Command::new("rustc").args(["--print", "sysroot"]).output().expect("rustc runs");
+        let output =
+            Command::new("rustc").args(["--print", "sysroot"]).output().expect("rustc runs");
         let sysroot = String::from_utf8_lossy(&output.stdout).trim().to_owned();
         let folder = tempfile::tempdir().expect("a temporary folder");
         std::fs::write(folder.path().join("nothing.rs"), "").expect("it can be written");
