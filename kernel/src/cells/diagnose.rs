@@ -247,6 +247,8 @@ fn advice(said: &Said, text: &Generated, account: &Account, file: &str) -> Vec<S
             for name in quoted(&said.message) {
                 if let Some(absent) = account.absent.get(name) {
                     advice.push(why_absent(name, absent));
+                } else if let Some((near, cell)) = nearest(account, name) {
+                    advice.push(format!("cell [{cell}] has `{near}`"));
                 }
             }
             if code == "E0433" && advice.is_empty() && said.message.contains("crate or module") {
@@ -298,6 +300,31 @@ fn advice(said: &Said, text: &Generated, account: &Account, file: &str) -> Vec<S
     }
     advice.dedup();
     advice
+}
+
+/// The variable or item whose name differs from this one by a slip, and its cell.
+fn nearest<'a>(account: &'a Account, name: &str) -> Option<(&'a str, u32)> {
+    let variables = account.variables.iter().map(|(known, v)| (known.as_str(), v.cell));
+    let items = account.items.iter().map(|((_, known), d)| (known.as_str(), d.part.cell.number));
+    let near = variables.chain(items).map(|(known, cell)| (slips(name, known), known, cell));
+    let allowed = if name.chars().count() < 4 { 1 } else { 2 };
+    let best = near.filter(|(slips, known, _)| *slips <= allowed && *known != name).min();
+    best.map(|(_, known, cell)| (known, cell))
+}
+
+/// How many letters must be put in, taken out or replaced to make one word of the other.
+fn slips(a: &str, b: &str) -> usize {
+    let b: Vec<char> = b.chars().collect();
+    let mut row: Vec<usize> = (0..=b.len()).collect();
+    for (idx, left) in a.chars().enumerate() {
+        let mut diagonal = std::mem::replace(&mut row[0], idx + 1);
+        for (at, right) in b.iter().enumerate() {
+            let replaced = diagonal + usize::from(left != *right);
+            diagonal = row[at + 1];
+            row[at + 1] = replaced.min(diagonal + 1).min(row[at] + 1);
+        }
+    }
+    row[b.len()]
 }
 
 fn labels(said: &Said) -> impl Iterator<Item = &str> {
@@ -382,4 +409,24 @@ fn word_at(text: &str, start: usize) -> Range<usize> {
         rest.chars().take_while(|c| c.is_alphanumeric() || *c == '_').map(char::len_utf8).sum();
     let length = if word > 0 { word } else { rest.chars().next().map_or(0, char::len_utf8) };
     start..start + length
+}
+
+#[cfg(test)]
+mod tests {
+    use super::*;
+
+    #[test]
+    fn slips_are_counted_letter_by_letter() {
+        assert_eq!(slips("thicknes", "thickness"), 1);
+        assert_eq!(slips("kitten", "sitting"), 3);
+        assert_eq!(slips("", "abc"), 3);
+        assert_eq!(slips("same", "same"), 0);
+    }
+
+    #[test]
+    fn a_word_is_marked_whole_and_anything_else_by_its_first_character() {
+        assert_eq!(word_at("let größe = 1", 4), 4..11);
+        assert_eq!(word_at("a + b", 2), 2..3);
+        assert_eq!(word_at("a", 1), 1..1);
+    }
 }

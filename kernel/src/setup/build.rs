@@ -1,8 +1,8 @@
 //! Cargo's part: building the prelude as a shared library, with every step of it reported.
 //!
-//! Cargo is asked twice. `cargo metadata` says which packages belong to the build, so that progress
-//! has a total and host-only crates can be told from those inside the library; `cargo rustc` builds
-//! and names every file that it made. The flags after `--` reach the prelude alone, so all
+//! Cargo is asked before it builds which packages take part, so that progress has a total and
+//! host-only crates can be told from those inside the library; then `cargo rustc` builds and names
+//! every file that it made. The flags after `--` reach the prelude alone, so all
 //! dependencies are shared with an ordinary release build of the workspace.
 
 use std::collections::{BTreeMap, BTreeSet};
@@ -21,7 +21,7 @@ use serde::Deserialize;
 use super::Place;
 use super::compiler::{Compiler, command_path};
 use super::error::SetupError;
-use super::graph::{Package, Target, metadata, reachable};
+use super::graph::{Package, Target, inside, metadata, n_compiled};
 use super::kit::KitHome;
 use super::progress::SetupEvent;
 
@@ -86,11 +86,11 @@ pub fn build(
         .ok_or_else(|| SetupError::UnexpectedBuild { what: "the prelude's package".to_owned() })?;
     let packages: BTreeMap<String, Package> =
         metadata.packages.into_iter().map(|package| (package.id.clone(), package)).collect();
-    let all = reachable(&metadata.resolve, &packages, &root, true);
-    let artifacts = run_cargo(&cargo, place, compiler, name, all.len(), progress)?;
+    let total = n_compiled(&cargo, workspace)?;
+    let artifacts = run_cargo(&cargo, place, compiler, name, total, progress)?;
     let dylib = library(&artifacts, &root)
         .ok_or_else(|| SetupError::UnexpectedBuild { what: "the prelude's library".to_owned() })?;
-    let within = reachable(&metadata.resolve, &packages, &root, false);
+    let within = inside(&metadata.resolve, &packages, &root);
     let inside =
         packages.into_iter().filter(|(id, _)| within.contains(id) && *id != root).collect();
     let target_dir = place.target_dir.clone().unwrap_or(metadata.target_directory);

@@ -88,13 +88,32 @@ pub fn metadata(
         .map_err(|error| SetupError::UnexpectedBuild { what: format!("its metadata ({error})") })
 }
 
-/// The packages reachable from one: with `everything`, all that are compiled on the way, otherwise
-/// only those whose code ends in the library (no build scripts, nothing behind a procedural macro).
-pub fn reachable(
+/// How many packages are compiled for the prelude, build scripts and macros included. Only `cargo tree`
+/// knows the features that the prelude asks for; the metadata has those of the whole workspace.
+///
+/// # Errors
+/// Cargo cannot be started or refuses.
+pub fn n_compiled(cargo: &Path, workspace: &Path) -> Result<usize, SetupError> {
+    let output = cargo_command(cargo, workspace)
+        .args(["tree", "--locked", "-p", "semiaxis", "-e", "normal,build"])
+        .args(["--prefix", "none", "--format", "{p}"])
+        .output()
+        .map_err(SetupError::files("start", cargo))?;
+    if !output.status.success() {
+        let said = String::from_utf8_lossy(&output.stderr);
+        return Err(failed(workspace, output.status.to_string(), said.lines().map(str::to_owned)));
+    }
+    let text = String::from_utf8_lossy(&output.stdout);
+    // A package that was shown before is marked, not left out.
+    let lines = text.lines().map(|line| line.trim_end_matches(" (*)").trim());
+    Ok(lines.filter(|line| !line.is_empty()).collect::<BTreeSet<_>>().len())
+}
+
+/// The packages whose code ends in the library: no build scripts, nothing behind a procedural macro.
+pub fn inside(
     resolve: &Resolve,
     packages: &BTreeMap<String, Package>,
     root: &str,
-    everything: bool,
 ) -> BTreeSet<String> {
     let nodes: BTreeMap<&str, &Node> =
         resolve.nodes.iter().map(|node| (node.id.as_str(), node)).collect();
@@ -104,16 +123,11 @@ pub fn reachable(
         let is_macro = packages.get(id).is_some_and(|package| {
             package.targets.iter().any(|target| target.kind.iter().any(|kind| kind == "proc-macro"))
         });
-        if (is_macro && !everything) || !found.insert(id.to_owned()) {
+        if is_macro || !found.insert(id.to_owned()) {
             continue;
         }
         for dependency in nodes.get(id).map(|node| node.deps.as_slice()).unwrap_or_default() {
-            let wanted = dependency.dep_kinds.iter().any(|kind| match kind.kind.as_deref() {
-                None => true,
-                Some("build") => everything,
-                Some(_) => false,
-            });
-            if wanted {
+            if dependency.dep_kinds.iter().any(|kind| kind.kind.is_none()) {
                 waiting.push(&dependency.pkg);
             }
         }
@@ -169,10 +183,7 @@ mod tests {
                 node("macro", &[("behind", None)]),
             ],
         };
-        let names = |everything| {
-            reachable(&resolve, &packages, "root", everything).into_iter().collect::<Vec<_>>()
-        };
-        assert_eq!(names(false), ["inside", "root"]);
-        assert_eq!(names(true), ["behind", "inside", "macro", "root", "script"]);
+        let names: Vec<String> = inside(&resolve, &packages, "root").into_iter().collect();
+        assert_eq!(names, ["inside", "root"]);
     }
 }

@@ -99,8 +99,10 @@ macro_rules! bundle_of {
 
 /// Shows a value now, in the middle of a cell.
 ///
-/// ```ignore-outside-a-cell
-/// show!(scree(&pca));
+/// ```
+/// for kiln in ["north", "mill"] {
+///     semiaxis::show!(format!("kiln {kiln}"));
+/// }
 /// ```
 #[macro_export]
 macro_rules! show {
