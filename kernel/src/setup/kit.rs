@@ -136,6 +136,11 @@ impl KitHome {
         Ok(Self { kits: data.join("kits"), compilers: data.join("compilers.json") })
     }
 
+    /// The script by which cargo calls the compiler for the prelude.
+    pub fn compile_script(&self) -> PathBuf {
+        self.compilers.with_file_name("compile-prelude")
+    }
+
     /// The folder of one kit.
     pub fn folder(&self, stamp: &str) -> PathBuf {
         self.kits.join(stamp)
