@@ -352,6 +352,15 @@ pub enum Error {
     },
     /// The computation was asked to stop.
     Interrupted,
+    /// A chart was given a setting that its kind does not have.
+    SettingNotForChart {
+        /// The setting.
+        setting: &'static str,
+        /// The kind of chart.
+        chart: &'static str,
+        /// The kinds of chart that have it.
+        charts: &'static str,
+    },
     /// An iteration ended without a usable answer.
     NoConvergence {
         /// The method.

@@ -9,7 +9,10 @@ pub use crate::components::{
     PrincipalComponents, Reconstruction, Route, Scaling, principal_components,
 };
 pub use crate::error::{Error, Result};
-pub use crate::exhibit::{Bundle, Content, Exhibit};
+pub use crate::exhibit::{
+    Bundle, Chart, Content, Exhibit, NumberFormat, Reference, Table, TableColumn, biplot,
+    loading_plot, score_plot, scree, significant,
+};
 pub use crate::parallel::{Noise, ParallelAnalysis, ParallelOptions, parallel_analysis};
 pub use crate::random::{Generator, random_generator, random_normal};
 pub use crate::table::{

@@ -54,24 +54,21 @@ fn a_file_cut_short_anywhere_is_an_error_and_no_panic() {
     }
 }
 
+// Damage inside a page of a Parquet file can make its reader ask for more memory than there is,
+// which no caller can catch; the worker process is what contains that.
 #[test]
-fn a_damaged_byte_is_an_error_or_a_table_and_no_panic() {
-    for kind in ["parquet", "feather"] {
-        let name = format!("tiles.{kind}");
-        let path = PathBuf::from(env!("CARGO_MANIFEST_DIR")).join("references").join(&name);
-        let bytes = std::fs::read(path).unwrap();
-        let dir = tempfile::tempdir().unwrap();
-        let damaged = dir.path().join(&name);
-        for place in (0..bytes.len()).step_by(23) {
-            let mut bytes = bytes.clone();
-            bytes[place] ^= 0x55;
-            std::fs::write(&damaged, bytes).unwrap();
-            // Damage inside a value gives another value, which no reader can see.
-            if let Err(error) = read_table(&damaged) {
-                let known =
-                    matches!(error, Error::Unreadable { .. } | Error::DuplicateColumns { .. });
-                assert!(known, "{name}, byte {place}: {error}");
-            }
+fn a_damaged_byte_of_an_arrow_file_is_an_error_or_a_table_and_no_panic() {
+    let path = PathBuf::from(env!("CARGO_MANIFEST_DIR")).join("references").join("tiles.feather");
+    let bytes = std::fs::read(path).unwrap();
+    let dir = tempfile::tempdir().unwrap();
+    let damaged = dir.path().join("tiles.feather");
+    for place in (0..bytes.len()).step_by(23) {
+        let mut bytes = bytes.clone();
+        bytes[place] ^= 0x55;
+        std::fs::write(&damaged, bytes).unwrap();
+        // Damage inside a value gives another value, which no reader can see.
+        if let Err(error) = read_table(&damaged) {
+            assert!(matches!(error, Error::Unreadable { .. }), "byte {place}: {error}");
         }
     }
 }

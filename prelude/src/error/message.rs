@@ -251,6 +251,9 @@ impl fmt::Display for Error {
                 write!(f, "the option `{option}` is {value}; accepted: {accepted}")
             }
             Error::Interrupted => write!(f, "the computation was asked to stop"),
+            Error::SettingNotForChart { setting, chart, charts } => {
+                write!(f, "a {chart} has no {setting}; charts that do: {charts}")
+            }
             Error::NoConvergence { method } => {
                 write!(f, "{method} did not converge; please report this with the data")
             }

@@ -1,4 +1,31 @@
 //! Exhibits: what a value shows in the notebook.
+//!
+//! A value that implements [`Exhibit`] yields a [`Bundle`]: the same content in several forms, of
+//! which a client shows the richest one it knows. Tables come as HTML and as plain text, charts
+//! as SVG and as a description in words, and both are escaped: no name, label or value from a
+//! user's file can act as markup or move a console's cursor.
+//!
+//! Conventions: numbers are rounded to a stated count of significant digits; what is left out of
+//! a long table or a crowded chart is counted there; nothing depends on a clock, so equal values
+//! have equal exhibits.
+
+mod chart;
+mod tables;
+
+mod frames;
+mod matrices;
+mod results;
+mod values;
+
+mod numbers;
+mod text;
+
+#[cfg(test)]
+mod tests;
+
+pub use chart::{Chart, Names, Reference, biplot, loading_plot, score_plot, scree};
+pub use numbers::{fixed, significant, stored};
+pub use tables::{NumberFormat, Table, TableColumn};
 
 /// The same content in several forms; a client shows the richest one it knows.
 #[derive(Debug, Clone, Default, PartialEq)]
@@ -52,10 +79,12 @@ impl Bundle {
 
     /// The text of one form, if it is there and is text.
     pub fn text(&self, mime: &str) -> Option<&str> {
-        self.entries.iter().find(|(known, _)| known == mime).and_then(|(_, content)| match content {
-            Content::Text(text) => Some(text.as_str()),
-            _ => None,
-        })
+        self.entries.iter().find(|(known, _)| known == mime).and_then(
+            |(_, content)| match content {
+                Content::Text(text) => Some(text.as_str()),
+                _ => None,
+            },
+        )
     }
 
     /// Whether the bundle shows nothing.

@@ -231,6 +231,7 @@ impl Labels {
             Label::Automatic => {
                 let fits = |column: &&Column| {
                     is_text(column)
+                        && refuse_mixed(column).is_ok()
                         && column.null_count() == 0
                         && !variables.iter().any(|variable| variable.name() == column.name())
                         && matches!(column.n_unique(), Ok(unique) if unique == column.len())

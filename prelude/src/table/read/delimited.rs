@@ -112,10 +112,14 @@ fn missing_words(options: &TableOptions) -> Vec<polars::prelude::PlSmallStr> {
 /// guesses from the first rows, where a column may still be empty.
 fn refine(column: &Column, decimal_comma: bool) -> Column {
     let Ok(text) = column.str() else { return column.clone() };
+    // Nothing between quotes is nothing too, but reaches this place as empty text.
+    let text: StringChunked =
+        text.iter().map(|cell| cell.filter(|cell| !cell.is_empty())).collect();
+    let column = &text.clone().with_name(column.name().clone()).into_column();
     if text.null_count() == text.len() {
         return column.clone();
     }
-    if let Some(numbers) = all_numbers(text, decimal_comma) {
+    if let Some(numbers) = all_numbers(&text, decimal_comma) {
         return Series::new(column.name().clone(), numbers).into_column();
     }
     if text.iter().flatten().all(is_iso_date)

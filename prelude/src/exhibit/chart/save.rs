@@ -1,0 +1,59 @@
+//! Charts as files.
+
+use std::path::Path;
+use std::sync::{Arc, OnceLock};
+
+use resvg::tiny_skia::{Pixmap, Transform};
+use resvg::usvg::{Options, Tree, fontdb};
+
+use crate::error::{Error, Result};
+
+// Pictures have twice the chart's size, so that they stay sharp on dense screens and on paper.
+const PNG_SCALE: f32 = 2.0;
+const EXTENSIONS: &[&str] = &["svg", "png"];
+
+/// Writes an SVG document to a file whose extension says how.
+pub(super) fn save(svg: &str, path: &Path) -> Result<()> {
+    let extension = path.extension().map(|extension| extension.to_ascii_lowercase());
+    let bytes = match extension.as_deref().and_then(|extension| extension.to_str()) {
+        Some("svg") => svg.as_bytes().to_vec(),
+        Some("png") => png(svg, path)?,
+        _ => {
+            return Err(Error::UnknownExtension { path: path.to_owned(), accepted: EXTENSIONS });
+        }
+    };
+    std::fs::write(path, bytes).map_err(|source| cannot_write(path, source))
+}
+
+fn png(svg: &str, path: &Path) -> Result<Vec<u8>> {
+    let picture = draw(svg).map_err(|reason| cannot_write(path, std::io::Error::other(reason)))?;
+    picture.encode_png().map_err(|reason| cannot_write(path, std::io::Error::other(reason)))
+}
+
+fn draw(svg: &str) -> std::result::Result<Pixmap, Box<dyn std::error::Error + Send + Sync>> {
+    let options =
+        Options { fontdb: fonts(), font_family: "DejaVu Sans".to_owned(), ..Options::default() };
+    let tree = Tree::from_str(svg, &options)?;
+    let size = tree.size().to_int_size().scale_by(PNG_SCALE).ok_or("the chart has no size")?;
+    let mut picture = Pixmap::new(size.width(), size.height()).ok_or("the picture has no size")?;
+    resvg::render(&tree, Transform::from_scale(PNG_SCALE, PNG_SCALE), &mut picture.as_mut());
+    Ok(picture)
+}
+
+// Pictures must not depend on which fonts a machine has, so only the embedded ones are used.
+fn fonts() -> Arc<fontdb::Database> {
+    static FONTS: OnceLock<Arc<fontdb::Database>> = OnceLock::new();
+    let load = || {
+        let mut fonts = fontdb::Database::new();
+        for data in [dejavu::sans::regular(), dejavu::sans::bold()] {
+            fonts.load_font_source(fontdb::Source::Binary(Arc::new(data)));
+        }
+        fonts.set_sans_serif_family("DejaVu Sans");
+        Arc::new(fonts)
+    };
+    FONTS.get_or_init(load).clone()
+}
+
+fn cannot_write(path: &Path, source: std::io::Error) -> Error {
+    Error::Io { action: "write the chart", path: Some(path.to_owned()), source }
+}

@@ -1,0 +1,177 @@
+//! The settings of charts and whether they fit.
+
+use std::collections::HashSet;
+
+use super::Kind;
+use super::source::Source;
+use crate::components::Scaling;
+use crate::error::{Error, Result};
+use crate::parallel::ParallelAnalysis;
+
+/// As many groups have a colour and shape of their own.
+pub(super) const MOST_GROUPS: usize = 64;
+const SIDES: std::ops::RangeInclusive<usize> = 240..=4000;
+
+/// Variances that a scree compares the components with.
+#[derive(Debug, Clone, PartialEq)]
+pub enum Reference {
+    /// The mean of all variances: what each variable has on average; one under correlation.
+    MeanVariance,
+    /// The broken stick: the expected lengths, longest first, of the p pieces of a stick that is
+    /// as long as the total variance and breaks at random,
+    ///
+    /// ```text
+    /// b_k = (T / p) Σ_{i=k}^{p} 1 / i
+    /// ```
+    ///
+    /// with T the total variance. Source: S. Frontier (1976), "Étude de la décroissance des
+    /// valeurs propres dans une analyse en composantes principales" (from memory).
+    BrokenStick,
+    /// The variances of tables without structure, from a parallel analysis: their percentile.
+    Noise(Box<ParallelAnalysis>),
+}
+
+impl From<&ParallelAnalysis> for Reference {
+    fn from(analysis: &ParallelAnalysis) -> Self {
+        Reference::Noise(Box::new(analysis.clone()))
+    }
+}
+
+impl From<ParallelAnalysis> for Reference {
+    fn from(analysis: ParallelAnalysis) -> Self {
+        Reference::Noise(Box::new(analysis))
+    }
+}
+
+/// What a user set; checked before anything is drawn.
+#[derive(Debug, Clone, Default, PartialEq)]
+pub(super) struct Settings {
+    pub components: Option<(usize, usize)>,
+    pub groups: Option<Vec<Option<String>>>,
+    pub labels: Option<Vec<Option<String>>>,
+    pub title: Option<String>,
+    pub size: Option<(usize, usize)>,
+    pub coverage: Option<f64>,
+    pub references: Vec<Reference>,
+}
+
+impl Settings {
+    /// The two components to draw; the second is missing when there is only one.
+    pub fn plane(&self, source: &Source) -> (Option<usize>, Option<usize>) {
+        match self.components {
+            Some((sideways, upwards)) => (Some(sideways), Some(upwards)),
+            None => (Some(1), (source.n_components() > 1).then_some(2)),
+        }
+    }
+
+    pub fn title_or(&self, usual: String) -> String {
+        self.title.clone().unwrap_or(usual)
+    }
+
+    pub fn check(&self, kind: Kind, source: &Source) -> Result<()> {
+        self.check_place(kind)?;
+        if let Some((sideways, upwards)) = self.components {
+            let available = source.n_components();
+            for asked in [sideways, upwards] {
+                if !(1..=available).contains(&asked) {
+                    return Err(Error::ComponentOutOfRange { asked, available });
+                }
+            }
+            if sideways == upwards {
+                return Err(Error::OptionOutOfRange {
+                    option: "components",
+                    value: upwards as f64,
+                    accepted: "two different components",
+                });
+            }
+        }
+        for side in self.size.iter().flat_map(|size| [size.0, size.1]) {
+            if !SIDES.contains(&side) {
+                return Err(Error::OptionOutOfRange {
+                    option: "size",
+                    value: side as f64,
+                    accepted: "width and height from 240 to 4000 pixels",
+                });
+            }
+        }
+        if let Some(coverage) = self.coverage
+            && !(coverage > 0.0 && coverage < 1.0)
+        {
+            return Err(Error::OptionOutOfRange {
+                option: "coverage",
+                value: coverage,
+                accepted: "above 0 and below 1",
+            });
+        }
+        self.check_names(kind, source)?;
+        self.references.iter().try_for_each(|reference| check_reference(reference, source))
+    }
+
+    fn check_place(&self, kind: Kind) -> Result<()> {
+        let (chart, has_units) = match kind {
+            Kind::Scree => ("scree", false),
+            Kind::Scores => ("score plot", true),
+            Kind::Loadings => ("loading plot", false),
+            Kind::Biplot => ("biplot", true),
+        };
+        let is_scree = kind == Kind::Scree;
+        for (setting, is_set, fits, charts) in [
+            (
+                "components",
+                self.components.is_some(),
+                !is_scree,
+                "score plot, loading plot, biplot",
+            ),
+            ("groups", self.groups.is_some(), has_units, "score plot, biplot"),
+            ("labels", self.labels.is_some(), !is_scree, "score plot, loading plot, biplot"),
+            ("coverage", self.coverage.is_some(), has_units, "score plot, biplot"),
+            ("reference", !self.references.is_empty(), is_scree, "scree"),
+        ] {
+            if is_set && !fits {
+                return Err(Error::SettingNotForChart { setting, chart, charts });
+            }
+        }
+        Ok(())
+    }
+
+    fn check_names(&self, kind: Kind, source: &Source) -> Result<()> {
+        let n_units = source.scores.nrows();
+        if let Some(groups) = &self.groups {
+            check_count("groups", n_units, groups.len())?;
+            let different: HashSet<&Option<String>> = groups.iter().collect();
+            if different.len() > MOST_GROUPS {
+                return Err(Error::OptionOutOfRange {
+                    option: "number of groups",
+                    value: different.len() as f64,
+                    accepted: "at most 64 different groups",
+                });
+            }
+        }
+        match (&self.labels, kind) {
+            (Some(labels), Kind::Loadings) => {
+                check_count("labels of variables", source.variables.len(), labels.len())
+            }
+            (Some(labels), _) => check_count("labels of units", n_units, labels.len()),
+            (None, _) => Ok(()),
+        }
+    }
+}
+
+// Noise is compared with the components of a correlation matrix of the same shape only.
+fn check_reference(reference: &Reference, source: &Source) -> Result<()> {
+    let Reference::Noise(analysis) = reference else { return Ok(()) };
+    if source.scaling != Scaling::Correlation {
+        return Err(Error::SettingNotForChart {
+            setting: "reference to a parallel analysis",
+            chart: "scree of a covariance matrix",
+            charts: "scree of a correlation matrix",
+        });
+    }
+    check_count("rows behind the parallel analysis", source.n_rows, analysis.n_rows())?;
+    let n_variables = source.variables.len();
+    check_count("variables behind the parallel analysis", n_variables, analysis.n_variables())
+}
+
+fn check_count(what: &'static str, expected: usize, found: usize) -> Result<()> {
+    if expected == found { Ok(()) } else { Err(Error::ShapeMismatch { what, expected, found }) }
+}

@@ -1,0 +1,149 @@
+//! Results of analyses as tables, each with the conventions it was computed by.
+
+use super::matrices::both;
+use super::numbers::{counted, grouped, significant, stored};
+use super::tables::{Abridged, NumberFormat, Table, TableColumn};
+use super::{Bundle, Exhibit};
+use crate::components::{PrincipalComponents, Reconstruction, Scaling};
+use crate::parallel::{Noise, ParallelAnalysis};
+
+const VARIANCES: NumberFormat = NumberFormat::Significant(4);
+const LOADINGS: NumberFormat = NumberFormat::Decimals(3);
+const MOST_COMPONENTS: usize = 8;
+
+/// Variances with their shares, and the loadings of the leading components.
+impl Exhibit for PrincipalComponents {
+    fn exhibit(&self) -> Bundle {
+        both(&variances(self), &loadings(self))
+    }
+}
+
+/// Observed variances beside those of noise.
+impl Exhibit for ParallelAnalysis {
+    fn exhibit(&self) -> Bundle {
+        let places = 1..=self.observed().len();
+        let percentile = stored(self.percentile(), 4);
+        let verdicts = self.observed().iter().zip(self.noise_percentile().iter());
+        let verdicts = verdicts.map(|(seen, limit)| if seen > limit { "above" } else { "within" });
+        let noise = match self.noise() {
+            Noise::Normal => "independent normal values",
+            Noise::Permuted => "the data's own columns, each shuffled by itself",
+        };
+        Table::new(format!(
+            "Components against noise: {} by the percentile, {} by the mean",
+            self.n_by_percentile(),
+            self.n_by_mean()
+        ))
+        .column(TableColumn::counts("component", places).as_row_heads())
+        .column(numbers("variance", self.observed().iter(), VARIANCES))
+        .column(numbers("noise, mean", self.noise_mean().iter(), VARIANCES))
+        .column(numbers(
+            &format!("noise, percentile {percentile}"),
+            self.noise_percentile().iter(),
+            VARIANCES,
+        ))
+        .column(TableColumn::texts("noise", verdicts))
+        .note(format!(
+            "{} of {noise}, {} × {}, seed {}. Leading components above the mean (Horn 1965) or above \
+             percentile {percentile} (Glorfeld 1995) are counted until the first that is not.",
+            counted(self.n_replicates(), "table"),
+            counted(self.n_rows(), "row"),
+            counted(self.n_variables(), "column"),
+            self.seed()
+        ))
+        .note("Variances of the correlation matrix, to 4 significant digits.")
+        .exhibit()
+    }
+}
+
+/// Rows as a few components describe them.
+impl Exhibit for Reconstruction {
+    fn exhibit(&self) -> Bundle {
+        let labels = self.labels();
+        let residuals = self.row_residuals();
+        let mut order: Vec<usize> = (0..labels.len()).collect();
+        order.sort_by(|&a, &b| residuals[b].total_cmp(&residuals[a]).then(a.cmp(&b)));
+        let shown = Abridged::of(order.len(), 12, 12, 0);
+        let worst: Vec<usize> = shown.indices().map(|place| order[place]).collect();
+        let table = Table::new(format!(
+            "Rows least well described by {}",
+            counted(self.n_components(), "component")
+        ))
+        .with_rows_left_out(shown.head, shown.left_out)
+        .column(
+            TableColumn::texts("row", worst.iter().map(|&row| labels[row].as_str())).as_row_heads(),
+        )
+        .column(TableColumn::numbers(
+            "residual",
+            worst.iter().map(|&row| residuals[row]),
+            VARIANCES,
+        ))
+        .note(format!(
+            "{} of the variance is kept; sum of squared residuals {}.",
+            NumberFormat::Percent.format(self.proportion()),
+            significant(self.residual_sum_of_squares(), 4)
+        ))
+        .note(
+            "Residual: sum over variables of squared differences, scaled as the analysis scales \
+                 them. A large one is a statement about the table: statistical limits are not \
+                 safety limits.",
+        );
+        table.exhibit()
+    }
+}
+
+fn variances(pca: &PrincipalComponents) -> Table {
+    Table::new("Variance of each component")
+        .column(TableColumn::counts("component", 1..=pca.n_components()).as_row_heads())
+        .column(numbers("variance", pca.variances().iter(), VARIANCES))
+        .column(numbers("share", pca.proportions().iter(), NumberFormat::Percent))
+        .column(numbers("together", pca.cumulative().iter(), NumberFormat::Percent))
+        .note(format!(
+            "{} and {} {}; total variance {}; divisor n − 1 = {}; variances to 4 significant \
+             digits.",
+            counted(pca.n_rows(), "row"),
+            counted(pca.n_variables(), "variable"),
+            match pca.scaling() {
+                Scaling::Correlation => "brought to unit variance (correlation)",
+                Scaling::Covariance => "in their own units (covariance)",
+            },
+            significant(pca.total_variance(), 4),
+            grouped(pca.divisor())
+        ))
+}
+
+fn loadings(pca: &PrincipalComponents) -> Table {
+    let values = pca.loadings().values();
+    let n_shown = pca.n_components().min(MOST_COMPONENTS);
+    // All p loadings of a component are this large when every variable has the same part in it.
+    let threshold = 1.0 / (pca.n_variables() as f64).sqrt();
+    let mut table = Table::new("Loadings").column(
+        TableColumn::texts("variable", pca.variables().iter().map(String::as_str)).as_row_heads(),
+    );
+    for component in 0..n_shown {
+        let column = values.column(component);
+        table = table.column(
+            numbers(&(component + 1).to_string(), column.iter(), LOADINGS)
+                .dimmed_below(threshold)
+                .shaded_up_to(1.0),
+        );
+    }
+    if n_shown < pca.n_components() {
+        let n_left_out = pca.n_components() - n_shown;
+        table = table.column(TableColumn::left_out(n_left_out, pca.n_variables()));
+    }
+    table.note(format!(
+        "Coefficients of unit length for each component, not correlations; in each component the \
+         largest in absolute value is positive. Dimmed where the client can: those below 1/√p = \
+         {} in absolute value, the size when all variables share equally.",
+        LOADINGS.format(threshold)
+    ))
+}
+
+fn numbers<'a>(
+    heading: &str,
+    values: impl Iterator<Item = &'a f64>,
+    format: NumberFormat,
+) -> TableColumn {
+    TableColumn::numbers(heading, values.copied(), format)
+}
