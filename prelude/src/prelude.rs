@@ -21,6 +21,9 @@ pub use crate::table::{
     missing_values, read_table, read_table_with,
 };
 
+// Showing something in the middle of a cell.
+pub use crate::show;
+
 // Matrices and vectors.
 pub use nalgebra::{self, DMatrix, DVector, dmatrix, dvector};
 

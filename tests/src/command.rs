@@ -7,10 +7,12 @@ use serde_json::{Value, json};
 
 use crate::client::kernel_executable;
 
-/// The `semiaxis` command with arguments, without a terminal.
+/// The `semiaxis` command with arguments, without a terminal, and without what cargo adds to the
+/// environment of tests: the prelude must find the standard library by itself.
 pub fn semiaxis<'a>(arguments: impl IntoIterator<Item = &'a str>) -> Command {
     let mut command = Command::new(kernel_executable());
     command.args(arguments).stdin(Stdio::null()).env_remove("NO_COLOR");
+    command.env_remove("LD_LIBRARY_PATH");
     command
 }
 
@@ -30,7 +32,7 @@ pub fn stderr(output: &Output) -> String {
 pub fn in_own_mounts(script: &str, arguments: &[&Path]) -> Command {
     let mut command = Command::new("unshare");
     command.args(["--user", "--map-root-user", "--mount", "sh", "-euc", script, "sh"]);
-    command.args(arguments).stdin(Stdio::null());
+    command.args(arguments).stdin(Stdio::null()).env_remove("LD_LIBRARY_PATH");
     command
 }
 

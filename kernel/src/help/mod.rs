@@ -16,7 +16,7 @@ pub mod lexer;
 mod types;
 mod words;
 
-pub use complete::{Completion, Completions, complete};
+pub use complete::{Completions, complete};
 pub use completeness::{Completeness, completeness};
 pub use index::Index;
 pub use inspect::inspect;

@@ -41,14 +41,9 @@ impl Pictures {
         }
     }
 
-    /// How many there are.
-    pub fn len(&self) -> usize {
+    /// How many files there are.
+    pub fn n_files(&self) -> usize {
         self.files.len()
-    }
-
-    /// Whether there are none.
-    pub fn is_empty(&self) -> bool {
-        self.files.is_empty()
     }
 
     /// Writes them into a folder and removes pictures of an earlier run from it; other files there

@@ -6,6 +6,7 @@ use std::time::{Duration, Instant};
 
 use chrono::{DateTime, SecondsFormat, Utc};
 use serde_json::{Value, json};
+use tokio::signal::unix::{Signal, SignalKind, signal};
 use tokio::sync::mpsc;
 
 use super::document::Document;
@@ -82,6 +83,9 @@ pub async fn run_cells(
     let code: Vec<(usize, String)> = (0..document.n_cells())
         .filter_map(|cell_idx| Some((cell_idx, document.code(cell_idx)?)))
         .collect();
+    // One listener for the whole run: an interrupt between two looks must not be lost. Where the
+    // system gives none, an interrupt ends the program as it always does.
+    let mut keyboard = signal(SignalKind::interrupt()).ok();
     let mut summary = Summary { n_run: 0, n_code: code.len(), n_compiled: 0, failed: false };
     for (count, (cell_idx, code)) in (1u32..).zip(code) {
         let place = cell_idx + 1;
@@ -95,7 +99,7 @@ pub async fn run_cells(
         };
         let mut outputs = Outputs::default();
         let began = Utc::now();
-        let reply = run_cell(engine, request, &mut outputs, screen).await;
+        let reply = run_cell(engine, request, &mut outputs, screen, &mut keyboard).await;
         let ended = Utc::now();
         summary.n_run += 1;
         summary.n_compiled += usize::from(reply.timings.compiled);
@@ -132,6 +136,7 @@ async fn run_cell(
     request: CellRequest,
     outputs: &mut Outputs,
     screen: &Screen,
+    keyboard: &mut Option<Signal>,
 ) -> CellReply {
     let count = request.count;
     let interrupt = engine.interrupter();
@@ -144,7 +149,7 @@ async fn run_cell(
             biased;
             Some(event) = events.recv() => outputs.add(event, count),
             reply = &mut execution => break reply,
-            Ok(()) = tokio::signal::ctrl_c() => interrupt(),
+            () = pressed(keyboard) => interrupt(),
             _ = ticks.tick() => screen.tick(),
         }
     };
@@ -153,6 +158,17 @@ async fn run_cell(
         outputs.add(event, count);
     }
     reply
+}
+
+/// Waits for an interrupt from the keyboard.
+async fn pressed(keyboard: &mut Option<Signal>) {
+    let heard = match keyboard {
+        Some(signal) => signal.recv().await,
+        None => None,
+    };
+    if heard.is_none() {
+        std::future::pending::<()>().await;
+    }
 }
 
 /// The times that clients keep, under the names of the messages that they stand for.
@@ -198,7 +214,7 @@ pub async fn run_file<R: Runner>(
     let (path, folder) = (target.notebook.clone(), target.pictures.clone());
     target.write(&document.text())?;
     pictures.write(&folder)?;
-    report(&summary, began.elapsed(), &path, &folder, pictures.len());
+    report(&summary, began.elapsed(), &path, &folder, pictures.n_files());
     Ok(summary)
 }
 

@@ -3,7 +3,6 @@
 
 use std::fmt::Write as _;
 use std::io::{IsTerminal, Write as _};
-use std::time::Duration;
 
 use indicatif::{ProgressBar, ProgressDrawTarget, ProgressStyle};
 

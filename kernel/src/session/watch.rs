@@ -54,7 +54,9 @@ pub fn start() -> (mpsc::Receiver<Signal>, JoinSet<()>) {
         }
     }
     let client = std::env::var(CLIENT_PROCESS).ok().and_then(|text| text.parse().ok());
-    if let Some(client) = client.filter(|&client: &libc::pid_t| client > 1) {
+    // A kernel that was started in a container of its own cannot see its client's process, and must
+    // not take that for its end.
+    if let Some(client) = client.filter(|&client: &libc::pid_t| client > 1 && is_alive(client)) {
         watch.spawn(async move {
             while is_alive(client) {
                 tokio::time::sleep(LOOK_EVERY).await;

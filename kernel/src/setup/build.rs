@@ -254,7 +254,7 @@ fn run_cargo(
     loop {
         match lines.recv_timeout(TICK) {
             Ok(Line::Out(line)) => watched.message(&line),
-            Ok(Line::Err(line)) => watched.said(line, progress),
+            Ok(Line::Err(line)) => watched.said(line),
             Err(RecvTimeoutError::Timeout) => {}
             Err(RecvTimeoutError::Disconnected) => break,
         }
@@ -275,13 +275,13 @@ fn run_cargo(
 }
 
 /// The flags for the prelude's library alone: cells and it share one standard library, and it finds
-/// that library beside itself or in the compiler's own folder.
+/// that library beside itself or where the compiler keeps it for what it builds.
 ///
 /// The name of the kit goes into the linker's build identifier for cargo's sake. Cargo compares times
 /// of files under names relative to the workspace, so of two workspaces that share a folder for build
 /// results it would take the other's library for this one's; flags it compares as they are.
 fn prelude_flags(compiler: &Compiler, name: &str) -> Vec<String> {
-    let library = compiler.sysroot.join("lib");
+    let library = compiler.sysroot.join("lib").join("rustlib").join(compiler.host()).join("lib");
     vec![
         "-Cprefer-dynamic".to_owned(),
         "-Clink-arg=-Wl,-rpath,$ORIGIN".to_owned(),
@@ -326,6 +326,8 @@ struct Watched {
     current: Vec<String>,
     artifacts: Vec<Artifact>,
     tail: Vec<String>,
+    /// Whether cargo waits for another cargo.
+    blocked: bool,
 }
 
 impl Watched {
@@ -336,11 +338,13 @@ impl Watched {
             current: Vec::new(),
             artifacts: Vec::new(),
             tail: Vec::new(),
+            blocked: false,
         }
     }
 
     /// One line of cargo's standard output: a JSON message, of which only artifacts matter.
     fn message(&mut self, line: &str) {
+        self.blocked = false;
         let Ok(artifact) = serde_json::from_str::<Artifact>(line) else { return };
         if artifact.target.kind.iter().any(|kind| kind == "custom-build") {
             return;
@@ -352,14 +356,11 @@ impl Watched {
     }
 
     /// One line of cargo's standard error: what it starts, what it waits for, what went wrong.
-    fn said(&mut self, line: String, progress: &mut dyn FnMut(SetupEvent)) {
+    fn said(&mut self, line: String) {
         let words: Vec<&str> = line.split_whitespace().collect();
-        match words.as_slice() {
-            ["Compiling", name, ..] => self.current.push((*name).to_owned()),
-            ["Blocking", "waiting", ..] => {
-                progress(SetupEvent::Waiting { reason: "another cargo build to end".to_owned() });
-            }
-            _ => {}
+        self.blocked = matches!(words.as_slice(), ["Blocking", "waiting", ..]);
+        if let ["Compiling", name, ..] = words.as_slice() {
+            self.current.push((*name).to_owned());
         }
         if self.tail.len() == TAIL {
             self.tail.remove(0);
@@ -368,6 +369,9 @@ impl Watched {
     }
 
     fn event(&self, elapsed: Duration) -> SetupEvent {
+        if self.blocked {
+            return SetupEvent::Waiting { reason: "another cargo build to end".to_owned() };
+        }
         let done = self.finished.len().min(self.total);
         SetupEvent::Building { done, total: self.total, current: self.current.clone(), elapsed }
     }
@@ -410,13 +414,9 @@ mod tests {
     #[test]
     fn a_build_is_followed_from_cargo_s_own_words() {
         let mut watched = Watched::new(2);
-        let mut events = Vec::new();
-        watched.said("   Compiling serde_json v1.0.1".to_owned(), &mut |e| events.push(e));
-        watched
-            .said("    Blocking waiting for file lock on build directory".to_owned(), &mut |e| {
-                events.push(e)
-            });
-        assert!(matches!(events.as_slice(), [SetupEvent::Waiting { .. }]));
+        watched.said("    Blocking waiting for file lock on build directory".to_owned());
+        assert!(matches!(watched.event(Duration::ZERO), SetupEvent::Waiting { .. }));
+        watched.said("   Compiling serde_json v1.0.1".to_owned());
         assert_eq!(watched.current, ["serde_json"]);
         watched.message(ARTIFACT);
         watched.message("{\"reason\":\"build-finished\",\"success\":true}");

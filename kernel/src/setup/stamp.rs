@@ -10,6 +10,9 @@ use super::kit::INTERFACE;
 /// How many hexadecimal digits of a hash name a folder: 96 bits, far beyond chance.
 pub const DIGITS: usize = 24;
 
+/// The number of the way in which kits are built and laid out; another way makes another kit.
+const RECIPE: u32 = 2;
+
 /// What the sources say about the build.
 pub struct Sources {
     /// The hash of the prelude and of what decides how cargo builds it.
@@ -54,6 +57,7 @@ impl Sources {
     pub fn stamp(&self, compiler: &Compiler) -> String {
         let mut hasher = blake3::Hasher::new();
         hasher.update(self.hash.as_bytes());
+        hasher.update(&RECIPE.to_le_bytes());
         hasher.update(&INTERFACE.to_le_bytes());
         hasher.update(compiler.version.as_bytes());
         hasher.finalize().to_hex()[..DIGITS].to_owned()
