@@ -23,9 +23,8 @@ use std::sync::OnceLock;
 use std::time::{Duration, Instant};
 
 use jupyter_protocol::{
-    ConnectionInfo, ExecuteReply, ExecuteRequest, ExecutionState, InterruptRequest, JupyterMessage,
-    JupyterMessageContent, KernelInfoRequest, ReplyStatus, ShutdownRequest, Stdio as StreamName,
-    Transport,
+    ConnectionInfo, ExecuteRequest, ExecutionState, InterruptRequest, JupyterMessage,
+    JupyterMessageContent, KernelInfoRequest, ReplyStatus, ShutdownRequest, Transport,
 };
 use jupyter_zmq_client::{
     ClientControlConnection, ClientIoPubConnection, ClientShellConnection,
@@ -33,10 +32,11 @@ use jupyter_zmq_client::{
     create_client_shell_connection_with_identity, peek_ports_with_listeners,
     peer_identity_for_session,
 };
-use serde_json::{Map, Value};
 use tempfile::TempDir;
 use tokio::process::{Child, Command};
 use tokio::time::timeout;
+
+pub use crate::execution::{CellError, Execution};
 
 /// How long the kernel may take to answer what needs no engine.
 pub const SOON: Duration = Duration::from_secs(20);
@@ -92,30 +92,6 @@ pub struct Client {
     _dir: TempDir,
 }
 
-/// Everything a cell caused.
-#[derive(Debug)]
-pub struct Execution {
-    /// The reply on the shell socket.
-    pub reply: ExecuteReply,
-    /// The reply's message, for its metadata.
-    pub reply_message: JupyterMessage,
-    /// All broadcasts, in order, from `busy` to `idle`.
-    pub broadcasts: Vec<JupyterMessage>,
-    /// From the moment the client began to wait to its `idle`.
-    pub elapsed: Duration,
-}
-
-/// The `error` of a cell.
-#[derive(Debug, Clone, PartialEq, Eq)]
-pub struct CellError {
-    /// What kind it is.
-    pub name: String,
-    /// What it says.
-    pub value: String,
-    /// The lines shown, colours included.
-    pub traceback: Vec<String>,
-}
-
 /// The kernel's executable, built now if it was not yet.
 ///
 /// Cargo does not build another package's binary for an integration test, and a stale one would
@@ -129,10 +105,12 @@ pub fn kernel_executable() -> &'static Path {
             .ancestors()
             .find(|folder| folder.ends_with("deps"))
             .and_then(Path::parent)
-            .expect("a test executable lies in <profile>/deps");
+            .expect("a test executable lies in <target>/<profile>/deps");
+        // Where the tests were built, for that need not be where cargo would build by itself.
+        let target = folder.parent().expect("a profile's folder lies in the target folder");
         let mut build =
             std::process::Command::new(std::env::var_os("CARGO").unwrap_or("cargo".into()));
-        build.args(["build", "--quiet", "-p", "semiaxis-kernel"]);
+        build.args(["build", "--quiet", "-p", "semiaxis-kernel", "--target-dir"]).arg(target);
         if folder.ends_with("release") {
             build.arg("--release");
         }
@@ -162,6 +140,8 @@ impl Client {
         let mut command = Command::new(kernel_executable());
         command.arg("kernel").arg(&connection_file).envs(&start.environment);
         command.stdin(Stdio::null()).kill_on_drop(true);
+        // What cargo adds to the environment of tests, users do not have.
+        command.env_remove("LD_LIBRARY_PATH").env_remove("CARGO");
         if let Some(working_dir) = &start.working_dir {
             command.current_dir(working_dir);
         }
@@ -361,92 +341,6 @@ impl Client {
     pub async fn wait_for_end(&mut self) -> ExitStatus {
         let ended = timeout(SOON, self.process.wait()).await;
         ended.expect("the kernel ends in time").expect("the kernel can be waited for")
-    }
-}
-
-impl Execution {
-    /// The text written to standard output.
-    pub fn stdout(&self) -> String {
-        self.stream(|name| matches!(name, StreamName::Stdout))
-    }
-
-    /// The text written to standard error.
-    pub fn stderr(&self) -> String {
-        self.stream(|name| matches!(name, StreamName::Stderr))
-    }
-
-    fn stream(&self, wanted: impl Fn(&StreamName) -> bool) -> String {
-        self.contents()
-            .filter_map(|content| match content {
-                JupyterMessageContent::StreamContent(stream) if wanted(&stream.name) => {
-                    Some(stream.text.as_str())
-                }
-                _ => None,
-            })
-            .collect()
-    }
-
-    /// What the final expression showed, by MIME type.
-    pub fn result(&self) -> Option<Map<String, Value>> {
-        self.contents().find_map(|content| match content {
-            JupyterMessageContent::ExecuteResult(result) => Some(bundle(&result.data)),
-            _ => None,
-        })
-    }
-
-    /// The plain text of what the final expression showed.
-    pub fn result_text(&self) -> Option<&str> {
-        self.contents().find_map(|content| match content {
-            JupyterMessageContent::ExecuteResult(result) => {
-                result.data.content.iter().find_map(|form| match form {
-                    jupyter_protocol::MediaType::Plain(text) => Some(text.as_str()),
-                    _ => None,
-                })
-            }
-            _ => None,
-        })
-    }
-
-    /// What was shown in the middle of the cell, by MIME type.
-    pub fn displays(&self) -> Vec<Map<String, Value>> {
-        let display = |content: &JupyterMessageContent| match content {
-            JupyterMessageContent::DisplayData(display) => Some(bundle(&display.data)),
-            _ => None,
-        };
-        self.contents().filter_map(display).collect()
-    }
-
-    /// The error that was broadcast, if there was one.
-    pub fn error(&self) -> Option<CellError> {
-        self.contents().find_map(|content| match content {
-            JupyterMessageContent::ErrorOutput(error) => Some(CellError {
-                name: error.ename.clone(),
-                value: error.evalue.clone(),
-                traceback: error.traceback.clone(),
-            }),
-            _ => None,
-        })
-    }
-
-    /// The types of the broadcasts in order, with the state in place of `status`.
-    pub fn kinds(&self) -> Vec<String> {
-        let kind = |message: &JupyterMessage| match &message.content {
-            JupyterMessageContent::Status(status) => status.execution_state.as_str().to_owned(),
-            _ => message.header.msg_type.clone(),
-        };
-        self.broadcasts.iter().map(kind).collect()
-    }
-
-    fn contents(&self) -> impl Iterator<Item = &JupyterMessageContent> {
-        self.broadcasts.iter().map(|message| &message.content)
-    }
-}
-
-/// The forms of an output as the JSON object that was sent.
-fn bundle(media: &jupyter_protocol::Media) -> Map<String, Value> {
-    match serde_json::to_value(media) {
-        Ok(Value::Object(forms)) => forms,
-        other => panic!("a bundle is an object, not {other:?}"),
     }
 }
 

@@ -1,6 +1,7 @@
 //! Everything that crosses crates.
 
 pub mod client;
+pub mod execution;
 pub mod command;
 pub mod compare;
 pub mod debian;

@@ -19,7 +19,10 @@ use jupyter_zmq_client::{
     peer_identity_for_session,
 };
 use semiaxis_tests::client::{CELL, Client, SOON, Start, connection_info, kernel_executable};
+use semiaxis_tests::command::semiaxis;
 use serde_json::{Value, json};
+use tokio::io::{AsyncReadExt, AsyncWriteExt};
+use tokio::net::TcpStream;
 use tokio::time::timeout;
 use zeromq::{DealerSocket, ReqSocket, RouterSocket, Socket, SocketRecv, SocketSend};
 
@@ -390,6 +393,30 @@ async fn wrong_signatures_and_replays_are_refused_and_garbage_does_no_harm() {
 }
 
 #[tokio::test]
+async fn a_stranger_who_announces_more_than_there_is_memory_is_dropped() {
+    let mut client = Client::start().await;
+    let info = client.info.clone();
+    // ZMTP 3.1: signature, version 3.0, mechanism NULL, then a long frame and its length.
+    let mut hello = vec![0xff, 0, 0, 0, 0, 0, 0, 0, 0, 0x7f, 3, 0];
+    hello.extend(b"NULL");
+    hello.resize(64, 0);
+    hello.push(0x02);
+    hello.extend((1_u64 << 59).to_be_bytes());
+    for port in [info.shell_port, info.control_port, info.stdin_port, info.iopub_port, info.hb_port]
+    {
+        for bytes in [hello.as_slice(), &[0xff; 5000]] {
+            let mut stranger = TcpStream::connect(("127.0.0.1", port)).await.unwrap();
+            stranger.write_all(bytes).await.unwrap();
+            // Dropped: the stream ends, or is reset if there was more to read.
+            let ended = timeout(SOON, stranger.read_to_end(&mut Vec::new())).await;
+            assert!(ended.is_ok(), "port {port} keeps the connection");
+        }
+    }
+    assert_eq!(client.execute_well("1 + 1").await.result_text(), Some("2"));
+    assert!(client.shutdown(false).await.success());
+}
+
+#[tokio::test]
 async fn a_termination_signal_and_a_lost_client_end_the_kernel() {
     let mut client = Client::start().await;
     client.signal(libc::SIGTERM);
@@ -420,6 +447,7 @@ async fn without_a_key_the_kernel_warns_and_serves() {
     let kernel = tokio::process::Command::new(kernel_executable())
         .arg("kernel")
         .arg(&file)
+        .env_remove("LD_LIBRARY_PATH")
         .stderr(Stdio::piped())
         .kill_on_drop(true)
         .spawn()
@@ -444,12 +472,8 @@ async fn without_a_key_the_kernel_warns_and_serves() {
 
 /// Starts a kernel that is expected to give up at once.
 fn give_up(connection_file: &Path) -> (Option<i32>, String) {
-    let Output { status, stderr, stdout } = Command::new(kernel_executable())
-        .arg("kernel")
-        .arg(connection_file)
-        .stdin(Stdio::null())
-        .output()
-        .unwrap();
+    let path = connection_file.to_str().unwrap();
+    let Output { status, stderr, stdout } = semiaxis(["kernel", path]).output().unwrap();
     assert!(stdout.is_empty());
     (status.code(), String::from_utf8(stderr).unwrap())
 }
@@ -501,11 +525,8 @@ async fn a_taken_port_ends_with_status_3_and_names_the_port() {
 fn the_kernel_registers_itself_where_it_is_told() {
     let prefix = tempfile::tempdir().unwrap();
     let install = || {
-        Command::new(kernel_executable())
-            .args(["install", "--prefix"])
-            .arg(prefix.path())
-            .output()
-            .unwrap()
+        let prefix = prefix.path().to_str().unwrap();
+        semiaxis(["install", "--prefix", prefix]).output().unwrap()
     };
     assert!(install().status.success());
     let again = install();

@@ -103,8 +103,6 @@ pub async fn run_cells(
         let ended = Utc::now();
         summary.n_run += 1;
         summary.n_compiled += usize::from(reply.timings.compiled);
-        screen.end(place, n_cells, &code, reply.timings);
-
         let (failure, interrupted) = match reply.outcome {
             Outcome::Done => (None, false),
             Outcome::Failed(failure) => (Some(failure), false),
@@ -117,12 +115,14 @@ pub async fn run_cells(
         pictures.add(count, &bundles);
         let times = execution_times(began, ended);
         document.set_result(cell_idx, count, done, times, timings(reply.timings));
-        if let Some(failure) = failure
-            && (interrupted || !document.may_fail(cell_idx))
-        {
-            screen.failed(count, place, n_cells, &failure);
-            summary.failed = true;
-            break;
+        match failure {
+            Some(failure) if interrupted || !document.may_fail(cell_idx) => {
+                screen.failed(count, place, n_cells, &failure);
+                summary.failed = true;
+                break;
+            }
+            Some(_) => screen.end(place, n_cells, &code, "failed, as it is allowed to"),
+            None => screen.end(place, n_cells, &code, &took(reply.timings)),
         }
     }
     screen.finish();
@@ -180,6 +180,12 @@ fn execution_times(began: DateTime<Utc>, ended: DateTime<Utc>) -> Value {
         "shell.execute_reply": text(ended),
         "iopub.status.idle": text(ended),
     })
+}
+
+/// How long a cell took, for a person.
+fn took(timings: Timings) -> String {
+    let how = if timings.compiled { "" } else { ", compiled before" };
+    format!("{}{how}", clock(timings.compile + timings.run))
 }
 
 fn timings(timings: Timings) -> Value {

@@ -6,9 +6,8 @@ use std::io::{IsTerminal, Write as _};
 
 use indicatif::{ProgressBar, ProgressDrawTarget, ProgressStyle};
 
-use crate::cells::types::{CellFailure, Timings};
+use crate::cells::types::CellFailure;
 use crate::help::lexer::{FrontMatter, front_matter};
-use crate::setup::progress::clock;
 
 /// How many characters of a cell stand in its line.
 const WIDTH: usize = 60;
@@ -48,12 +47,10 @@ impl Screen {
         }
     }
 
-    /// A cell ended.
-    pub fn end(&self, place: usize, of: usize, code: &str, timings: Timings) {
+    /// A cell ended, and the run goes on.
+    pub fn end(&self, place: usize, of: usize, code: &str, how: &str) {
         if self.bar.is_none() {
-            let how = if timings.compiled { "" } else { ", compiled before" };
-            let took = clock(timings.compile + timings.run);
-            self.say(&format!("cell {place} of {of}: {} ({took}{how})", headline(code)));
+            self.say(&format!("cell {place} of {of}: {} ({how})", headline(code)));
         }
     }
 
@@ -63,7 +60,10 @@ impl Screen {
         if let Some(line) = failure.line {
             let _ = write!(text, " at its line {line}");
         }
-        let _ = write!(text, " ({place} of {of} in the notebook): {}", failure.message);
+        let _ = write!(text, " ({place} of {of} in the notebook)");
+        if failure.traceback.is_empty() {
+            let _ = write!(text, ": {}", failure.message);
+        }
         for line in &failure.traceback {
             text.push('\n');
             text.push_str(line);

@@ -46,6 +46,8 @@ pub enum News {
     Ready(Readiness),
     /// The engine could not be started; why, in words for the user.
     Unavailable(String),
+    /// The evaluator is at the cell now, so that an interrupt reaches it.
+    Begun,
     /// The running cell showed something.
     Cell(CellEvent),
     /// The running cell ended.
@@ -209,11 +211,18 @@ async fn run_cell<E: Evaluator>(
     let (sender, mut events) = mpsc::channel(WAITING);
     let reply = {
         let mut run = pin!(evaluator.execute(request, sender));
-        loop {
-            tokio::select! {
-                Some(event) = events.recv() => tell(news, News::Cell(event)).await,
-                reply = &mut run => break reply,
-            }
+        // An evaluator listens for interrupts from its first step on; the session keeps those
+        // that come before.
+        let first = poll_fn(|context| Poll::Ready(run.as_mut().poll(context))).await;
+        tell(news, News::Begun).await;
+        match first {
+            Poll::Ready(reply) => reply,
+            Poll::Pending => loop {
+                tokio::select! {
+                    Some(event) = events.recv() => tell(news, News::Cell(event)).await,
+                    reply = &mut run => break reply,
+                }
+            },
         }
     };
     while let Ok(event) = events.try_recv() {

@@ -1,7 +1,7 @@
 //! What the session needs of an engine, and the real one behind it.
 //!
 //! The trait is small so that the session's tests can run with a scripted evaluator; in the
-//! kernel there is one implementation, [`Engine`](crate::cells::engine::Engine). Its futures need
+//! kernel there is one implementation, [`Engine`]. Its futures need
 //! not be `Send`: an evaluator lives and dies on the thread it was started on.
 
 use std::time::{Duration, Instant};

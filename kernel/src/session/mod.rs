@@ -20,6 +20,7 @@ mod service;
 mod stream;
 #[cfg(test)]
 mod tests;
+mod turns;
 mod watch;
 
 use std::path::Path;
@@ -95,6 +96,7 @@ async fn converse(id: &str, key: &str, sockets: Sockets, options: EngineOptions)
     let mut engine_lives = true;
     'session: loop {
         let due = service.flush_due();
+        let listens = engine_lives && service.pause().is_none();
         let event = tokio::select! {
             // What can stop a cell goes before what the cell says.
             biased;
@@ -107,7 +109,7 @@ async fn converse(id: &str, key: &str, sockets: Sockets, options: EngineOptions)
             // other waiting: this inner choice is fair.
             event = async {
                 tokio::select! {
-                    news = news.recv(), if engine_lives => Event::Engine(news),
+                    news = news.recv(), if listens => Event::Engine(news),
                     Some(frames) = shell.recv() => {
                         Event::frames(&mut intake, wire::Inlet::Shell, frames)
                     }

@@ -20,6 +20,20 @@ pub struct Order {
     pub execute: ExecuteRequest,
 }
 
+/// How far the cell at the head of the queue is.
+#[derive(Debug, Clone, Copy, PartialEq, Eq)]
+pub enum Turn {
+    /// The engine is not ready yet.
+    Waiting,
+    /// The engine was given it, but an interrupt would not reach it yet.
+    HandedOver {
+        /// Whether it is to be interrupted as soon as that is possible.
+        interrupt: bool,
+    },
+    /// The engine is at it.
+    Begun,
+}
+
 /// The cell at the head of the queue.
 #[derive(Debug)]
 pub struct Running {
@@ -29,8 +43,8 @@ pub struct Running {
     pub count: usize,
     /// When it got its turn.
     pub since: DateTime<Utc>,
-    /// Whether the engine has it, or it still waits for the engine to be ready.
-    pub handed_over: bool,
+    /// How far it is.
+    pub turn: Turn,
     /// The plain text of its result, for the history.
     pub output: Option<String>,
 }
@@ -44,6 +58,11 @@ impl Running {
     /// Whether it is counted and remembered. A silent cell never is, whatever else it asks.
     pub fn is_stored(&self) -> bool {
         self.order.execute.store_history && !self.order.execute.silent
+    }
+
+    /// Whether it still waits for the engine to be ready.
+    pub fn waits(&self) -> bool {
+        self.turn == Turn::Waiting
     }
 
     /// What the engine is given.
@@ -95,7 +114,7 @@ impl Queue {
             order,
             count: self.counted + 1,
             since: Utc::now(),
-            handed_over: false,
+            turn: Turn::Waiting,
             output: None,
         };
         if running.is_stored() {

@@ -9,26 +9,22 @@ use std::ops::ControlFlow;
 use std::time::{Duration, Instant};
 
 use jupyter_protocol::{
-    CommClose, CommInfoReply, DisplayData, ErrorOutput, ExecuteInput, ExecuteReply, ExecuteResult,
-    ExecutionCount, ExpressionResult, HistoryReply, InterruptReply, JupyterMessage,
-    JupyterMessageContent, ReplyError, ReplyStatus, ShutdownReply, Status, Stdio, StreamContent,
-    Transient,
+    CommClose, CommInfoReply, HistoryReply, InterruptReply, JupyterMessage, JupyterMessageContent,
+    ShutdownReply, Status,
 };
-use serde_json::{Value, json};
 use tokio::sync::mpsc;
 use zeromq::ZmqMessage;
 
-use super::answers::{self, media, refusal};
+use super::answers::{self, refusal};
 use super::engine::{EngineHandle, Finished, News};
 use super::evaluator::Interrupt;
 use super::history::History;
 use super::publish::{Outlet, broadcast, reply_to};
 use super::queue::{Order, Queue, Running};
-use super::stream::{Gathered, StreamBuffer};
+use super::stream::{Pacer, StreamBuffer};
+use super::turns::plain_failure;
 use super::watch::Signal;
-use crate::cells::types::{
-    CellEvent, CellFailure, CellReply, MimeBundle, Outcome, Scope, StreamName, Timings,
-};
+use crate::cells::types::{Scope, StreamName};
 use crate::help::Index;
 use crate::wire::{Inlet, Intake, Refusal, Request, note};
 
@@ -62,7 +58,7 @@ impl Event {
 }
 
 /// Whether cells can be run.
-enum EngineState {
+pub(super) enum EngineState {
     /// Not yet; the latest line about what is being prepared.
     Starting(Option<String>),
     /// Yes; the way to stop one.
@@ -82,12 +78,13 @@ enum Answer {
 pub struct Service<O> {
     /// The kernel's id, which stands in its broadcasts' topics.
     id: String,
-    outlet: O,
-    engine: EngineHandle,
-    state: EngineState,
-    queue: Queue,
-    history: History,
-    stream: StreamBuffer,
+    pub(super) outlet: O,
+    pub(super) engine: EngineHandle,
+    pub(super) state: EngineState,
+    pub(super) queue: Queue,
+    pub(super) history: History,
+    pub(super) stream: StreamBuffer,
+    pub(super) pacer: Pacer,
     /// What the session defined when the last cell ended.
     scope: Scope,
     /// What the prelude offers; empty until the engine's thread has read it.
@@ -105,6 +102,7 @@ impl<O: Outlet> Service<O> {
             queue: Queue::default(),
             history: History::default(),
             stream: StreamBuffer::default(),
+            pacer: Pacer::new(Instant::now()),
             scope: Scope::default(),
             index: Index::default(),
         }
@@ -117,7 +115,13 @@ impl<O: Outlet> Service<O> {
 
     /// When [`Event::FlushDue`] is to be raised: a moment that lies far ahead if nothing waits.
     pub fn flush_due(&self) -> Instant {
-        self.stream.due().unwrap_or_else(|| Instant::now() + Duration::from_secs(3600))
+        let due = [self.stream.due(), self.pause()].into_iter().flatten().min();
+        due.unwrap_or_else(|| Instant::now() + Duration::from_secs(3600))
+    }
+
+    /// Until when the engine is not to be heard, because a cell writes more than clients can read.
+    pub fn pause(&self) -> Option<Instant> {
+        self.pacer.pause(Instant::now())
     }
 
     /// Does what an event asks for, and breaks if the session is to end.
@@ -252,7 +256,7 @@ impl<O: Outlet> Service<O> {
     async fn hear(&mut self, news: Option<News>) {
         match news {
             Some(News::Progress(line)) => {
-                if self.queue.running.as_ref().is_some_and(|running| !running.handed_over) {
+                if self.queue.running.as_ref().is_some_and(Running::waits) {
                     self.show_text(StreamName::Stdout, format!("{line}\n")).await;
                 }
                 if let EngineState::Starting(latest) = &mut self.state {
@@ -270,6 +274,7 @@ impl<O: Outlet> Service<O> {
                 self.state = EngineState::Unavailable(reason);
                 self.pump().await;
             }
+            Some(News::Begun) => self.begun(),
             Some(News::Cell(event)) => self.show(event).await,
             Some(News::Finished(finished)) => {
                 let Finished { reply, expressions, scope } = *finished;
@@ -282,7 +287,7 @@ impl<O: Outlet> Service<O> {
                 let reason = "the engine's thread has ended, which is a bug of semiaxis; \
                               restart the kernel to run cells again";
                 self.state = EngineState::Unavailable(reason.to_owned());
-                if self.queue.running.as_ref().is_some_and(|running| running.handed_over) {
+                if self.queue.running.as_ref().is_some_and(|running| !running.waits()) {
                     self.fail_running("EngineFailure", reason).await;
                 }
                 self.pump().await;
@@ -290,188 +295,7 @@ impl<O: Outlet> Service<O> {
         }
     }
 
-    /// Gives the next cell its turn, and the engine the cell whose turn it is.
-    async fn pump(&mut self) {
-        loop {
-            if let Some(running) = self.queue.advance() {
-                let parent = running.order.message.clone();
-                let execution_count = ExecutionCount::new(running.count);
-                let code = running.order.execute.code.clone();
-                let (heard, stored) = (running.is_heard(), running.is_stored());
-                self.broadcast(Some(&parent), Status::busy()).await;
-                if heard {
-                    let input = ExecuteInput { code: code.clone(), execution_count };
-                    self.broadcast(Some(&parent), input).await;
-                }
-                if stored {
-                    self.history.push(execution_count.value(), &code);
-                }
-                if let EngineState::Starting(Some(line)) = &self.state {
-                    let line = format!("{line}\n");
-                    self.show_text(StreamName::Stdout, line).await;
-                }
-            }
-            let Some(running) = &mut self.queue.running else { return };
-            match &self.state {
-                EngineState::Ready(_) => {
-                    if !running.handed_over {
-                        running.handed_over = true;
-                        self.engine.run(running.job());
-                    }
-                    return;
-                }
-                EngineState::Starting(_) => return,
-                EngineState::Unavailable(reason) => {
-                    let reason = reason.clone();
-                    self.fail_running("EngineUnavailable", &reason).await;
-                }
-            }
-        }
-    }
-
-    async fn interrupt(&mut self) {
-        match (&self.queue.running, &self.state) {
-            (Some(running), EngineState::Ready(interrupt)) if running.handed_over => interrupt(),
-            (Some(_), EngineState::Starting(_)) => {
-                let text = "interrupted before the engine was ready; the cell did not run";
-                let outcome = Outcome::Interrupted(plain_failure("Interrupted", text));
-                self.conclude(CellReply { outcome, timings: Timings::default() }, vec![]).await;
-                self.pump().await;
-            }
-            // Nothing runs; an interrupt that comes too late must not hit the next cell.
-            _ => {}
-        }
-    }
-
-    async fn fail_running(&mut self, name: &str, reason: &str) {
-        let outcome = Outcome::Failed(plain_failure(name, reason));
-        self.conclude(CellReply { outcome, timings: Timings::default() }, vec![]).await;
-    }
-
-    /// Shows something that the running cell showed.
-    async fn show(&mut self, event: CellEvent) {
-        match event {
-            CellEvent::Stream { name, text } => self.show_text(name, text).await,
-            CellEvent::Display(bundle) => {
-                let content = DisplayData::new(media(bundle));
-                self.show_content(content.into()).await;
-            }
-            CellEvent::Result(bundle) => {
-                let Some(running) = &mut self.queue.running else { return };
-                running.output =
-                    bundle.get("text/plain").and_then(Value::as_str).map(str::to_owned);
-                let content = ExecuteResult {
-                    execution_count: ExecutionCount::new(running.count),
-                    data: media(bundle),
-                    metadata: Default::default(),
-                    transient: Some(Transient::default()),
-                };
-                self.show_content(content.into()).await;
-            }
-        }
-    }
-
-    async fn show_text(&mut self, name: StreamName, text: String) {
-        for gathered in self.stream.push(name, text, Instant::now()) {
-            self.send_text(gathered).await;
-        }
-    }
-
-    async fn flush(&mut self) {
-        if let Some(gathered) = self.stream.take() {
-            self.send_text(gathered).await;
-        }
-    }
-
-    async fn send_text(&mut self, Gathered { name, text }: Gathered) {
-        let name = match name {
-            StreamName::Stdout => Stdio::Stdout,
-            StreamName::Stderr => Stdio::Stderr,
-        };
-        self.send_output(StreamContent { name, text }.into()).await;
-    }
-
-    /// Shows content after the text that was gathered before it.
-    async fn show_content(&mut self, content: JupyterMessageContent) {
-        self.flush().await;
-        self.send_output(content).await;
-    }
-
-    async fn send_output(&mut self, content: JupyterMessageContent) {
-        if let Some(running) = &self.queue.running
-            && running.is_heard()
-        {
-            let parent = running.order.message.clone();
-            self.broadcast(Some(&parent), content).await;
-        }
-    }
-
-    /// Ends the running cell: its error, its reply, its `idle`, and what follows for the others.
-    async fn conclude(
-        &mut self,
-        reply: CellReply,
-        expressions: Vec<(String, Result<MimeBundle, CellFailure>)>,
-    ) {
-        self.flush().await;
-        let failure = match reply.outcome {
-            Outcome::Done => None,
-            Outcome::Failed(failure) | Outcome::Interrupted(failure) => Some(failure),
-        };
-        if let Some(failure) = &failure {
-            self.send_output(error_output(failure).into()).await;
-        }
-        let Some(running) = self.queue.running.take() else { return };
-        if running.is_stored()
-            && let Some(output) = &running.output
-        {
-            self.history.set_output(running.count, output);
-        }
-        let parent = &running.order.message;
-        let content = ExecuteReply {
-            status: if failure.is_none() { ReplyStatus::Ok } else { ReplyStatus::Error },
-            execution_count: ExecutionCount::new(running.count),
-            payload: Vec::new(),
-            user_expressions: Some(
-                expressions.into_iter().map(|(name, value)| (name, expressed(value))).collect(),
-            ),
-            error: failure.as_ref().map(|failure| Box::new(reply_error(failure))),
-        };
-        let message = reply_to(parent, content).with_metadata(timing(&running, reply.timings));
-        self.outlet.reply(running.order.inlet, message).await;
-        self.broadcast(Some(parent), Status::idle()).await;
-        if failure.is_some() && running.order.execute.stop_on_error {
-            self.abort_waiting().await;
-        }
-    }
-
-    async fn abort_waiting(&mut self) {
-        for order in self.queue.drain() {
-            self.broadcast(Some(&order.message), Status::busy()).await;
-            self.abort(&order).await;
-        }
-    }
-
-    async fn abort(&mut self, order: &Order) {
-        let content = ExecuteReply {
-            status: ReplyStatus::Aborted,
-            execution_count: ExecutionCount::new(self.queue.counted()),
-            user_expressions: Some(Default::default()),
-            ..ExecuteReply::default()
-        };
-        self.outlet.reply(order.inlet, reply_to(&order.message, content)).await;
-        self.broadcast(Some(&order.message), Status::idle()).await;
-    }
-
-    /// Gives up every cell, since the session ends; their senders are told.
-    async fn abandon(&mut self) {
-        self.flush().await;
-        if let Some(running) = self.queue.running.take() {
-            self.abort(&running.order).await;
-        }
-        self.abort_waiting().await;
-    }
-
-    async fn broadcast(
+    pub(super) async fn broadcast(
         &mut self,
         parent: Option<&JupyterMessage>,
         content: impl Into<JupyterMessageContent>,
@@ -479,53 +303,4 @@ impl<O: Outlet> Service<O> {
         let message = broadcast(&self.id, parent, content);
         self.outlet.publish(message).await;
     }
-}
-
-/// A failure with nothing to tell but one line.
-fn plain_failure(name: &str, message: impl Into<String>) -> CellFailure {
-    let message = message.into();
-    CellFailure {
-        name: name.to_owned(),
-        traceback: vec![format!("{name}: {message}")],
-        message,
-        line: None,
-    }
-}
-
-fn error_output(failure: &CellFailure) -> ErrorOutput {
-    ErrorOutput {
-        ename: failure.name.clone(),
-        evalue: failure.message.clone(),
-        traceback: failure.traceback.clone(),
-    }
-}
-
-fn reply_error(failure: &CellFailure) -> ReplyError {
-    ReplyError {
-        ename: failure.name.clone(),
-        evalue: failure.message.clone(),
-        traceback: failure.traceback.clone(),
-    }
-}
-
-fn expressed(value: Result<MimeBundle, CellFailure>) -> ExpressionResult {
-    match value {
-        Ok(bundle) => ExpressionResult::Ok { data: media(bundle), metadata: Default::default() },
-        Err(failure) => {
-            let ReplyError { ename, evalue, traceback } = reply_error(&failure);
-            ExpressionResult::Error { ename, evalue, traceback }
-        }
-    }
-}
-
-/// When the cell got its turn, and where its time went, in milliseconds.
-fn timing(running: &Running, timings: Timings) -> Value {
-    json!({
-        "started": running.since.to_rfc3339(),
-        "semiaxis": {
-            "compile_ms": timings.compile.as_secs_f64() * 1000.0,
-            "run_ms": timings.run.as_secs_f64() * 1000.0,
-            "compiled": timings.compiled,
-        }
-    })
 }

@@ -57,6 +57,48 @@ impl StreamBuffer {
     }
 }
 
+/// Text that a cell may write at once without being slowed down, in bytes.
+const BURST: f64 = 64.0 * 1024.0 * 1024.0;
+
+/// Text that a cell may write for ever, in bytes a second.
+const SUSTAINED: f64 = 32.0 * 1024.0 * 1024.0;
+
+/// Slows down a cell that writes without end.
+///
+/// The broadcast socket keeps what its clients have not read yet, and there is no asking it how
+/// much that is; a notebook server reads some tens of megabytes a second. So the session stops
+/// listening to a cell that has written a good deal more than that, and the cell waits in turn.
+#[derive(Debug)]
+pub struct Pacer {
+    /// Bytes that clients are taken not to have read at `since`.
+    unread: f64,
+    since: Instant,
+}
+
+impl Pacer {
+    /// Nothing has been written.
+    pub fn new(now: Instant) -> Self {
+        Self { unread: 0.0, since: now }
+    }
+
+    /// Text was sent.
+    pub fn spend(&mut self, bytes: usize, now: Instant) {
+        self.unread = self.unread_at(now) + bytes as f64;
+        self.since = now;
+    }
+
+    /// Until when no more text is to be taken, if it is too much.
+    pub fn pause(&self, now: Instant) -> Option<Instant> {
+        let excess = self.unread_at(now) - BURST;
+        (excess > 0.0).then(|| now + Duration::from_secs_f64(excess / SUSTAINED))
+    }
+
+    fn unread_at(&self, now: Instant) -> f64 {
+        let read = now.saturating_duration_since(self.since).as_secs_f64() * SUSTAINED;
+        (self.unread - read).max(0.0)
+    }
+}
+
 #[cfg(test)]
 mod tests {
     use super::*;
@@ -105,6 +147,27 @@ mod tests {
         sent.extend(buffer.take().map(|gathered| gathered.text));
         assert_eq!(sent.len(), 10_000_000);
         assert!(messages < 200, "{messages} messages");
+    }
+
+    #[test]
+    fn a_burst_passes_and_what_goes_on_is_slowed_to_what_can_be_read() {
+        let start = Instant::now();
+        let mut pacer = Pacer::new(start);
+        pacer.spend(60 << 20, start);
+        assert_eq!(pacer.pause(start), None);
+        // A gigabyte in pieces, each sent as soon as it may be.
+        let mut now = start;
+        for _ in 0..1024 {
+            now = pacer.pause(now).unwrap_or(now);
+            pacer.spend(1 << 20, now);
+        }
+        // 60 + 1024 MiB less the 64 at once, at 32 a second: 31.9 seconds.
+        let taken = (now - start).as_secs_f64();
+        assert!((31.5..32.5).contains(&taken), "{taken}");
+        // After a rest a burst passes again.
+        let later = now + Duration::from_secs(3);
+        pacer.spend(60 << 20, later);
+        assert_eq!(pacer.pause(later), None);
     }
 
     #[test]

@@ -33,6 +33,8 @@ use crate::wire::{Inlet, Request};
 const DEADLINE: Duration = Duration::from_secs(20);
 
 /// Does what the lines of a cell say.
+///
+/// An interrupt reaches it while it executes, as it does the engine; one that came before is lost.
 struct Script {
     interrupted: Arc<Interrupted>,
     defined: Vec<String>,
@@ -79,6 +81,7 @@ impl Evaluator for Script {
         events: mpsc::Sender<CellEvent>,
     ) -> CellReply {
         let timings = Timings { compiled: true, ..Timings::default() };
+        self.interrupted.flag.store(false, Ordering::SeqCst);
         for line in request.code.lines() {
             if let Some(outcome) = self.line(line, &events).await {
                 return CellReply { outcome, timings };
@@ -128,9 +131,12 @@ fn failure(name: &str, message: &str) -> CellFailure {
     }
 }
 
-/// Keeps what would have been sent, in order; replies are told by their inlet.
+/// A message, and the inlet it answers if it is a reply.
+type Sent = (Option<Inlet>, JupyterMessage);
+
+/// Keeps what would have been sent, in order.
 #[derive(Clone, Default)]
-struct Recorder(Rc<RefCell<Vec<(Option<Inlet>, JupyterMessage)>>>);
+struct Recorder(Rc<RefCell<Vec<Sent>>>);
 
 impl Outlet for Recorder {
     async fn reply(&mut self, inlet: Inlet, message: JupyterMessage) {
@@ -405,6 +411,16 @@ async fn an_interrupt_ends_the_running_cell_and_never_the_next_one() {
     // Nothing runs now, so this one has no effect.
     assert!(session.ask_by(Inlet::Control, InterruptRequest {}).await.1.is_continue());
     assert!(session.run_to_end("result b").await.contains(&"-> execute_reply ok".to_owned()));
+}
+
+#[tokio::test]
+async fn an_interrupt_that_overtakes_the_cell_is_kept_for_it() {
+    let mut session = Harness::ready().await;
+    let cell = session.run("wait").await;
+    // The session has not heard that the engine is at the cell.
+    session.interrupt().await;
+    session.until_idle(&cell).await;
+    assert!(session.lines(&cell).contains(&"error Interrupted: as asked".to_owned()));
 }
 
 #[tokio::test]

@@ -1,7 +1,7 @@
 //! The wire: how bytes on five sockets become messages, and messages become bytes.
 //!
 //! A client writes a connection file and starts the kernel with it; this part reads the file
-//! ([`connection`]), binds the sockets it names ([`sockets`]), and lets in only messages whose
+//! ([`connection`]), binds the sockets it names ([`sockets`], behind a [`gate`]), and lets in only messages whose
 //! signature holds and which were not seen before ([`intake`], [`replay`]). It knows nothing of
 //! cells: bytes come in, checked messages go out.
 //!
@@ -11,6 +11,7 @@
 //! `zeromq`; nothing of the format is spelled out here that they offer.
 
 mod connection;
+mod gate;
 mod intake;
 mod quirks;
 mod replay;

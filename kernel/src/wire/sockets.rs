@@ -11,7 +11,7 @@
 use std::io;
 use std::os::unix::fs::{FileTypeExt, PermissionsExt};
 use std::os::unix::net::UnixStream;
-use std::path::Path;
+use std::path::{Path, PathBuf};
 use std::time::Duration;
 
 use jupyter_protocol::{ConnectionInfo, JupyterMessage, Transport};
@@ -19,11 +19,15 @@ use jupyter_zmq_client::{
     Connection, KernelIoPubConnection, KernelShellConnection, RouterRecvConnection,
     RouterSendConnection,
 };
+use tempfile::TempDir;
 use thiserror::Error;
+use tokio::net::TcpListener;
 use tokio::sync::mpsc;
-use zeromq::{PubSocket, RepSocket, RouterSocket, Socket, SocketRecv, SocketSend, ZmqMessage};
+use zeromq::{
+    PubSocket, RepSocket, RouterSocket, Socket, SocketRecv, SocketSend, ZmqMessage, ZmqResult,
+};
 
-use super::{Inlet, note};
+use super::{Inlet, gate, note};
 
 /// How many messages may wait between a socket and the session.
 const WAITING: usize = 256;
@@ -62,6 +66,16 @@ pub struct Outlets {
     control: RouterSendConnection,
     stdin: RouterSendConnection,
     iopub: KernelIoPubConnection,
+    /// What the tcp sockets stand in, removed with them.
+    _ground: Ground,
+}
+
+/// Where sockets are bound.
+enum Ground {
+    /// In files of their own, which only their owner may open.
+    Files,
+    /// On ports, with a gate before them; the transport itself listens in this folder.
+    Ports(TempDir),
 }
 
 impl Outlets {
@@ -95,13 +109,26 @@ impl Outlets {
 ///
 /// A [`BindError`] naming the socket and the address; those bound before it are released.
 pub async fn bind(info: &ConnectionInfo, session: &str) -> Result<Sockets, BindError> {
-    let shell: KernelShellConnection = router(info, "shell", info.shell_url(), session).await?;
-    let control = router(info, "control", info.control_url(), session).await?;
-    let stdin = router(info, "stdin", info.stdin_url(), session).await?;
+    let ground = match info.transport {
+        Transport::IPC => Ground::Files,
+        Transport::TCP => Ground::Ports(gate::folder().map_err(|error| BindError {
+            socket: "shell",
+            endpoint: info.shell_url(),
+            source: error.into(),
+        })?),
+    };
+    let router = async |name, port, endpoint| {
+        let mut socket = RouterSocket::new();
+        bind_one(&ground, info, &mut socket, name, port, endpoint).await?;
+        Ok::<KernelShellConnection, BindError>(Connection::new(socket, &info.key, session))
+    };
+    let shell = router("shell", info.shell_port, info.shell_url()).await?;
+    let control = router("control", info.control_port, info.control_url()).await?;
+    let stdin = router("stdin", info.stdin_port, info.stdin_url()).await?;
     let mut iopub = PubSocket::new();
-    bind_one(info, &mut iopub, "iopub", &info.iopub_url()).await?;
+    bind_one(&ground, info, &mut iopub, "iopub", info.iopub_port, info.iopub_url()).await?;
     let mut heartbeat = RepSocket::new();
-    bind_one(info, &mut heartbeat, "heartbeat", &info.hb_url()).await?;
+    bind_one(&ground, info, &mut heartbeat, "heartbeat", info.hb_port, info.hb_url()).await?;
 
     let (shell, from_shell) = shell.split();
     let (control, from_control) = control.split();
@@ -116,41 +143,45 @@ pub async fn bind(info: &ConnectionInfo, session: &str) -> Result<Sockets, BindE
             control,
             stdin,
             iopub: Connection::new(iopub, &info.key, session),
+            _ground: ground,
         },
     })
 }
 
-async fn router(
-    info: &ConnectionInfo,
-    name: &'static str,
-    endpoint: String,
-    session: &str,
-) -> Result<KernelShellConnection, BindError> {
-    let mut socket = RouterSocket::new();
-    bind_one(info, &mut socket, name, &endpoint).await?;
-    Ok(Connection::new(socket, &info.key, session))
-}
-
 async fn bind_one(
+    ground: &Ground,
     info: &ConnectionInfo,
     socket: &mut impl Socket,
     name: &'static str,
-    endpoint: &str,
+    port: u16,
+    endpoint: String,
 ) -> Result<(), BindError> {
-    let file = match info.transport {
-        Transport::IPC => endpoint.strip_prefix("ipc://").map(Path::new),
-        Transport::TCP => None,
+    let bound = match ground {
+        Ground::Files => bind_file(socket, &endpoint).await,
+        Ground::Ports(folder) => {
+            bind_port(socket, (info.ip.as_str(), port), folder.path().join(name)).await
+        }
     };
-    let failed = |source| BindError { socket: name, endpoint: endpoint.to_owned(), source };
-    if let Some(file) = file {
-        remove_if_abandoned(file);
-    }
-    socket.bind(endpoint).await.map_err(failed)?;
-    if let Some(file) = file {
-        // Only the owner may connect, as only the owner may read the connection file.
-        let owner_only = std::fs::Permissions::from_mode(0o600);
-        std::fs::set_permissions(file, owner_only).map_err(|error| failed(error.into()))?;
-    }
+    bound.map_err(|source| BindError { socket: name, endpoint, source })
+}
+
+async fn bind_file(socket: &mut impl Socket, endpoint: &str) -> ZmqResult<()> {
+    let file = Path::new(endpoint.strip_prefix("ipc://").unwrap_or(endpoint));
+    remove_if_abandoned(file);
+    socket.bind(endpoint).await?;
+    // Only the owner may connect, as only the owner may read the connection file.
+    std::fs::set_permissions(file, std::fs::Permissions::from_mode(0o600))?;
+    Ok(())
+}
+
+async fn bind_port(
+    socket: &mut impl Socket,
+    address: (&str, u16),
+    behind: PathBuf,
+) -> ZmqResult<()> {
+    let listener = TcpListener::bind(address).await?;
+    socket.bind(&format!("ipc://{}", behind.display())).await?;
+    tokio::spawn(gate::guard(listener, behind));
     Ok(())
 }
 

@@ -13,6 +13,9 @@
 //! and R. J. LeVeque (1983), "Algorithms for computing the sample variance", The American
 //! Statistician 37, 242–247, for many variables.
 //!
+//! After an interrupt the blocks that are left are skipped; whoever asked for the product has to
+//! call `checkpoint` before using it.
+//!
 //! Blocks and the parts they are summed in depend on the shape only, so the result does not depend
 //! on the number of threads.
 
@@ -21,7 +24,8 @@ use faer::{Accum, MatMut, MatRef, Par};
 use nalgebra::{DMatrix, DVector};
 use rayon::prelude::*;
 
-use super::views::{PIECES, view, view_mut};
+use super::views::{PIECES, WORTH_CUTTING, view, view_mut};
+use crate::live::interrupted;
 
 /// Column means and the cross-product of deviations from them.
 pub(crate) struct CrossProduct {
@@ -53,42 +57,40 @@ pub(crate) fn of_columns(x: &DMatrix<f64>) -> CrossProduct {
     let n_blocks = n.div_ceil(block);
     let n_parts = n_blocks.min(MOST_PARTS).min((MOST_PARTIAL / (p * p)).max(1));
     // One large product is cut inside faer; many small ones run side by side.
-    let par = if n_parts == 1 && p >= 256 { PIECES } else { Par::Seq };
-    let mut block_means = DMatrix::zeros(p, n_blocks);
+    let par = if n_parts == 1 && p >= WORTH_CUTTING { PIECES } else { Par::Seq };
+    let mut rounded = DMatrix::zeros(p, n_blocks);
+    let mut left = DMatrix::zeros(p, n_blocks);
     let blocks_per_part = n_blocks.div_ceil(n_parts);
-    let sums: Vec<DMatrix<f64>> = block_means
+    let sums: Vec<DMatrix<f64>> = rounded
         .as_mut_slice()
         .par_chunks_mut(p * blocks_per_part)
+        .zip(left.as_mut_slice().par_chunks_mut(p * blocks_per_part))
         .enumerate()
-        .map(|(part, means)| {
+        .map(|(part, (rounded, left))| {
             let mut sum = DMatrix::zeros(p, p);
             let mut buffer = vec![0.0; block * p];
-            for (place, mean) in means.chunks_mut(p).enumerate() {
+            let centres = rounded.chunks_mut(p).zip(left.chunks_mut(p));
+            for (place, (rounded, left)) in centres.enumerate() {
+                if interrupted() {
+                    break;
+                }
                 let first = (part * blocks_per_part + place) * block;
                 let n_rows = block.min(n - first);
                 let buffer = &mut buffer[..n_rows * p];
                 for (j, centred) in buffer.chunks_mut(n_rows).enumerate() {
                     let column = &x.as_slice()[j * n + first..][..n_rows];
-                    mean[j] = centre_into(column, centred);
+                    let centre = centre_into(column, centred);
+                    (rounded[j], left[j]) = (centre.rounded, centre.left);
                 }
                 let block = MatRef::from_column_major_slice(buffer, n_rows, p);
-                add_lower(view_mut(&mut sum), block.transpose(), block, par);
+                add_lower(view_mut(&mut sum), block.transpose(), block, 1.0, par);
             }
             sum
         })
         .collect();
     let mut lower = add_in_order(sums);
-    let mean = mean_of_blocks(&block_means, n, block);
-    if n_blocks > 1 {
-        let mut spread = block_means;
-        for (place, mut column) in spread.column_iter_mut().enumerate() {
-            let n_rows = block.min(n - place * block);
-            column -= &mean;
-            column *= (n_rows as f64).sqrt();
-        }
-        let spread = view(&spread);
-        add_lower(view_mut(&mut lower), spread, spread.transpose(), PIECES);
-    }
+    let weight = |place: usize| block.min(n - place * block) as f64;
+    let mean = gather(&mut lower, rounded, left, weight);
     CrossProduct { mean, lower }
 }
 
@@ -99,7 +101,7 @@ pub(crate) fn of_rows(x: &DMatrix<f64>, unit: bool) -> (Moments, DMatrix<f64>) {
     let block = (BLOCK / n).clamp(96, 4096).min(p);
     let n_blocks = p.div_ceil(block);
     let n_parts = n_blocks.min(MOST_PARTS).min((MOST_PARTIAL / (n * n)).max(1));
-    let par = if n_parts == 1 && n >= 256 { PIECES } else { Par::Seq };
+    let par = if n_parts == 1 && n >= WORTH_CUTTING { PIECES } else { Par::Seq };
     let per_part = n_blocks.div_ceil(n_parts) * block;
     let mut mean = DVector::zeros(p);
     let mut sum_squares = DVector::zeros(p);
@@ -114,10 +116,15 @@ pub(crate) fn of_rows(x: &DMatrix<f64>, unit: bool) -> (Moments, DMatrix<f64>) {
             for (place, (means, squares)) in
                 means.chunks_mut(block).zip(squares.chunks_mut(block)).enumerate()
             {
+                if interrupted() {
+                    break;
+                }
                 let first = part * per_part + place * block;
                 let buffer = &mut buffer[..n * means.len()];
                 for (k, scaled) in buffer.chunks_mut(n).enumerate() {
-                    means[k] = centre_into(&x.as_slice()[(first + k) * n..][..n], scaled);
+                    let centre = centre_into(&x.as_slice()[(first + k) * n..][..n], scaled);
+                    means[k] = centre.rounded + centre.left;
+                    scaled.iter_mut().for_each(|deviation| *deviation -= centre.left);
                     squares[k] = scaled.iter().map(|d| d * d).sum();
                     if unit && squares[k] > 0.0 {
                         let variance: f64 = squares[k] / (n - 1) as f64;
@@ -126,7 +133,7 @@ pub(crate) fn of_rows(x: &DMatrix<f64>, unit: bool) -> (Moments, DMatrix<f64>) {
                     }
                 }
                 let block = MatRef::from_column_major_slice(buffer, n, means.len());
-                add_lower(view_mut(&mut sum), block, block.transpose(), par);
+                add_lower(view_mut(&mut sum), block, block.transpose(), 1.0, par);
             }
             sum
         })
@@ -134,40 +141,62 @@ pub(crate) fn of_rows(x: &DMatrix<f64>, unit: bool) -> (Moments, DMatrix<f64>) {
     (Moments { mean, sum_squares }, add_in_order(sums))
 }
 
-/// Writes the deviations of a column from its mean and returns the mean.
-///
-/// The mean is computed twice: the rounding left in the first shows as the sum of the deviations
-/// and is taken out, so that the returned mean is as good as double precision allows.
-fn centre_into(column: &[f64], centred: &mut [f64]) -> f64 {
-    let n = column.len() as f64;
-    let first = sum(column) / n;
-    for (deviation, value) in centred.iter_mut().zip(column) {
-        *deviation = value - first;
-    }
-    let left = sum(centred) / n;
-    if left != 0.0 {
-        // A correction below the last digit of the mean still belongs in the deviations.
-        centred.iter_mut().for_each(|deviation| *deviation -= left);
-    }
-    first + left
+/// A mean in two parts: what a double can hold, and what is left of it.
+struct Centre {
+    rounded: f64,
+    left: f64,
 }
 
-/// A sum in eight lanes, which vectorises and loses fewer digits than one running sum.
+/// Writes the deviations of a column from its rounded mean and returns the mean.
+///
+/// The rounding left in the mean shows as the mean of the deviations.
+fn centre_into(column: &[f64], centred: &mut [f64]) -> Centre {
+    let n = column.len() as f64;
+    let rounded = sum(column) / n;
+    let mut lanes = [0.0; LANES];
+    let (values, rest) = column.as_chunks::<LANES>();
+    let (deviations, rest_deviations) = centred.as_chunks_mut::<LANES>();
+    for (deviations, values) in deviations.iter_mut().zip(values) {
+        for ((deviation, value), lane) in deviations.iter_mut().zip(values).zip(&mut lanes) {
+            *deviation = value - rounded;
+            *lane += *deviation;
+        }
+    }
+    let mut left = fold(lanes);
+    for (deviation, value) in rest_deviations.iter_mut().zip(rest) {
+        *deviation = value - rounded;
+        left += *deviation;
+    }
+    Centre { rounded, left: left / n }
+}
+
+/// Running sums kept side by side, so that they vectorise and lose fewer digits than one.
+const LANES: usize = 16;
+
 fn sum(values: &[f64]) -> f64 {
-    let mut lanes = [0.0; 8];
-    let chunks = values.chunks_exact(8);
-    let rest: f64 = chunks.remainder().iter().sum();
+    let mut lanes = [0.0; LANES];
+    let (chunks, rest) = values.as_chunks::<LANES>();
     for chunk in chunks {
         for (lane, value) in lanes.iter_mut().zip(chunk) {
             *lane += value;
         }
     }
-    ((lanes[0] + lanes[4]) + (lanes[1] + lanes[5]))
-        + ((lanes[2] + lanes[6]) + (lanes[3] + lanes[7]))
-        + rest
+    fold(lanes) + rest.iter().sum::<f64>()
 }
 
-fn add_lower(into: MatMut<'_, f64>, a: MatRef<'_, f64>, b: MatRef<'_, f64>, par: Par) {
+fn fold(lanes: [f64; LANES]) -> f64 {
+    let mut width = LANES / 2;
+    let mut lanes = lanes;
+    while width > 0 {
+        for lane in 0..width {
+            lanes[lane] += lanes[lane + width];
+        }
+        width /= 2;
+    }
+    lanes[0]
+}
+
+fn add_lower(into: MatMut<'_, f64>, a: MatRef<'_, f64>, b: MatRef<'_, f64>, factor: f64, par: Par) {
     triangular::matmul(
         into,
         BlockStructure::TriangularLower,
@@ -176,7 +205,7 @@ fn add_lower(into: MatMut<'_, f64>, a: MatRef<'_, f64>, b: MatRef<'_, f64>, par:
         BlockStructure::Rectangular,
         b,
         BlockStructure::Rectangular,
-        1.0,
+        factor,
         par,
     );
 }
@@ -190,13 +219,46 @@ fn add_in_order(sums: Vec<DMatrix<f64>>) -> DMatrix<f64> {
     total
 }
 
-fn mean_of_blocks(block_means: &DMatrix<f64>, n: usize, block: usize) -> DVector<f64> {
-    // Averaging deviations from the first block keeps the digits of a large common offset.
-    let first: DVector<f64> = block_means.column(0).into_owned();
-    let mut shift = DVector::zeros(block_means.nrows());
-    for (place, column) in block_means.column_iter().enumerate() {
-        let n_rows = block.min(n - place * block);
-        shift.axpy(n_rows as f64 / n as f64, &(column - &first), 1.0);
+/// Adds the spread of the block means to a sum of products about their rounded values, and returns
+/// the mean of all rows.
+///
+/// Only differences of block means enter, so that digits lost to a large common offset are those
+/// that a double could not hold in the first place.
+fn gather(
+    lower: &mut DMatrix<f64>,
+    rounded: DMatrix<f64>,
+    left: DMatrix<f64>,
+    weight: impl Fn(usize) -> f64,
+) -> DVector<f64> {
+    let n: f64 = (0..left.ncols()).map(&weight).sum();
+    let first: DVector<f64> = rounded.column(0).into_owned();
+    let mut spread = rounded;
+    let mut shift = DVector::zeros(first.len());
+    for (place, mut column) in spread.column_iter_mut().enumerate() {
+        column -= &first;
+        column += left.column(place);
+        shift.axpy(weight(place) / n, &column, 1.0);
+    }
+    let par = if first.len() < WORTH_CUTTING { Par::Seq } else { PIECES };
+    let weighted = |mut matrix: DMatrix<f64>| {
+        for (place, mut column) in matrix.column_iter_mut().enumerate() {
+            column *= weight(place).sqrt();
+        }
+        matrix
+    };
+    for mut column in spread.column_iter_mut() {
+        column -= &shift;
+    }
+    let spread = weighted(spread);
+    if spread.ncols() > 1 {
+        add_lower(view_mut(lower), view(&spread), view(&spread).transpose(), 1.0, par);
+    }
+    // Σ(x − c)(x − c)ᵀ exceeds the product about the mean m by n (m − c)(m − c)ᵀ, here with m − c
+    // what rounding left. It matters for offsets some 1e8 times the spread and beyond.
+    let left = weighted(left);
+    let matters = |j: usize| left.row(j).norm_squared() > f64::EPSILON * lower[(j, j)];
+    if (0..first.len()).any(matters) {
+        add_lower(view_mut(lower), view(&left), view(&left).transpose(), -1.0, par);
     }
     first + shift
 }

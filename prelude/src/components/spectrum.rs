@@ -7,14 +7,11 @@ use faer::linalg::evd::{ComputeEigenvectors, self_adjoint_evd, self_adjoint_evd_
 use faer::linalg::svd::{ComputeSvdVectors, svd, svd_scratch};
 use nalgebra::{DMatrix, DVector};
 
-use super::views::{PIECES, view, view_mut};
+use super::views::{PIECES, WORTH_CUTTING, view, view_mut};
 use crate::error::{Error, Result};
 
 /// Loadings within this relative distance of the largest count as tied with it.
 const TIED: f64 = 1e-8;
-
-/// From this order on, one decomposition is worth cutting into pieces.
-const WORTH_CUTTING: usize = 256;
 
 /// Roots in descending order, and the unit-length vectors that belong to them.
 pub(crate) struct Spectrum {

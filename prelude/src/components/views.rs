@@ -9,6 +9,9 @@ use nalgebra::DMatrix;
 /// way on every machine and in every pool of threads.
 pub(crate) const PIECES: faer::Par = faer::Par::Rayon(std::num::NonZeroUsize::new(4).unwrap());
 
+/// From this order of matrix on, one operation is worth cutting into pieces.
+pub(crate) const WORTH_CUTTING: usize = 256;
+
 /// A read-only view of the whole matrix.
 pub(crate) fn view(matrix: &DMatrix<f64>) -> MatRef<'_, f64> {
     MatRef::from_column_major_slice(matrix.as_slice(), matrix.nrows(), matrix.ncols())

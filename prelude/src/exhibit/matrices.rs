@@ -91,15 +91,15 @@ impl Exhibit for ColumnDescriptions {
             .column(TableColumn::counts("missing", counts(|column| column.missing)))
             .column(TableColumn::counts("different", counts(|column| column.n_distinct)))
             .column(numbers("mean", |numbers| numbers.mean))
-            .column(numbers("st. deviation", |numbers| numbers.standard_deviation))
-            .column(numbers("least", |numbers| numbers.min))
-            .column(numbers("lower quartile", |numbers| numbers.lower_quartile))
+            .column(numbers("deviation", |numbers| numbers.standard_deviation))
+            .column(numbers("min", |numbers| numbers.min))
+            .column(numbers("25 %", |numbers| numbers.lower_quartile))
             .column(numbers("median", |numbers| numbers.median))
-            .column(numbers("upper quartile", |numbers| numbers.upper_quartile))
-            .column(numbers("greatest", |numbers| numbers.max))
+            .column(numbers("75 %", |numbers| numbers.upper_quartile))
+            .column(numbers("max", |numbers| numbers.max))
             .note(
-                "Numbers to at most 5 significant digits. Standard deviation: divisor n − 1. \
-                 Quartiles: linear interpolation (definition 7 of Hyndman and Fan 1996).",
+                "Numbers to at most 5 significant digits. Deviation: standard deviation with divisor \
+                 n − 1. Quartiles (25 and 75 %): linear interpolation (definition 7 of Hyndman and Fan 1996).",
             );
         for column in columns {
             if let Some(numbers) = column.numbers.filter(|numbers| numbers.n_not_finite > 0) {

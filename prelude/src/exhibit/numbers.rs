@@ -43,6 +43,13 @@ pub fn significant(value: f64, digits: usize) -> String {
 /// As [`significant`], without trailing zeros: how stored data are shown.
 ///
 /// A measurement written as 12.5 was not taken to five digits, so it is not shown as 12.500.
+///
+/// ```
+/// use semiaxis::exhibit::stored;
+///
+/// assert_eq!(stored(12.5, 6), "12.5");
+/// assert_eq!(stored(1.0 / 3.0, 6), "0.333333");
+/// ```
 pub fn stored(value: f64, digits: usize) -> String {
     let text = significant(value, digits);
     match text.split_once('e') {
@@ -52,6 +59,13 @@ pub fn stored(value: f64, digits: usize) -> String {
 }
 
 /// Rounds to a fixed count of decimals; a negative number that rounds to zero loses its sign.
+///
+/// ```
+/// use semiaxis::exhibit::fixed;
+///
+/// assert_eq!(fixed(0.26726, 3), "0.267");
+/// assert_eq!(fixed(-0.0001, 3), "0.000");
+/// ```
 pub fn fixed(value: f64, decimals: usize) -> String {
     if !value.is_finite() {
         return not_finite(value);

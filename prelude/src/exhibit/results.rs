@@ -24,7 +24,8 @@ impl Exhibit for ParallelAnalysis {
         let places = 1..=self.observed().len();
         let percentile = stored(self.percentile(), 4);
         let verdicts = self.observed().iter().zip(self.noise_percentile().iter());
-        let verdicts = verdicts.map(|(seen, limit)| if seen > limit { "above" } else { "within" });
+        let verdicts =
+            verdicts.map(|(seen, limit)| if seen > limit { "above noise" } else { "within noise" });
         let noise = match self.noise() {
             Noise::Normal => "independent normal values",
             Noise::Permuted => "the data's own columns, each shuffled by itself",
@@ -42,7 +43,7 @@ impl Exhibit for ParallelAnalysis {
             self.noise_percentile().iter(),
             VARIANCES,
         ))
-        .column(TableColumn::texts("noise", verdicts))
+        .column(TableColumn::texts("verdict", verdicts))
         .note(format!(
             "{} of {noise}, {} × {}, seed {}. Leading components above the mean (Horn 1965) or above \
              percentile {percentile} (Glorfeld 1995) are counted until the first that is not.",

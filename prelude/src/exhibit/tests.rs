@@ -58,7 +58,7 @@ fn long_and_wide_data_frames_are_abridged_with_counts() {
     let text = plain(&frame);
     assert!(text.contains("… 982 more rows …"));
     assert!(text.contains(" more"));
-    assert!(text.lines().all(|line| line.chars().count() <= 110), "{text}");
+    assert!(text.lines().all(|line| line.chars().count() <= 132), "{text}");
     // The last rows carry their own numbers, not those of their place in the exhibit.
     assert!(text.lines().any(|line| line.trim_start().starts_with("1000 ")), "{text}");
 }

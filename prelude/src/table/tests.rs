@@ -5,6 +5,7 @@ use std::path::PathBuf;
 
 use nalgebra::{DMatrix, dmatrix};
 use polars::prelude::{DataFrame, DataType, df};
+use proptest::prelude::*;
 
 use super::nearest::nearest;
 use super::{
@@ -425,4 +426,67 @@ fn hostile_names_cannot_forge_a_message() {
     let message = table.data_matrix().unwrap_err().to_string();
     assert!(!message.contains('\u{1b}') && !message.contains('\n'), "{message}");
     assert!(message.len() < 500, "{message}");
+}
+
+/// A field as RFC 4180 writes it when it holds anything special.
+fn quoted(cell: &str) -> String {
+    format!("\"{}\"", cell.replace('"', "\"\""))
+}
+
+proptest! {
+    #![proptest_config(ProptestConfig::with_cases(256))]
+
+    #[test]
+    fn text_between_quotes_comes_back_as_it_was(
+        cells in prop::collection::vec(("[a-z\",;\n\t |ä]{1,8}", "[a-z\",\n]{1,4}"), 1..20),
+        crlf in any::<bool>(),
+    ) {
+        let end = if crlf { "\r\n" } else { "\n" };
+        let mut text = format!("first,{}{end}", quoted("second, \"quoted\""));
+        for (a, b) in &cells {
+            text += &format!("{},{}{end}", quoted(a), quoted(b));
+        }
+        let table = read("a.csv", text).unwrap();
+        let expected = |cell: &str| (!["nan", "null"].contains(&cell)).then(|| cell.to_owned());
+        for (column, name) in ["first", "second, \"quoted\""].into_iter().enumerate() {
+            let read = match table.column(name).unwrap().str() {
+                Ok(text) => text.iter().map(|cell| cell.map(str::to_owned)).collect(),
+                Err(_) => vec![None; cells.len()],
+            };
+            for (read, (a, b)) in read.iter().zip(&cells) {
+                prop_assert_eq!(read, &expected(if column == 0 { a } else { b }));
+            }
+        }
+    }
+
+    #[test]
+    fn any_text_is_a_table_or_a_typed_error(
+        text in "[a1.,;\"\n\r\t -]{0,60}", name in prop::sample::select(vec!["a.csv", "a.tsv"]),
+    ) {
+        if let Err(error) = read(name, &text) {
+            prop_assert!(!matches!(error, Error::Polars { .. } | Error::Io { .. }), "{}", error);
+            // Whatever the reader behind the first pass refuses, the first pass should have.
+            prop_assert!(!matches!(error, Error::Unreadable { .. }), "{}", error);
+        }
+    }
+
+    #[test]
+    fn any_bytes_are_a_table_or_a_typed_error(
+        bytes in prop::collection::vec(any::<u8>(), 0..80),
+        name in prop::sample::select(vec!["a.csv", "a.jsonl", "a.parquet", "a.arrow"]),
+    ) {
+        if let Err(error) = read(name, &bytes) {
+            prop_assert!(!matches!(error, Error::Polars { .. } | Error::Io { .. }), "{}", error);
+        }
+    }
+
+    #[test]
+    fn numbers_come_back_to_the_last_digit(values in prop::collection::vec(any::<f64>(), 1..30)) {
+        let values: Vec<f64> = values.into_iter().filter(|value| value.is_finite()).collect();
+        prop_assume!(!values.is_empty());
+        let text: String = values.iter().map(|value| format!("{value:?}\n")).collect();
+        let table = read("a.csv", format!("x\n{text}")).unwrap();
+        let read = floats(&table, "x");
+        prop_assert_eq!(read, values.into_iter().map(Some).collect::<Vec<_>>());
+    }
 }

@@ -10,9 +10,8 @@ use crate::exhibit::numbers::{counted, fixed, typographic};
 use crate::exhibit::text::shortened;
 
 const MOST_NAMED: usize = 80;
-// Arrowheads get in each other's way among so many.
-const MOST_WITH_HEADS: usize = 400;
-const MOST_WITH_HOVER: usize = 1500;
+// Beyond so many, arrows are a solid fan; the longest say what there is to say.
+const MOST_DRAWN: usize = 400;
 const HEAD: f64 = 8.0;
 
 /// The variables' loadings on two components.
@@ -43,7 +42,7 @@ impl Arrows {
         &self.tips
     }
 
-    /// The length below which arrows are drawn faint.
+    /// The length below which arrows are drawn thin and grey.
     pub fn threshold(&self) -> f64 {
         self.threshold
     }
@@ -53,28 +52,30 @@ impl Arrows {
     }
 
     /// Draws the arrows, stretched by a factor.
-    pub fn draw(&self, svg: &mut Svg, plane: &Plane, stretch: f64, color: &'static str) {
+    pub fn draw(
+        &self,
+        svg: &mut Svg,
+        plane: &Plane,
+        stretch: f64,
+        (full, small): (&'static str, &'static str),
+    ) {
         let from = plane.place(0.0, 0.0);
-        let with_heads = self.tips.len() <= MOST_WITH_HEADS;
-        let with_hover = self.tips.len() <= MOST_WITH_HOVER;
         svg.element("g")
             .with("class", "arrows")
-            .with("stroke-width", "1.7")
             .with("stroke-linecap", "round")
             .with("stroke-linejoin", "round")
             .with("fill", "none")
             .around(|svg| {
-                for variable in self.by_length() {
+                for variable in self.drawn() {
                     let (x, y) = self.tips[variable];
                     let to = plane.place(x * stretch, y * stretch);
-                    let path = arrow(from, to, with_heads);
-                    let color = if self.is_small(variable) { FAINT } else { color };
+                    let path = arrow(from, to);
+                    let (color, thickness) =
+                        if self.is_small(variable) { (small, "1.2") } else { (full, "1.8") };
                     let element = svg.element("path").with("d", &path).with("stroke", color);
-                    if with_hover {
-                        element.around(|svg| svg.element("title").text(&self.hover(variable)));
-                    } else {
-                        element.done();
-                    }
+                    element
+                        .with("stroke-width", thickness)
+                        .around(|svg| svg.element("title").text(&self.hover(variable)));
                 }
             });
     }
@@ -82,7 +83,7 @@ impl Arrows {
     /// Adds arrows to what labels should keep off.
     pub fn block(&self, space: &mut LabelSpace, plane: &Plane, stretch: f64) {
         let from = plane.place(0.0, 0.0);
-        for &(x, y) in &self.tips {
+        for (x, y) in self.drawn().into_iter().map(|variable| self.tips[variable]) {
             let to = plane.place(x * stretch, y * stretch);
             space.add_line(from, to);
             space.add_mark(to.0, to.1, 2.0);
@@ -91,7 +92,7 @@ impl Arrows {
 
     /// The names to be set at the tips, the longest arrows first.
     pub fn wishes(&self, plane: &Plane, stretch: f64) -> Vec<Wish> {
-        let mut order = self.by_length();
+        let mut order = self.drawn();
         order.reverse();
         order
             .into_iter()
@@ -106,21 +107,33 @@ impl Arrows {
             .collect()
     }
 
-    /// What the chart says of arrows that are faint or have no name.
+    /// What the chart says of arrows that are thin or have no name.
     pub fn notes(&self, n_named: usize) -> Vec<String> {
         let mut notes = Vec::new();
-        let n_small = (0..self.tips.len()).filter(|&variable| self.is_small(variable)).count();
+        let drawn = self.drawn();
+        if drawn.len() < self.tips.len() {
+            notes.push(format!(
+                "The {} longest of {} are drawn.",
+                drawn.len(),
+                counted(self.tips.len(), "arrow")
+            ));
+        }
+        let n_small = drawn.iter().copied().filter(|&variable| self.is_small(variable)).count();
         if n_small > 0 {
             let limit = if self.components.1.is_some() { "√(2/p)" } else { "√(1/p)" };
             notes.push(format!(
-                "Faint: {} shorter than {limit} = {}, the length when all variables share equally.",
+                "Thin and grey: {} shorter than {limit} = {}, the length when all variables share equally.",
                 counted(n_small, "arrow"),
                 fixed(self.threshold, 3)
             ));
         }
-        let n_unnamed = self.names.iter().filter(|name| !name.trim().is_empty()).count() - n_named;
+        let n_names = drawn.iter().filter(|&&v| !self.names[v].trim().is_empty()).count();
+        let n_unnamed = n_names - n_named;
         if n_unnamed > 0 {
-            notes.push(format!("{} without room for a name.", counted(n_unnamed, "variable")));
+            notes.push(format!(
+                "{} without a name: there is no room.",
+                counted(n_unnamed, "variable")
+            ));
         }
         notes
     }
@@ -158,6 +171,13 @@ impl Arrows {
         x.hypot(y) < self.threshold * (1.0 - 1e-9)
     }
 
+    // The longest arrows, the shortest of them first.
+    fn drawn(&self) -> Vec<usize> {
+        let mut order = self.by_length();
+        order.drain(..order.len().saturating_sub(MOST_DRAWN));
+        order
+    }
+
     // The shortest first, so that long arrows are drawn over short ones.
     fn by_length(&self) -> Vec<usize> {
         let length = |variable: usize| self.tips[variable].0.hypot(self.tips[variable].1);
@@ -179,10 +199,10 @@ impl Arrows {
     }
 }
 
-fn arrow(from: (f64, f64), to: (f64, f64), with_head: bool) -> String {
+fn arrow(from: (f64, f64), to: (f64, f64)) -> String {
     let mut path = format!("M{} {}L{} {}", tenth(from.0), tenth(from.1), tenth(to.0), tenth(to.1));
     let length = (to.0 - from.0).hypot(to.1 - from.1);
-    if with_head && length > 2.0 {
+    if length > 2.0 {
         let head = HEAD.min(length * 0.6);
         let angle = (to.1 - from.1).atan2(to.0 - from.0);
         let barb = |side: f64| {

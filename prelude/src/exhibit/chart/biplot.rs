@@ -11,7 +11,7 @@ use super::Drawing;
 use super::arrows::Arrows;
 use super::card::Card;
 use super::labels::{LabelSpace, push_labels};
-use super::palette::INK;
+use super::palette::{INK, INK_SOFT};
 use super::plane::{Extent, Plane};
 use super::scores::{LABEL_MOST, LABEL_SIZE, draw_settled, opening, plane_title};
 use super::settings::Settings;
@@ -22,7 +22,7 @@ use crate::exhibit::numbers::{counted, stored};
 const MOST_NAMED_OF_MANY: usize = 5;
 
 pub(super) fn draw(source: &Source, settings: &Settings) -> Drawing {
-    let units = Units::new(source, settings);
+    let units = Units::new(source, settings).receding();
     let arrows = Arrows::new(source, settings, None);
     let components = settings.plane(source);
     let stretch = stretch(units.points(), arrows.longest());
@@ -63,7 +63,7 @@ pub(super) fn draw(source: &Source, settings: &Settings) -> Drawing {
         plane.draw(svg, &source.axis_title(components.0), &source.axis_title(components.1));
         let mut notes = vec![scaling.clone()];
         notes.extend(units.draw(svg, &plane));
-        arrows.draw(svg, &plane, stretch, INK);
+        arrows.draw(svg, &plane, stretch, (INK, INK_SOFT));
         let mut space = LabelSpace::new(plane.area);
         // Names of variables matter more than the marks they may cover in a crowd, so marks
         // block labels only after the arrows' names are placed.

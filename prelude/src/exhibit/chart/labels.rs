@@ -116,7 +116,9 @@ impl LabelSpace {
                 let side = if turn % 2 == 0 { 1.0 } else { -1.0 };
                 let angle = wish.outward + side * ((turn + 1) / 2) as f64 * FRAC_PI_8;
                 let area = area_towards(wish, angle, wish.clearance + 2.5 + reach, extent);
-                if !self.area.contains(&area) || self.labels.iter().any(|l| l.overlaps(&area)) {
+                if !self.area.contains(&area)
+                    || self.labels.iter().any(|label| label.overlaps(&widened(&area)))
+                {
                     continue;
                 }
                 let (n_marks, n_lines) = self.covered(&area);
@@ -193,6 +195,12 @@ pub(super) fn push_labels(svg: &mut Svg, labels: &[PlacedLabel], size: f64) {
                     .text(&label.text);
             }
         });
+}
+
+// Neighbouring labels on one line need a space between them.
+fn widened(area: &Area) -> Area {
+    const GAP: f64 = 5.0;
+    Area { left: area.left - GAP, right: area.right + GAP, ..*area }
 }
 
 // The box that touches the circle of the given radius around the point in a direction.

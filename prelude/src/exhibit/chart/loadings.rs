@@ -4,7 +4,7 @@ use super::Drawing;
 use super::arrows::{Arrows, push_ring};
 use super::card::Card;
 use super::labels::{LabelSpace, push_labels};
-use super::palette::GROUPS;
+use super::palette::{FAINT, GROUPS};
 use super::plane::{Extent, Plane};
 use super::scores::{LABEL_MOST, LABEL_SIZE, draw_settled, opening, plane_title};
 use super::settings::Settings;
@@ -43,7 +43,7 @@ pub(super) fn draw(source: &Source, settings: &Settings) -> Drawing {
         plane.draw(svg, &source.axis_title(components.0), &source.axis_title(components.1));
         let title = format!("length {}: all variables share equally", fixed(ring, 3));
         push_ring(svg, &plane, ring, &title);
-        arrows.draw(svg, &plane, 1.0, GROUPS[0]);
+        arrows.draw(svg, &plane, 1.0, (GROUPS[0], FAINT));
         let mut space = LabelSpace::new(plane.area);
         arrows.block(&mut space, &plane, 1.0);
         let wishes = arrows.wishes(&plane, 1.0);

@@ -1,7 +1,7 @@
 //! Marks for units, from one to twenty thousand, and counts beyond.
 //!
-//! Few marks carry a hover title each. Many marks of a group go into one path, which is some
-//! fifteen bytes a mark. Beyond [`MOST_MARKS`] units a picture of marks says no more than a
+//! Few marks carry a hover title each. Many marks of a group go into one path, at some eight
+//! bytes a mark. Beyond [`MOST_MARKS`] units a picture of marks says no more than a
 //! picture of counts, and the drawing counts units in hexagons instead.
 
 use std::collections::BTreeMap;
@@ -10,11 +10,12 @@ use std::fmt::Write;
 use super::palette::{CARD, COUNTS, Cue, INK, Shape};
 use super::svg::{Svg, tenth};
 use crate::exhibit::numbers::counted;
+use crate::exhibit::text::push_markup;
 
 /// As many units as are drawn one by one.
 pub(super) const MOST_MARKS: usize = 20_000;
 /// Bytes that hover titles may take in one chart.
-const MOST_HOVER_BYTES: usize = 250_000;
+const MOST_HOVER_BYTES: usize = 280_000;
 const HEXAGON_RADIUS: f64 = 7.0;
 
 /// A unit's place in the drawing.
@@ -38,10 +39,20 @@ pub(super) fn mark_radius(n_marks: usize) -> f64 {
 }
 
 /// Whether hover titles of these texts fit into a chart.
-pub(super) fn hover_fits(n_marks: usize, text_bytes: usize) -> bool {
+pub(super) fn hover_fits(texts: impl ExactSizeIterator<Item = String>) -> bool {
     // A mark with a title takes about this many bytes besides the text.
-    const MARKUP: usize = 70;
-    n_marks * MARKUP + text_bytes <= MOST_HOVER_BYTES
+    const MARKUP: usize = 80;
+    let mut room = MOST_HOVER_BYTES.checked_sub(texts.len() * MARKUP);
+    let mut escaped = String::new();
+    for text in texts {
+        if room.is_none() {
+            break;
+        }
+        escaped.clear();
+        push_markup(&mut escaped, &text);
+        room = room.and_then(|room| room.checked_sub(escaped.len()));
+    }
+    room.is_some()
 }
 
 /// One mark.
@@ -64,12 +75,12 @@ pub(super) fn push_hovering(
     svg: &mut Svg,
     cue: Cue,
     spots: &[Spot],
-    radius: f64,
+    (radius, opacity): (f64, &str),
     hover: impl Fn(usize) -> String,
 ) {
     svg.element("g")
         .with("fill", cue.color)
-        .with("fill-opacity", ".88")
+        .with("fill-opacity", opacity)
         .with("stroke", CARD)
         .with("stroke-width", ".7")
         .with("class", "marks")
@@ -87,35 +98,49 @@ pub(super) fn push_hovering(
 }
 
 /// The marks of one group in one path, without hover texts.
-pub(super) fn push_dense(svg: &mut Svg, cue: Cue, spots: &[Spot], radius: f64) {
-    let mut path = String::with_capacity(spots.len() * 14);
+///
+/// The path itself is invisible; every corner of it carries the group's mark, so that a mark costs
+/// the bytes of a step and no more, whatever its shape. `stem` must differ between groups.
+pub(super) fn push_dense(
+    svg: &mut Svg,
+    cue: Cue,
+    spots: &[Spot],
+    (radius, opacity): (f64, &str),
+    stem: &str,
+) {
+    let name = Svg::name(stem);
+    svg.element("marker")
+        .with("id", &name)
+        .with("viewBox", "-2 -2 4 4")
+        .with("markerUnits", "userSpaceOnUse")
+        .at("markerWidth", 4.0 * radius)
+        .at("markerHeight", 4.0 * radius)
+        .around(|svg| push_mark(svg, cue, (0.0, 0.0), 1.0, None));
+    let mut path = String::with_capacity(spots.len() * 9);
     let (mut from_x, mut from_y) = (0i64, 0i64);
-    let as_dot = matches!(cue.shape, Shape::Disc | Shape::Square);
-    let steps = corner_steps(cue.shape, radius);
-    for spot in in_rows(spots) {
+    for (place, spot) in in_rows(spots).iter().enumerate() {
         // Steps between whole tenths of a unit are exact, so errors do not add up along the path.
-        let start = if as_dot { (0.0, 0.0) } else { cue.shape.corners()[0] };
-        let x = ((spot.x + start.0 * radius) * 10.0).round() as i64;
-        let y = ((spot.y + start.1 * radius) * 10.0).round() as i64;
-        path.push('m');
-        push_pair(&mut path, (x - from_x) as f64 / 10.0, (y - from_y) as f64 / 10.0);
-        path.push_str(if as_dot { "h0" } else { &steps });
+        let (x, y) = ((spot.x * 10.0).round() as i64, (spot.y * 10.0).round() as i64);
+        let step = tenth((x - from_x) as f64 / 10.0);
+        path.push(if place == 0 { 'm' } else { ' ' });
+        path.push_str(&step);
+        let step = tenth((y - from_y) as f64 / 10.0);
+        if !step.starts_with('-') {
+            path.push(' ');
+        }
+        path.push_str(&step);
         (from_x, from_y) = (x, y);
     }
-    let group = svg.element("path").with("class", "marks").with("d", &path);
-    if as_dot {
-        let cap = if cue.shape == Shape::Disc { "round" } else { "square" };
-        let size = if cue.shape == Shape::Disc { 2.0 } else { 1.78 };
-        group
-            .with("fill", "none")
-            .with("stroke", cue.color)
-            .with("stroke-opacity", ".62")
-            .at("stroke-width", size * radius)
-            .with("stroke-linecap", cap)
-            .done();
-    } else {
-        group.with("fill", cue.color).with("fill-opacity", ".62").done();
-    }
+    let marker = format!("url(#{name})");
+    svg.element("path")
+        .with("class", "marks")
+        .with("d", &path)
+        .with("fill", "none")
+        .with("opacity", opacity)
+        .with("marker-start", &marker)
+        .with("marker-mid", &marker)
+        .with("marker-end", &marker)
+        .done();
 }
 
 /// Counts in hexagons; returns the bounds of the shades, from few to many.

@@ -21,6 +21,8 @@ mod scores;
 mod scree;
 
 mod arrows;
+mod groups;
+mod references;
 mod units;
 
 mod card;
@@ -52,6 +54,9 @@ use crate::error::Result;
 
 /// A chart of an analysis, with its settings.
 ///
+/// Marks carry their unit's name and values as hover texts. A client that inlines the SVG, such
+/// as a notebook converted to HTML, shows them; one that shows it as a picture does not.
+///
 /// Made by [`scree`], [`score_plot`], [`loading_plot`] and [`biplot`]. A setting that does not
 /// fit (a component that does not exist, as many groups as there are not units) is reported by
 /// [`check`](Chart::check) and [`save`](Chart::save), and shown in place of the drawing.
@@ -80,11 +85,43 @@ struct Drawing {
 ///
 /// A dashed line marks the mean variance unless [`reference`](Chart::reference) asks for others.
 /// Below the variances, a strip divides the total variance among the components.
+///
+/// ```
+/// # use semiaxis::nalgebra::dmatrix;
+/// # use semiaxis::components::{Scaling, principal_components};
+/// # use semiaxis::table::DataMatrix;
+/// # let x = DataMatrix::from_unnamed(dmatrix![
+/// #     1.0, 2.0, 0.5; 2.0, 1.0, 0.0; 3.0, 5.0, 1.5; 4.0, 4.0, 1.0; 2.5, 3.0, 2.0])?;
+/// # let pca = principal_components(&x, Scaling::Correlation)?;
+/// use semiaxis::exhibit::{Reference, scree};
+///
+/// let svg = scree(&pca).reference(Reference::BrokenStick).svg();
+/// // One mark with a hover text for each component.
+/// assert_eq!(svg.matches("· variance ").count(), pca.n_components());
+/// # Ok::<(), semiaxis::Error>(())
+/// ```
 pub fn scree(pca: &PrincipalComponents) -> Chart {
     Chart::new(Kind::Scree, Source::without_units(pca))
 }
 
 /// The units in the plane of two components.
+///
+/// ```
+/// # use semiaxis::nalgebra::dmatrix;
+/// # use semiaxis::components::{Scaling, principal_components};
+/// # use semiaxis::table::DataMatrix;
+/// # let x = DataMatrix::from_unnamed(dmatrix![
+/// #     1.0, 2.0, 0.5; 2.0, 1.0, 0.0; 3.0, 5.0, 1.5; 4.0, 4.0, 1.0; 2.5, 3.0, 2.0])?;
+/// # let pca = principal_components(&x, Scaling::Correlation)?;
+/// use semiaxis::exhibit::score_plot;
+///
+/// let chart = score_plot(&pca).components(2, 1).groups(["a", "a", "a", "b", "b"]);
+/// assert!(chart.check().is_ok());
+/// assert!(chart.svg().contains("Scores on components 2 and 1"));
+/// // As many groups as there are units are needed.
+/// assert!(score_plot(&pca).groups(["a", "b"]).check().is_err());
+/// # Ok::<(), semiaxis::Error>(())
+/// ```
 pub fn score_plot(pca: &PrincipalComponents) -> Chart {
     Chart::new(Kind::Scores, Source::with_units(pca))
 }
@@ -92,7 +129,21 @@ pub fn score_plot(pca: &PrincipalComponents) -> Chart {
 /// The variables in the plane of two components: each one's two loadings as an arrow.
 ///
 /// Loadings are the unit-length coefficients, not correlations. Arrows shorter than √(2/p), the
-/// length that each of p variables has when all share both components equally, are drawn faint.
+/// length that each of p variables has when all share both components equally, are drawn thin and grey.
+///
+/// ```
+/// # use semiaxis::nalgebra::dmatrix;
+/// # use semiaxis::components::{Scaling, principal_components};
+/// # use semiaxis::table::DataMatrix;
+/// # let x = DataMatrix::from_unnamed(dmatrix![
+/// #     1.0, 2.0, 0.5; 2.0, 1.0, 0.0; 3.0, 5.0, 1.5; 4.0, 4.0, 1.0; 2.5, 3.0, 2.0])?;
+/// # let pca = principal_components(&x, Scaling::Correlation)?;
+/// use semiaxis::exhibit::loading_plot;
+///
+/// let svg = loading_plot(&pca).labels(["length", "width", "warp"]).svg();
+/// assert!(svg.contains(">width</text>"));
+/// # Ok::<(), semiaxis::Error>(())
+/// ```
 pub fn loading_plot(pca: &PrincipalComponents) -> Chart {
     Chart::new(Kind::Loadings, Source::without_units(pca))
 }
@@ -101,6 +152,20 @@ pub fn loading_plot(pca: &PrincipalComponents) -> Chart {
 ///
 /// Units are drawn at their scores, so that distances between them are kept, and the arrows of
 /// the variables are their loadings, stretched by a factor that the chart states.
+///
+/// ```
+/// # use semiaxis::nalgebra::dmatrix;
+/// # use semiaxis::components::{Scaling, principal_components};
+/// # use semiaxis::table::DataMatrix;
+/// # let x = DataMatrix::from_unnamed(dmatrix![
+/// #     1.0, 2.0, 0.5; 2.0, 1.0, 0.0; 3.0, 5.0, 1.5; 4.0, 4.0, 1.0; 2.5, 3.0, 2.0])?;
+/// # let pca = principal_components(&x, Scaling::Correlation)?;
+/// use semiaxis::exhibit::biplot;
+///
+/// let svg = biplot(&pca).title("Five tiles, three measurements").svg();
+/// assert!(svg.contains("arrows are loadings stretched"));
+/// # Ok::<(), semiaxis::Error>(())
+/// ```
 pub fn biplot(pca: &PrincipalComponents) -> Chart {
     Chart::new(Kind::Biplot, Source::with_units(pca))
 }

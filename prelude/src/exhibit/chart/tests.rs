@@ -364,15 +364,16 @@ fn labels_do_not_overlap_and_stay_on_the_card() {
 fn thousands_of_units_stay_small() {
     for n in [2_000, 20_000, 25_000] {
         let pca = analysis(n, 4);
-        let chart = score_plot(&pca).groups(kilns(n));
-        let svg = chart.svg();
+        let groups: Vec<String> = (0..n).map(|i| format!("group {}", i * 7 % 30)).collect();
+        let svg = score_plot(&pca).groups(&groups).svg();
         assert!(svg.len() < 400_000, "{n} units: {} bytes", svg.len());
         let document = tree(&svg);
         if n <= 20_000 {
-            // In a path of many marks, each starts with a step of its own.
+            // In a path of many marks, each is a step: two numbers, apart by a space or a sign.
             let marks: usize = of_class(&document, "marks")
                 .iter()
-                .map(|path| count(path.attribute("d").unwrap(), "m"))
+                .map(|path| path.attribute("d").unwrap().replace('m', "").replace('-', " -"))
+                .map(|path| path.split_whitespace().count() / 2)
                 .sum();
             assert_eq!(marks, n);
         } else {
@@ -386,6 +387,38 @@ fn thousands_of_units_stay_small() {
                 .map(|count| count.parse::<usize>().unwrap())
                 .sum();
             assert_eq!(counted, n);
+        }
+    }
+}
+
+#[test]
+fn thousands_of_variables_and_awkward_names_stay_small() {
+    let pca = analysis(6, 5_000);
+    let svg = loading_plot(&pca).svg();
+    assert!(svg.len() < 400_000, "{} bytes", svg.len());
+    assert!(svg.contains("The 400 longest of 5000 arrows are drawn."));
+    assert_eq!(of_class(&tree(&svg), "arrows")[0].children().count(), 400);
+    // Each of these characters takes six bytes once it is escaped.
+    let names: Vec<String> = (0..2_000).map(|i| format!("{i}{}", "\"".repeat(90))).collect();
+    let pca = analysis(2_000, 4);
+    let svg = biplot(&pca).labels(&names).groups(kilns(2_000)).svg();
+    assert!(svg.len() < 400_000, "{} bytes", svg.len());
+    assert!(svg.contains("Too many units for hover texts."));
+}
+
+#[test]
+fn extreme_sizes_of_values_are_drawn() {
+    for factor in [1e-120, 1e-9, 1e9, 1e120] {
+        let labels = (0..9).map(|i| format!("tile {i}"));
+        let variables = ["a", "b", "c"].map(String::from);
+        let x = DataMatrix::from_values(mixture(9, 3) * factor, variables, labels).unwrap();
+        let pca = principal_components(&x, Scaling::Covariance).unwrap();
+        for chart in [score_plot(&pca).coverage(0.9), biplot(&pca), scree(&pca), loading_plot(&pca)]
+        {
+            let svg = chart.svg();
+            tree(&svg);
+            assert!(!svg.contains("NaN") && !svg.contains("inf\""), "{factor}");
+            assert!(svg.len() < 40_000, "{factor}: {}", svg.len());
         }
     }
 }

@@ -7,7 +7,7 @@
 use super::{Align, Look, ShownRow, Table, TableColumn, rows_between};
 use crate::exhibit::text::{console_width, shortened, visible};
 
-const MOST_CELLS: usize = 110;
+const MOST_CELLS: usize = 132;
 const MOST_CHARACTERS: usize = 32;
 const BETWEEN: usize = 2;
 

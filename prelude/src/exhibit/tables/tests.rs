@@ -118,7 +118,7 @@ fn wide_tables_lose_columns_in_consoles_and_say_how_many() {
         table = table.column(TableColumn::numbers(heading, [1.5, 2.5], NumberFormat::Stored(4)));
     }
     let plain = table.plain();
-    assert!(plain.lines().all(|line| console_width(line) <= 110), "{plain}");
+    assert!(plain.lines().all(|line| console_width(line) <= 132), "{plain}");
     let shown = plain.matches("column ").count();
     assert!(shown >= 6, "{plain}");
     assert!(plain.contains("column 1 ") && plain.contains("column 60"));

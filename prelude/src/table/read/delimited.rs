@@ -4,7 +4,9 @@ use std::io::Cursor;
 use std::path::Path;
 use std::sync::Arc;
 
-use polars::prelude::{Column, DataFrame, DataType, IntoColumn, NamedFrom, Series, StringChunked};
+use polars::prelude::{
+    Column, DataFrame, DataType, IntoColumn, NamedFrom, PlSmallStr, Series, StringChunked,
+};
 use polars_io::SerReader;
 use polars_io::prelude::{CsvParseOptions, CsvReadOptions, NullValues};
 
@@ -97,13 +99,10 @@ fn name_columns(path: &Path, header: &mut [String], options: &TableOptions) -> R
     check_names(header)
 }
 
-/// The words for a missing value. The reader compares them before it takes quotes off, so each
-/// stands there quoted too.
-fn missing_words(options: &TableOptions) -> Vec<polars::prelude::PlSmallStr> {
+/// The words for a missing value; the reader compares them with a field without its quotes.
+fn missing_words(options: &TableOptions) -> Vec<PlSmallStr> {
     let words = MISSING.iter().copied().chain(options.missing.iter().map(String::as_str));
-    std::iter::once("\"\"".into())
-        .chain(words.flat_map(|word| [word.into(), format!("\"{word}\"").into()]))
-        .collect()
+    words.map(PlSmallStr::from).collect()
 }
 
 /// Turns text that is numbers or dates throughout into what it is.

@@ -41,10 +41,10 @@ pub(super) fn check_text(path: &Path, bytes: &[u8]) -> Result<usize> {
     const UTF_8_MARK: &[u8] = b"\xEF\xBB\xBF";
     let start = if bytes.starts_with(UTF_8_MARK) { UTF_8_MARK.len() } else { 0 };
     let text = &bytes[start..];
-    let control = |byte: &u8| matches!(byte, 0..=8 | 14..=31 | 127);
-    let place = match (text.iter().position(|byte| control(byte)), std::str::from_utf8(text)) {
+    let place = match (first_control(text), std::str::from_utf8(text)) {
         (control, Err(fault)) => {
-            Some(control.map_or(fault.valid_up_to(), |c| c.min(fault.valid_up_to())))
+            let invalid = fault.valid_up_to();
+            Some(control.map_or(invalid, |control| control.min(invalid)))
         }
         (control, Ok(_)) => control,
     };
@@ -58,11 +58,24 @@ pub(super) fn check_text(path: &Path, bytes: &[u8]) -> Result<usize> {
     Ok(start)
 }
 
+/// The place of the first control character other than white space.
+fn first_control(text: &[u8]) -> Option<usize> {
+    // Free of branches within a chunk, so that sound text passes at the speed of vectors.
+    const CHUNK: usize = 256;
+    let is_control = |byte: u8| (byte < 9) | ((byte > 13) & (byte < 32)) | (byte == 127);
+    let holds = |chunk: &[u8]| chunk.iter().fold(false, |found, byte| found | is_control(*byte));
+    let chunk = text.chunks(CHUNK).position(holds)?;
+    let start = chunk * CHUNK;
+    text[start..].iter().position(|byte| is_control(*byte)).map(|place| start + place)
+}
+
 /// Checks the form of delimited text: quotes, header, and as many fields in every row.
 pub(super) fn scan(path: &Path, text: &[u8], delimiter: u8) -> Result<Scan> {
     // Only a file without a single line feed can use carriage returns alone.
     let line_end = if text.contains(&b'\n') || !text.contains(&b'\r') { b'\n' } else { b'\r' };
-    let mut records = Records { path, text, delimiter, line_end, place: 0, line: 1 };
+    let mut special = [false; 256];
+    [delimiter, line_end, b'"'].map(|byte| special[usize::from(byte)] = true);
+    let mut records = Records { path, text, delimiter, line_end, special, place: 0, line: 1 };
     let header = records.next_record()?.expect("text that is not all white space has a record");
     let body_start = header.next;
     let names = fields(&text[header.start..header.end], delimiter);
@@ -118,6 +131,8 @@ struct Records<'a> {
     text: &'a [u8],
     delimiter: u8,
     line_end: u8,
+    /// Whether a byte is the delimiter, the line end or a quote.
+    special: [bool; 256],
     place: usize,
     line: usize,
 }
@@ -131,7 +146,8 @@ impl Records<'_> {
         let mut n_fields = 1;
         let mut at = start;
         let mut field_start = start;
-        while at < text.len() {
+        while let Some(step) = text[at..].iter().position(|byte| self.special[*byte as usize]) {
+            at += step;
             let byte = text[at];
             if byte == self.delimiter {
                 n_fields += 1;
@@ -146,6 +162,9 @@ impl Records<'_> {
                 continue;
             }
             at += 1;
+        }
+        if !text.get(at).is_some_and(|byte| *byte == self.line_end) {
+            at = text.len();
         }
         let mut end = at;
         if self.line_end == b'\n' && end > start && text[end - 1] == b'\r' {
