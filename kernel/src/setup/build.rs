@@ -1,8 +1,8 @@
 //! Cargo's part: building the prelude as a shared library, with every step of it reported.
 //!
-//! Cargo is asked twice. `cargo metadata` says which packages belong to the build, so that progress
-//! has a total and host-only crates can be told from those inside the library; `cargo rustc` builds
-//! and names every file that it made. The flags after `--` reach the prelude alone, so all
+//! Cargo is asked before it builds which packages take part, so that progress has a total and
+//! host-only crates can be told from those inside the library; then `cargo rustc` builds and names
+//! every file that it made. The flags after `--` reach the prelude alone, so all
 //! dependencies are shared with an ordinary release build of the workspace.
 
 use std::collections::{BTreeMap, BTreeSet};
@@ -19,6 +19,7 @@ use serde::Deserialize;
 use super::Place;
 use super::compiler::{Compiler, command_path};
 use super::error::SetupError;
+use super::graph::{Package, Target, inside, metadata, n_compiled};
 use super::progress::SetupEvent;
 
 /// How many of cargo's last lines a failure shows.
@@ -53,64 +54,11 @@ pub struct Artifact {
     pub filenames: Vec<PathBuf>,
 }
 
-/// The part of a package that an artifact was made from.
-#[derive(Debug, Clone, Deserialize)]
-pub struct Target {
-    /// `lib`, `proc-macro`, `custom-build` and so on.
-    pub kind: Vec<String>,
-    /// Its name as a package file writes it.
-    pub name: String,
-}
-
 /// The one setting that tells a build for the host from one for the library.
 #[derive(Debug, Clone, Deserialize)]
 pub struct ArtifactProfile {
     /// The optimisation level; cargo compiles what only build scripts and macros need at 0.
     pub opt_level: String,
-}
-
-/// A package as `cargo metadata` knows it.
-#[derive(Debug, Clone, Deserialize)]
-pub struct Package {
-    /// Cargo's identifier.
-    pub id: String,
-    /// Its name.
-    pub name: String,
-    /// Its version.
-    pub version: String,
-    /// Its manifest.
-    pub manifest_path: PathBuf,
-    /// What it consists of.
-    pub targets: Vec<Target>,
-}
-
-#[derive(Deserialize)]
-struct Metadata {
-    packages: Vec<Package>,
-    resolve: Resolve,
-    target_directory: PathBuf,
-}
-
-#[derive(Deserialize)]
-struct Resolve {
-    nodes: Vec<Node>,
-}
-
-#[derive(Deserialize)]
-struct Node {
-    id: String,
-    deps: Vec<NodeDependency>,
-}
-
-#[derive(Deserialize)]
-struct NodeDependency {
-    pkg: String,
-    dep_kinds: Vec<DependencyKind>,
-}
-
-#[derive(Deserialize)]
-struct DependencyKind {
-    kind: Option<String>,
 }
 
 /// Builds the prelude of a workspace for a kit of a given name (hexadecimal digits).
@@ -135,11 +83,11 @@ pub fn build(
         .ok_or_else(|| SetupError::UnexpectedBuild { what: "the prelude's package".to_owned() })?;
     let packages: BTreeMap<String, Package> =
         metadata.packages.into_iter().map(|package| (package.id.clone(), package)).collect();
-    let all = reachable(&metadata.resolve, &packages, &root, true);
-    let artifacts = run_cargo(&cargo, place, compiler, name, all.len(), progress)?;
+    let total = n_compiled(&cargo, workspace)?;
+    let artifacts = run_cargo(&cargo, place, compiler, name, total, progress)?;
     let dylib = library(&artifacts, &root)
         .ok_or_else(|| SetupError::UnexpectedBuild { what: "the prelude's library".to_owned() })?;
-    let within = reachable(&metadata.resolve, &packages, &root, false);
+    let within = inside(&metadata.resolve, &packages, &root);
     let inside =
         packages.into_iter().filter(|(id, _)| within.contains(id) && *id != root).collect();
     let target_dir = place.target_dir.clone().unwrap_or(metadata.target_directory);
@@ -157,7 +105,7 @@ fn cargo(compiler: &Compiler) -> Result<PathBuf, SetupError> {
 
 /// Cargo in the workspace, without what an outer `cargo run` or `cargo test` tells about itself:
 /// build scripts that watch those variables would otherwise run, and compile, again.
-fn cargo_command(cargo: &Path, workspace: &Path) -> Command {
+pub fn cargo_command(cargo: &Path, workspace: &Path) -> Command {
     let mut command = Command::new(cargo);
     command.current_dir(workspace).stdin(Stdio::null());
     for (name, _) in std::env::vars_os() {
@@ -170,52 +118,6 @@ fn cargo_command(cargo: &Path, workspace: &Path) -> Command {
         }
     }
     command
-}
-
-fn metadata(cargo: &Path, workspace: &Path, compiler: &Compiler) -> Result<Metadata, SetupError> {
-    let output = cargo_command(cargo, workspace)
-        .args(["metadata", "--format-version=1", "--locked", "--filter-platform", compiler.host()])
-        .output()
-        .map_err(SetupError::files("start", cargo))?;
-    if !output.status.success() {
-        let said = String::from_utf8_lossy(&output.stderr);
-        return Err(failed(workspace, output.status.to_string(), said.lines().map(str::to_owned)));
-    }
-    serde_json::from_slice(&output.stdout)
-        .map_err(|error| SetupError::UnexpectedBuild { what: format!("its metadata ({error})") })
-}
-
-/// The packages reachable from one: with `everything`, all that are compiled on the way, otherwise
-/// only those whose code ends in the library (no build scripts, nothing behind a procedural macro).
-fn reachable(
-    resolve: &Resolve,
-    packages: &BTreeMap<String, Package>,
-    root: &str,
-    everything: bool,
-) -> BTreeSet<String> {
-    let nodes: BTreeMap<&str, &Node> =
-        resolve.nodes.iter().map(|node| (node.id.as_str(), node)).collect();
-    let mut found = BTreeSet::new();
-    let mut waiting = vec![root];
-    while let Some(id) = waiting.pop() {
-        let is_macro = packages.get(id).is_some_and(|package| {
-            package.targets.iter().any(|target| target.kind.iter().any(|kind| kind == "proc-macro"))
-        });
-        if (is_macro && !everything) || !found.insert(id.to_owned()) {
-            continue;
-        }
-        for dependency in nodes.get(id).map(|node| node.deps.as_slice()).unwrap_or_default() {
-            let wanted = dependency.dep_kinds.iter().any(|kind| match kind.kind.as_deref() {
-                None => true,
-                Some("build") => everything,
-                Some(_) => false,
-            });
-            if wanted {
-                waiting.push(&dependency.pkg);
-            }
-        }
-    }
-    found
 }
 
 enum Line {
@@ -387,7 +289,8 @@ fn package_name(artifact: &Artifact) -> String {
     }
 }
 
-fn failed(workspace: &Path, status: String, lines: impl Iterator<Item = String>) -> SetupError {
+/// The error for a cargo that refused, with its last words.
+pub fn failed(workspace: &Path, status: String, lines: impl Iterator<Item = String>) -> SetupError {
     let lines: Vec<String> = lines.filter(|line| !is_progress(line)).collect();
     let tail = lines[lines.len().saturating_sub(TAIL)..].to_vec();
     SetupError::BuildFailed { workspace: workspace.to_owned(), status, tail }
@@ -426,56 +329,5 @@ mod tests {
             panic!("a running build reports itself");
         };
         assert_eq!((done, total), (1, 2));
-    }
-
-    #[test]
-    fn what_stands_behind_a_macro_or_a_build_script_is_not_inside_the_library() {
-        let package = |id: &str, kind: &str| Package {
-            id: id.to_owned(),
-            name: id.to_owned(),
-            version: "1.0.0".to_owned(),
-            manifest_path: PathBuf::new(),
-            targets: vec![Target { kind: vec![kind.to_owned()], name: id.to_owned() }],
-        };
-        let node = |id: &str, deps: &[(&str, Option<&str>)]| Node {
-            id: id.to_owned(),
-            deps: deps
-                .iter()
-                .map(|(pkg, kind)| NodeDependency {
-                    pkg: (*pkg).to_owned(),
-                    dep_kinds: vec![DependencyKind { kind: kind.map(str::to_owned) }],
-                })
-                .collect(),
-        };
-        let packages: BTreeMap<String, Package> = [
-            ("root", "lib"),
-            ("inside", "lib"),
-            ("macro", "proc-macro"),
-            ("behind", "lib"),
-            ("script", "lib"),
-            ("test", "lib"),
-        ]
-        .into_iter()
-        .map(|(id, kind)| (id.to_owned(), package(id, kind)))
-        .collect();
-        let resolve = Resolve {
-            nodes: vec![
-                node(
-                    "root",
-                    &[
-                        ("inside", None),
-                        ("macro", None),
-                        ("script", Some("build")),
-                        ("test", Some("dev")),
-                    ],
-                ),
-                node("macro", &[("behind", None)]),
-            ],
-        };
-        let names = |everything| {
-            reachable(&resolve, &packages, "root", everything).into_iter().collect::<Vec<_>>()
-        };
-        assert_eq!(names(false), ["inside", "root"]);
-        assert_eq!(names(true), ["behind", "inside", "macro", "root", "script"]);
     }
 }

@@ -10,11 +10,13 @@ pub mod assemble;
 pub mod build;
 pub mod compiler;
 pub mod error;
+pub mod graph;
 pub mod index;
 pub mod install;
 pub mod kit;
 pub mod progress;
 pub mod stamp;
+mod syntax;
 
 use std::fs::{self, File, TryLockError};
 use std::path::{Path, PathBuf};

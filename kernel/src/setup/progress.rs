@@ -62,8 +62,8 @@ impl fmt::Display for Reason {
     fn fmt(&self, to: &mut fmt::Formatter<'_>) -> fmt::Result {
         match self {
             Reason::FirstBuild => to.write_str(
-                "building the prelude for the first time; \
-                 this takes long once (about half an hour on two cores) and is kept",
+                "building the prelude for the first time; where nothing is compiled yet, \
+                 this takes about half an hour on two cores, once",
             ),
             Reason::SourcesChanged => to.write_str("the prelude changed; building it again"),
             Reason::CompilerChanged { from, to: new } => write!(

@@ -24,7 +24,7 @@ pub(crate) fn nearest<S: AsRef<str>>(
                 return None;
             }
             let edits = edits(&plain_wanted, &plain_name);
-            (edits <= limit && edits < plain_wanted.len().max(1)).then(|| (edits, name))
+            (edits <= limit && edits < plain_wanted.len().max(1)).then_some((edits, name))
         })
         .min_by_key(|(edits, _)| *edits)
         .map(|(_, name)| name.as_ref().to_owned())

@@ -99,7 +99,7 @@ mod tests {
         let (xx, xy, yy) = (s(|x, _| x * x), s(|x, y| x * y), s(|_, y| y * y));
         let determinant = xx * yy - xy * xy;
         // Quantile of chi-square with 2 degrees of freedom at 0.95: 5.991, NIST/SEMATECH
-        // e-Handbook of Statistical Methods, section 1.3.6.7.4, table of upper critical values.
+        // e-Handbook of Statistical Methods, section 1.3.6.7.4, table of upper critical values (from memory).
         for (x, y) in rim(&ellipse, 16) {
             let (dx, dy) = (x - m.0, y - m.1);
             let q = (yy * dx * dx - 2.0 * xy * dx * dy + xx * dy * dy) / determinant;

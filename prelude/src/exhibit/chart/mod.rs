@@ -48,7 +48,7 @@ use self::card::Card;
 use self::settings::Settings;
 use self::source::Source;
 use super::text::visible;
-use super::{Bundle, Exhibit};
+use super::{Bundle, Content, Exhibit};
 use crate::components::PrincipalComponents;
 use crate::error::Result;
 
@@ -74,6 +74,9 @@ enum Kind {
     Loadings,
     Biplot,
 }
+
+// Bytes of SVG from which on a PNG takes too long to be made unasked.
+const LARGE: usize = 100_000;
 
 /// A finished drawing and what it says in words.
 struct Drawing {
@@ -268,11 +271,25 @@ impl Chart {
     }
 }
 
-/// An SVG, and what it says in words for consoles and for clients that show no pictures.
+/// An SVG, what it says in words for consoles, and a PNG.
+///
+/// The PNG is for clients that show no SVG, among them notebook clients that open a notebook they
+/// do not trust. It takes some hundredths of a second, so charts of many units go without.
 impl Exhibit for Chart {
     fn exhibit(&self) -> Bundle {
         match self.draw() {
-            Ok(drawing) => Bundle::new().with_svg(drawing.svg).with_plain(visible(&drawing.words)),
+            Ok(drawing) => {
+                let picture = match drawing.svg.len() < LARGE {
+                    true => save::picture(&drawing.svg).ok(),
+                    false => None,
+                };
+                let words = visible(&drawing.words);
+                let bundle = Bundle::new().with_svg(drawing.svg).with_plain(words);
+                match picture {
+                    Some(bytes) => bundle.with("image/png", Content::Bytes(bytes)),
+                    None => bundle,
+                }
+            }
             Err(error) => {
                 let message = format!("this chart cannot be drawn: {error}");
                 Bundle::new().with_svg(error_card(&error.to_string())).with_plain(message)

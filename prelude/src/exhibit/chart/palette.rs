@@ -192,7 +192,7 @@ mod tests {
     #[test]
     fn groups_stay_apart_in_every_sight() {
         // A just noticeable difference in CIELAB is about 2.3 (Mahy, Van Eycken and Oosterlinck,
-        // 1994); small marks need several times that.
+        // 1994; from memory); small marks need several times that.
         for (name, sight, least) in [
             ("normal", &NORMAL, 28.0),
             ("protanopia", &PROTANOPIA, 18.0),

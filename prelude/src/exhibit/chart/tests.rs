@@ -458,6 +458,19 @@ fn charts_speak_to_screen_readers_and_consoles() {
 }
 
 #[test]
+fn small_charts_come_with_a_picture_of_their_own_size() {
+    let png = |n: usize| {
+        let pca = analysis(n, 4);
+        let bundle = score_plot(&pca).groups(kilns(n)).exhibit();
+        bundle.entries().iter().find(|(mime, _)| mime == "image/png").map(|(_, png)| png.clone())
+    };
+    let Some(Content::Bytes(bytes)) = png(30) else { panic!("no picture") };
+    assert_eq!(&bytes[..8], b"\x89PNG\r\n\x1a\n");
+    assert_eq!(bytes[16..24], [720u32.to_be_bytes(), 560u32.to_be_bytes()].concat());
+    assert_eq!(png(1_000), None);
+}
+
+#[test]
 fn files_are_written_by_extension() {
     let dir = tempfile::tempdir().unwrap();
     let pca = analysis(30, 5);

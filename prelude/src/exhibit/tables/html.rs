@@ -67,7 +67,8 @@ fn draw_header(table: &Table, out: &mut String) {
         push_markup(out, &shortened(&column.heading, MOST_CHARACTERS));
         out.push_str("</bdi>");
         if !column.detail.is_empty() {
-            out.push_str("<small>");
+            // The break serves clients that strip the style block.
+            out.push_str("<br><small>");
             push_markup(out, &column.detail);
             out.push_str("</small>");
         }

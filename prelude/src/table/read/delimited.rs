@@ -75,9 +75,8 @@ pub(super) fn read(
 }
 
 fn checked_delimiter(delimiter: char, decimal_comma: bool) -> Result<u8> {
-    let usable = delimiter.is_ascii()
+    let usable = matches!(delimiter, '\t' | ' '..='~')
         && !delimiter.is_ascii_alphanumeric()
-        && (!delimiter.is_ascii_control() || delimiter == '\t')
         && !matches!(delimiter, '"' | '.' | '-' | '+')
         && !(decimal_comma && delimiter == ',');
     if usable { Ok(delimiter as u8) } else { Err(Error::BadDelimiter { delimiter, decimal_comma }) }

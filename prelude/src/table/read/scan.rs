@@ -74,7 +74,9 @@ pub(super) fn scan(path: &Path, text: &[u8], delimiter: u8) -> Result<Scan> {
     // Only a file without a single line feed can use carriage returns alone.
     let line_end = if text.contains(&b'\n') || !text.contains(&b'\r') { b'\n' } else { b'\r' };
     let mut special = [false; 256];
-    [delimiter, line_end, b'"'].map(|byte| special[usize::from(byte)] = true);
+    for byte in [delimiter, line_end, b'"'] {
+        special[usize::from(byte)] = true;
+    }
     let mut records = Records { path, text, delimiter, line_end, special, place: 0, line: 1 };
     let header = records.next_record()?.expect("text that is not all white space has a record");
     let body_start = header.next;
@@ -163,7 +165,7 @@ impl Records<'_> {
             }
             at += 1;
         }
-        if !text.get(at).is_some_and(|byte| *byte == self.line_end) {
+        if text.get(at) != Some(&self.line_end) {
             at = text.len();
         }
         let mut end = at;
