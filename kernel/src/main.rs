@@ -82,9 +82,7 @@ fn main() -> ExitCode {
         Command::Kernel { connection_file } => {
             session::serve(&connection_file, EngineOptions::default())
         }
-        Command::Install { user: _, prefix } => {
-            install(&prefix.map_or(Place::User, Place::Prefix))
-        }
+        Command::Install { user: _, prefix } => install(&prefix.map_or(Place::User, Place::Prefix)),
         Command::Prepare => prepare(),
         Command::Worker { prelude, commands, reports } => {
             let status = worker::host::main(&prelude, commands, reports);

@@ -5,12 +5,12 @@
 
 use nalgebra::DMatrix;
 use rand_distr::{Distribution, StandardNormal};
-use rand_xoshiro::Xoshiro256PlusPlus;
 use rand_xoshiro::rand_core::SeedableRng;
 
 /// The generator behind everything random in the prelude: xoshiro256++ of D. Blackman and
 /// S. Vigna (2021), "Scrambled linear pseudorandom number generators".
-pub type Generator = Xoshiro256PlusPlus;
+// Handed on, not aliased: a cell must be able to name the type of a variable that holds one.
+pub use rand_xoshiro::Xoshiro256PlusPlus as Generator;
 
 /// A generator seeded by the session and the cell.
 ///

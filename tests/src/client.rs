@@ -101,11 +101,9 @@ pub fn kernel_executable() -> &'static Path {
     static EXECUTABLE: OnceLock<PathBuf> = OnceLock::new();
     EXECUTABLE.get_or_init(|| {
         let test = std::env::current_exe().expect("the test knows its own path");
-        let folder = test
-            .ancestors()
-            .find(|folder| folder.ends_with("deps"))
-            .and_then(Path::parent)
-            .expect("a test executable lies in <target>/<profile>/deps");
+        // A test lies in <profile>/deps, another program of this package beside the kernel.
+        let folder = test.parent().expect("an executable lies in a folder");
+        let folder = if folder.ends_with("deps") { folder.parent().unwrap_or(folder) } else { folder };
         // Where the tests were built, for that need not be where cargo would build by itself.
         let target = folder.parent().expect("a profile's folder lies in the target folder");
         let mut build =

@@ -168,7 +168,9 @@ impl Use {
         let suffix = match &self.leaf.binding {
             Binding::Glob => "::*".to_owned(),
             Binding::Nameless => " as _".to_owned(),
-            Binding::Name(name) if self.leaf.path.rsplit("::").next() == Some(name) => String::new(),
+            Binding::Name(name) if self.leaf.path.rsplit("::").next() == Some(name) => {
+                String::new()
+            }
             Binding::Name(name) => format!(" as {name}"),
         };
         Import::Use { path: self.leaf.path.clone(), suffix, idx }
@@ -190,7 +192,10 @@ pub struct Crate {
 
 impl Account {
     /// The definitions of a name in all spaces.
-    pub fn definitions<'a>(&'a self, name: &'a str) -> impl Iterator<Item = (Namespace, &'a Defined)> + 'a {
+    pub fn definitions<'a>(
+        &'a self,
+        name: &'a str,
+    ) -> impl Iterator<Item = (Namespace, &'a Defined)> + 'a {
         [Namespace::Type, Namespace::Value, Namespace::Macro].into_iter().filter_map(move |space| {
             self.items.get(&(space, name.to_owned())).map(|defined| (space, defined))
         })
@@ -203,7 +208,12 @@ impl Account {
 
     /// Crates of cells that a crate stands on, those that others stand on first, itself last.
     pub fn closure<'a>(&self, roots: impl IntoIterator<Item = &'a String>) -> Vec<String> {
-        fn visit(account: &Account, name: &str, seen: &mut BTreeSet<String>, order: &mut Vec<String>) {
+        fn visit(
+            account: &Account,
+            name: &str,
+            seen: &mut BTreeSet<String>,
+            order: &mut Vec<String>,
+        ) {
             if !seen.insert(name.to_owned()) {
                 return;
             }
@@ -279,7 +289,8 @@ impl Account {
     pub fn enter(&mut self, home: &Home, part: &Arc<Part>) {
         for (item_idx, item) in part.items.iter().enumerate() {
             for (space, name) in &item.defines {
-                self.uses.retain(|line| !matches!(&line.leaf.binding, Binding::Name(n) if n == name));
+                self.uses
+                    .retain(|line| !matches!(&line.leaf.binding, Binding::Name(n) if n == name));
                 let defined = Defined { home: home.clone(), part: Arc::clone(part), item_idx };
                 self.items.insert((*space, name.clone()), defined);
             }

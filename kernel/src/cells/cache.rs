@@ -86,7 +86,12 @@ impl Cache {
     ///
     /// # Errors
     /// When the account cannot be written or the folder not be renamed.
-    pub fn keep(&self, crate_name: &str, workplace: tempfile::TempDir, entry: &Entry) -> io::Result<()> {
+    pub fn keep(
+        &self,
+        crate_name: &str,
+        workplace: tempfile::TempDir,
+        entry: &Entry,
+    ) -> io::Result<()> {
         let keep = || {
             std::fs::write(workplace.path().join(ACCOUNT), serde_json::to_vec(entry)?)?;
             let folder = self.folder(crate_name);
@@ -120,7 +125,10 @@ impl Cache {
         for stamp in folders(all) {
             for shelf in folders(&stamp) {
                 // A workplace belongs to a kernel that is compiling, unless it was left by a crash.
-                if shelf.file_name().is_some_and(|name| name.to_string_lossy().starts_with(WORKPLACE)) {
+                if shelf
+                    .file_name()
+                    .is_some_and(|name| name.to_string_lossy().starts_with(WORKPLACE))
+                {
                     if is_old(&shelf) {
                         let _ = std::fs::remove_dir_all(&shelf);
                     }
@@ -154,7 +162,8 @@ fn is_old(path: &Path) -> bool {
 
 /// `$XDG_CACHE_HOME`, or `.cache` in the home folder, or the system's folder for passing things.
 fn user_folder() -> PathBuf {
-    let named = |name: &str| std::env::var_os(name).map(PathBuf::from).filter(|path| path.is_absolute());
+    let named =
+        |name: &str| std::env::var_os(name).map(PathBuf::from).filter(|path| path.is_absolute());
     named("XDG_CACHE_HOME")
         .or_else(|| named("HOME").map(|home| home.join(".cache")))
         .unwrap_or_else(std::env::temp_dir)

@@ -9,16 +9,20 @@ use annotate_snippets::{AnnotationKind, Group, Level, Renderer, Snippet};
 
 use super::account::{Absent, Account};
 use super::header::HeaderFault;
-use super::parse::Namespace;
 use super::rustc::{Answer, Said};
-use super::source::{CellText, Generated, Origin, Place, line_of};
+use super::source::{CellText, Generated, Origin, Place};
 use super::types::CellFailure;
 
 /// More than this many errors help nobody.
 const MOST_ERRORS: usize = 12;
 
 /// The failure of a cell that does not compile.
-pub fn compile_failure(answer: &Answer, text: &Generated, account: &Account, file: &str) -> CellFailure {
+pub fn compile_failure(
+    answer: &Answer,
+    text: &Generated,
+    account: &Account,
+    file: &str,
+) -> CellFailure {
     let mut errors: Vec<&Said> = answer.errors().collect();
     // What an error in the cell brings about in the text around it is no news.
     if errors.iter().any(|said| primary(said, text, file).is_some()) {
@@ -54,7 +58,11 @@ pub fn header_failure(cell: &Arc<CellText>, fault: &HeaderFault) -> CellFailure 
 }
 
 /// The failure of a cell whose header names crates that cannot be had.
-pub fn dependencies_failure(cell: &Arc<CellText>, header: Range<usize>, words: &str) -> CellFailure {
+pub fn dependencies_failure(
+    cell: &Arc<CellText>,
+    header: Range<usize>,
+    words: &str,
+) -> CellFailure {
     // The line that names the table, or the whole header's first line.
     let table = cell.text[header.clone()].find("[dependencies]").map(|at| header.start + at);
     let start = table.unwrap_or(header.start);
@@ -112,9 +120,9 @@ fn headline(said: &Said) -> String {
 
 fn primary(said: &Said, text: &Generated, file: &str) -> Option<Place> {
     let mut places = said.spans.iter().filter(|span| span.is_primary);
-    places.find_map(|span| place_of(span, text, file)).or_else(|| {
-        said.spans.iter().find_map(|span| place_of(span, text, file))
-    })
+    places
+        .find_map(|span| place_of(span, text, file))
+        .or_else(|| said.spans.iter().find_map(|span| place_of(span, text, file)))
 }
 
 fn place_of(span: &super::rustc::Span, text: &Generated, file: &str) -> Option<Place> {
@@ -140,7 +148,8 @@ fn render(said: &Said, text: &Generated, account: &Account, file: &str) -> Strin
         main = main.element(snippet(cell, marks));
     }
     let mut groups = Vec::new();
-    let children: Vec<_> = said.children.iter().map(|child| (child, self::places(child, text, file))).collect();
+    let children: Vec<_> =
+        said.children.iter().map(|child| (child, self::places(child, text, file))).collect();
     for (child, child_places) in &children {
         let level = match child.level.as_str() {
             "help" => Level::HELP,
@@ -197,7 +206,9 @@ fn places(said: &Said, text: &Generated, file: &str) -> Vec<(Arc<CellText>, Vec<
 }
 
 fn has_news(places: &[(Arc<CellText>, Vec<Mark>)]) -> bool {
-    places.iter().any(|(_, marks)| marks.iter().any(|mark| mark.label.is_some() || mark.instead.is_some()))
+    places
+        .iter()
+        .any(|(_, marks)| marks.iter().any(|mark| mark.label.is_some() || mark.instead.is_some()))
 }
 
 fn snippet<'a>(cell: &'a CellText, marks: &'a [Mark]) -> annotate_snippets::Element<'a> {
@@ -236,6 +247,8 @@ fn advice(said: &Said, text: &Generated, account: &Account, file: &str) -> Vec<S
             for name in quoted(&said.message) {
                 if let Some(absent) = account.absent.get(name) {
                     advice.push(why_absent(name, absent));
+                } else if let Some((near, cell)) = nearest(account, name) {
+                    advice.push(format!("cell [{cell}] has `{near}`"));
                 }
             }
             if code == "E0433" && advice.is_empty() && said.message.contains("crate or module") {
@@ -289,6 +302,31 @@ fn advice(said: &Said, text: &Generated, account: &Account, file: &str) -> Vec<S
     advice
 }
 
+/// The variable or item whose name differs from this one by a slip, and its cell.
+fn nearest<'a>(account: &'a Account, name: &str) -> Option<(&'a str, u32)> {
+    let variables = account.variables.iter().map(|(known, v)| (known.as_str(), v.cell));
+    let items = account.items.iter().map(|((_, known), d)| (known.as_str(), d.part.cell.number));
+    let near = variables.chain(items).map(|(known, cell)| (slips(name, known), known, cell));
+    let allowed = if name.chars().count() < 4 { 1 } else { 2 };
+    let best = near.filter(|(slips, known, _)| *slips <= allowed && *known != name).min();
+    best.map(|(_, known, cell)| (known, cell))
+}
+
+/// How many letters must be put in, taken out or replaced to make one word of the other.
+fn slips(a: &str, b: &str) -> usize {
+    let b: Vec<char> = b.chars().collect();
+    let mut row: Vec<usize> = (0..=b.len()).collect();
+    for (idx, left) in a.chars().enumerate() {
+        let mut diagonal = std::mem::replace(&mut row[0], idx + 1);
+        for (at, right) in b.iter().enumerate() {
+            let replaced = diagonal + usize::from(left != *right);
+            diagonal = row[at + 1];
+            row[at + 1] = replaced.min(diagonal + 1).min(row[at] + 1);
+        }
+    }
+    row[b.len()]
+}
+
 fn labels(said: &Said) -> impl Iterator<Item = &str> {
     let children = said.children.iter().map(|child| child.message.as_str());
     said.spans.iter().filter_map(|span| span.label.as_deref()).chain(children)
@@ -309,7 +347,9 @@ fn name_the_crate(said: &Said) -> String {
         .or_else(|| quoted(&said.message).next())
         .and_then(|path| path.split("::").next())
         .unwrap_or("name");
-    format!("a crate from the registry is named in the header of a cell: a line `---`, `[dependencies]`, `{name} = \"1\"` with its version, a line `---`")
+    format!(
+        "a crate from the registry is named in the header of a cell: a line `---`, `[dependencies]`, `{name} = \"1\"` with its version, a line `---`"
+    )
 }
 
 /// Why a name stands for nothing any more, in words.
@@ -319,13 +359,15 @@ pub fn why_absent(name: &str, absent: &Absent) -> String {
         Absent::Borrowing { cell } => format!(
             "`{name}` borrowed from another value and ended with cell [{cell}]; `.clone()` or `.to_owned()` there would make it last"
         ),
-        Absent::Nameless { cell, type_text } => format!(
-            "`{name}` ended with cell [{cell}]: {}", nameless_words(type_text)
-        ),
-        Absent::Redefined { cell, type_name } => format!(
-            "`{name}` was dropped when cell [{cell}] redefined its type `{type_name}`"
-        ),
-        Absent::Lost { cell } => format!("`{name}` was lost with the worker; cell [{cell}] makes it again"),
+        Absent::Nameless { cell, type_text } => {
+            format!("`{name}` ended with cell [{cell}]: {}", nameless_words(type_text))
+        }
+        Absent::Redefined { cell, type_name } => {
+            format!("`{name}` was dropped when cell [{cell}] redefined its type `{type_name}`")
+        }
+        Absent::Lost { cell } => {
+            format!("`{name}` was lost with the worker; cell [{cell}] makes it again")
+        }
     }
 }
 
@@ -334,19 +376,13 @@ pub fn nameless_words(type_text: &str) -> String {
     if type_text.starts_with("{closure") {
         "a closure's type has no name; box it (`Box<dyn Fn(f64) -> f64>`), or write it as a function".to_owned()
     } else if type_text.starts_with("fn(") && type_text.contains('{') {
-        "a function's own type has no name; give the variable a type such as `fn(f64) -> f64`".to_owned()
+        "a function's own type has no name; give the variable a type such as `fn(f64) -> f64`"
+            .to_owned()
     } else if type_text.contains("{closure") || type_text.contains("impl ") {
         "its type has no name that another cell could write; collect the values (`.collect::<Vec<_>>()`), or box it (`Box<dyn …>`)".to_owned()
     } else {
         format!("its type cannot be named from another cell: {type_text}")
     }
-}
-
-/// Names near to one that is not known, for names that only the account can know.
-pub fn is_known(account: &Account, name: &str) -> bool {
-    account.variables.contains_key(name)
-        || account.items.contains_key(&(Namespace::Type, name.to_owned()))
-        || account.items.contains_key(&(Namespace::Value, name.to_owned()))
 }
 
 /// The failure of a running cell: the words, the line of the cell, the notes.
@@ -375,7 +411,22 @@ fn word_at(text: &str, start: usize) -> Range<usize> {
     start..start + length
 }
 
-/// The line of a place, for messages of one line.
-pub fn line_in(cell: &CellText, at: usize) -> u32 {
-    line_of(&cell.text, at)
+#[cfg(test)]
+mod tests {
+    use super::*;
+
+    #[test]
+    fn slips_are_counted_letter_by_letter() {
+        assert_eq!(slips("thicknes", "thickness"), 1);
+        assert_eq!(slips("kitten", "sitting"), 3);
+        assert_eq!(slips("", "abc"), 3);
+        assert_eq!(slips("same", "same"), 0);
+    }
+
+    #[test]
+    fn a_word_is_marked_whole_and_anything_else_by_its_first_character() {
+        assert_eq!(word_at("let größe = 1", 4), 4..11);
+        assert_eq!(word_at("a + b", 2), 2..3);
+        assert_eq!(word_at("a", 1), 1..1);
+    }
 }

@@ -93,6 +93,7 @@ impl Extras {
             named.extend(set.named.iter());
             arguments.push(joined("-Ldependency=", &set.folder));
             if let (Some(name), Some(library)) = (&set.crate_name, &set.library) {
+                arguments.push(joined("-Ldependency=", library.parent().unwrap_or(&set.folder)));
                 arguments.push("--extern".into());
                 arguments.push(joined(&format!("{name}="), library));
             }
@@ -158,7 +159,8 @@ struct Artifact {
 impl Artifact {
     /// The file by which another crate names this one.
     fn main_file(&self) -> Option<&PathBuf> {
-        let ends = |end: &str| self.files.iter().find(|file| file.extension().is_some_and(|e| e == end));
+        let ends =
+            |end: &str| self.files.iter().find(|file| file.extension().is_some_and(|e| e == end));
         if self.is_macro { ends("so") } else { ends("rlib") }
     }
 
@@ -169,7 +171,9 @@ impl Artifact {
 
 impl Project<'_> {
     async fn build(&self, hash: &str, all: &BTreeMap<String, String>) -> Result<Set, String> {
-        let trouble = |error: std::io::Error| format!("the crates cannot be built in {}: {error}", self.folder.display());
+        let trouble = |error: std::io::Error| {
+            format!("the crates cannot be built in {}: {error}", self.folder.display())
+        };
         std::fs::create_dir_all(self.folder).map_err(trouble)?;
         // Two kernels that want the same crates build them once.
         let lock = std::fs::File::create(self.folder.join("lock")).map_err(trouble)?;
@@ -198,8 +202,11 @@ impl Project<'_> {
         };
         let artifacts: Vec<Artifact> = lines.iter().filter_map(|line| artifact(line)).collect();
         let set = self.assemble(hash, all, &graph, &artifacts).await?;
-        std::fs::write(self.folder.join(ACCOUNT), serde_json::to_vec(&set).map_err(|e| e.to_string())?)
-            .map_err(trouble)?;
+        std::fs::write(
+            self.folder.join(ACCOUNT),
+            serde_json::to_vec(&set).map_err(|e| e.to_string())?,
+        )
+        .map_err(trouble)?;
         Ok(set)
     }
 
@@ -215,17 +222,22 @@ impl Project<'_> {
 
     /// Asks for crates that the prelude stands on too with the features that it has them with.
     fn pins(&self, graph: &Value) -> String {
-        let mut known: BTreeMap<(&str, &str), Vec<&crate::setup::kit::KitPackage>> = BTreeMap::new();
+        let mut known: BTreeMap<(&str, &str), Vec<&crate::setup::kit::KitPackage>> =
+            BTreeMap::new();
         for package in &self.kit.packages {
             known.entry((&package.name, &package.version)).or_default().push(package);
         }
         let mut pins = String::new();
         for (idx, package) in graph["packages"].as_array().into_iter().flatten().enumerate() {
-            let key = (package["name"].as_str().unwrap_or_default(), package["version"].as_str().unwrap_or_default());
+            let key = (
+                package["name"].as_str().unwrap_or_default(),
+                package["version"].as_str().unwrap_or_default(),
+            );
             // A crate that is there twice is there for build scripts or macros too, and which is
             // which cannot be told.
             let Some([one]) = known.get(&key).map(Vec::as_slice) else { continue };
-            let features: Vec<String> = one.features.iter().map(|feature| format!("{feature:?}")).collect();
+            let features: Vec<String> =
+                one.features.iter().map(|feature| format!("{feature:?}")).collect();
             pins.push_str(&format!(
                 "shared-{idx} = {{ package = {:?}, version = \"={}\", default-features = false, features = [{}] }}\n",
                 one.name,
@@ -266,7 +278,10 @@ impl Project<'_> {
             while let Ok(Some(line)) = lines.next_line().await {
                 if tell && let Some(words) = progress(&line) {
                     let text = format!("\u{1b}[2m{words}\u{1b}[0m\n");
-                    let _ = self.events.send(CellEvent::Stream { name: StreamName::Stderr, text }).await;
+                    let _ = self
+                        .events
+                        .send(CellEvent::Stream { name: StreamName::Stderr, text })
+                        .await;
                 }
                 all.push(line);
             }
@@ -292,13 +307,18 @@ impl Project<'_> {
         artifacts: &[Artifact],
     ) -> Result<Set, String> {
         let files = self.folder.join("crates");
-        let trouble = |error: std::io::Error| format!("the crates cannot be kept in {}: {error}", files.display());
+        let trouble = |error: std::io::Error| {
+            format!("the crates cannot be kept in {}: {error}", files.display())
+        };
         std::fs::create_dir_all(&files).map_err(trouble)?;
-        let in_prelude: BTreeSet<&str> = self.kit.packages.iter().map(|package| package.artifact.as_str()).collect();
+        let in_prelude: BTreeSet<&str> =
+            self.kit.packages.iter().map(|package| package.artifact.as_str()).collect();
         let earlier = |stem: &str| self.extras.sets.iter().find(|set| set.stems.contains(stem));
         let (mut stems, mut file_of) = (BTreeSet::new(), BTreeMap::new());
         for artifact in artifacts {
-            let (Some(main), Some(stem)) = (artifact.main_file(), artifact.stem()) else { continue };
+            let (Some(main), Some(stem)) = (artifact.main_file(), artifact.stem()) else {
+                continue;
+            };
             let home = if in_prelude.contains(stem.as_str()) {
                 let end = if artifact.is_macro { "so" } else { "rmeta" };
                 self.kit.dependencies.join(format!("{stem}.{end}"))
@@ -307,7 +327,9 @@ impl Project<'_> {
             } else {
                 let home = files.join(main.file_name().unwrap_or_default());
                 if !home.exists() {
-                    std::fs::hard_link(main, &home).or_else(|_| std::fs::copy(main, &home).map(|_| ())).map_err(trouble)?;
+                    std::fs::hard_link(main, &home)
+                        .or_else(|_| std::fs::copy(main, &home).map(|_| ()))
+                        .map_err(trouble)?;
                 }
                 if !artifact.is_macro {
                     stems.insert(stem);
@@ -319,8 +341,13 @@ impl Project<'_> {
         let mut named = BTreeMap::new();
         for (dependency, package) in direct(graph) {
             if all.contains_key(&dependency) || all.contains_key(&dependency.replace('_', "-")) {
-                let file = file_of.iter().find(|((id, _), _)| *id == package).map(|(_, file)| file.clone());
-                let file = file.ok_or_else(|| format!("`{dependency}` is no library, so a cell cannot use it"))?;
+                let file = file_of
+                    .iter()
+                    .find(|((id, _), _)| *id == package)
+                    .map(|(_, file)| file.clone());
+                let file = file.ok_or_else(|| {
+                    format!("`{dependency}` is no library, so a cell cannot use it")
+                })?;
                 named.insert(dependency, file);
             }
         }
@@ -338,15 +365,19 @@ impl Project<'_> {
         let mut text = String::from("extern crate semiaxis as _;\n");
         text.push_str(&self.extras.preamble());
         let mut command = Command::new(&self.kit.rustc);
-        command.current_dir(self.folder).arg("linked.rs").args(["--crate-name", &crate_name]).args([
-            "--edition=2024",
-            "--crate-type=dylib",
-            "-Cprefer-dynamic",
-            "-Cembed-bitcode=no",
-            "--extern",
-        ]);
+        command.current_dir(self.folder).arg("linked.rs").args(["--crate-name", &crate_name]).args(
+            [
+                "--edition=2024",
+                "--crate-type=dylib",
+                "-Cprefer-dynamic",
+                "-Cembed-bitcode=no",
+                "--extern",
+            ],
+        );
         command.arg(joined("semiaxis=", &self.kit.prelude));
-        command.arg(joined("-Ldependency=", &self.kit.dependencies)).arg(joined("-Ldependency=", &set.folder));
+        command
+            .arg(joined("-Ldependency=", &self.kit.dependencies))
+            .arg(joined("-Ldependency=", &set.folder));
         command.args(self.extras.arguments());
         for (name, file) in &set.named {
             if file.extension().is_some_and(|end| end == "rlib") {
@@ -358,9 +389,15 @@ impl Project<'_> {
         }
         std::fs::write(self.folder.join("linked.rs"), text).map_err(|error| error.to_string())?;
         command.env_remove("LD_LIBRARY_PATH").stdin(Stdio::null()).kill_on_drop(true);
-        let output = command.output().await.map_err(|error| format!("the compiler could not be run: {error}"))?;
+        let output = command
+            .output()
+            .await
+            .map_err(|error| format!("the compiler could not be run: {error}"))?;
         if !output.status.success() {
-            return Err(format!("the crates could not be linked: {}", String::from_utf8_lossy(&output.stderr)));
+            return Err(format!(
+                "the crates could not be linked: {}",
+                String::from_utf8_lossy(&output.stderr)
+            ));
         }
         set.crate_name = Some(crate_name);
         set.library = Some(library);
@@ -376,7 +413,8 @@ fn direct(graph: &Value) -> Vec<(String, String)> {
     let nodes = graph["resolve"]["nodes"].as_array();
     let node = nodes.into_iter().flatten().find(|node| node["id"] == root);
     let deps = node.and_then(|node| node["deps"].as_array()).into_iter().flatten();
-    deps.filter_map(|dep| Some((dep["name"].as_str()?.to_owned(), dep["pkg"].as_str()?.to_owned()))).collect()
+    deps.filter_map(|dep| Some((dep["name"].as_str()?.to_owned(), dep["pkg"].as_str()?.to_owned())))
+        .collect()
 }
 
 fn artifact(line: &str) -> Option<Artifact> {
@@ -384,7 +422,8 @@ fn artifact(line: &str) -> Option<Artifact> {
     if message["reason"] != "compiler-artifact" {
         return None;
     }
-    let kinds: Vec<&str> = message["target"]["kind"].as_array()?.iter().filter_map(Value::as_str).collect();
+    let kinds: Vec<&str> =
+        message["target"]["kind"].as_array()?.iter().filter_map(Value::as_str).collect();
     let is_macro = kinds.contains(&"proc-macro");
     if !is_macro && !kinds.iter().any(|kind| kind.contains("lib")) {
         return None;
@@ -392,7 +431,12 @@ fn artifact(line: &str) -> Option<Artifact> {
     Some(Artifact {
         package: message["package_id"].as_str()?.to_owned(),
         crate_name: message["target"]["name"].as_str()?.replace('-', "_"),
-        files: message["filenames"].as_array()?.iter().filter_map(Value::as_str).map(PathBuf::from).collect(),
+        files: message["filenames"]
+            .as_array()?
+            .iter()
+            .filter_map(Value::as_str)
+            .map(PathBuf::from)
+            .collect(),
         is_macro,
     })
 }
@@ -401,13 +445,16 @@ fn artifact(line: &str) -> Option<Artifact> {
 fn progress(line: &str) -> Option<String> {
     let message: Value = serde_json::from_str(line).ok()?;
     let compiled = message["reason"] == "compiler-artifact" && message["fresh"] == false;
-    let name = message["target"]["name"].as_str().filter(|name| compiled && *name != "build-script-build")?;
+    let name = message["target"]["name"]
+        .as_str()
+        .filter(|name| compiled && *name != "build-script-build")?;
     (name != "cell_extras").then(|| format!("compiled the crate {name}"))
 }
 
 fn rendered(line: &str) -> Option<String> {
     let message: Value = serde_json::from_str(line).ok()?;
-    let is_error = message["reason"] == "compiler-message" && message["message"]["level"] == "error";
+    let is_error =
+        message["reason"] == "compiler-message" && message["message"]["level"] == "error";
     is_error.then(|| message["message"]["rendered"].as_str().map(str::to_owned))?
 }
 

@@ -154,16 +154,22 @@ impl Plan<'_> {
     pub fn absorbed_home(&self, home: &Home) -> Option<&str> {
         // The module of a part follows from the crate that it was first the root of.
         let module = home.module.clone().unwrap_or_else(|| module_of(&home.crate_name));
-        let mut modules = self.absorption.parts.iter().map(|absorbed| absorbed.part.module.as_str());
+        let mut modules =
+            self.absorption.parts.iter().map(|absorbed| absorbed.part.module.as_str());
         modules.find(|name| *name == module)
     }
 
     /// Whether a name that an absorbed part imports is one that this cell defines anew.
     fn supersedes(&self, home: &Home, name: &str) -> bool {
-        let module = |home: &Home| home.module.clone().unwrap_or_else(|| module_of(&home.crate_name));
+        let module =
+            |home: &Home| home.module.clone().unwrap_or_else(|| module_of(&home.crate_name));
         self.absorption.replaces
             && !self.absorption.is_empty()
-            && self.absorption.superseded.iter().any(|((_, n), old)| n == name && module(old) == module(home))
+            && self
+                .absorption
+                .superseded
+                .iter()
+                .any(|((_, n), old)| n == name && module(old) == module(home))
     }
 
     /// The crates of cells that the text names.
@@ -175,7 +181,8 @@ impl Plan<'_> {
             Lent::Static(home, _) => Some(home.crate_name.clone()),
             Lent::FromCell(_) => None,
         }));
-        let imports = self.imports.iter().chain(parts.flat_map(|absorbed| absorbed.part.imports.iter()));
+        let imports =
+            self.imports.iter().chain(parts.flat_map(|absorbed| absorbed.part.imports.iter()));
         for import in imports {
             if let Import::Item { home, name, .. } = import
                 && self.absorbed_home(home).is_none()
@@ -210,7 +217,8 @@ fn entry(text: &mut Generated, plan: &Plan<'_>, without: &Without) {
         entry_symbol(NAME_HERE)
     ));
     for (name, variable) in &plan.takes {
-        let line = format!("if !__semiaxis.ready::<{}>({name:?}) {{ return; }}\n", variable.type_text);
+        let line =
+            format!("if !__semiaxis.ready::<{}>({name:?}) {{ return; }}\n", variable.type_text);
         text.of(Origin::Take(name.clone()), &line);
     }
     for (name, variable) in &plan.takes {

@@ -111,7 +111,8 @@ fn find_fence(cell: &str) -> Result<Option<Fence>, HeaderFault> {
     };
     let dashes = opening.chars().take_while(|c| *c == '-').count();
     let info = opening[dashes..].trim();
-    let fault = |message: String| HeaderFault { message, range: start..start + opening.trim_end().len() };
+    let fault =
+        |message: String| HeaderFault { message, range: start..start + opening.trim_end().len() };
     if !info.is_empty() && info != "cargo" {
         return Err(fault(format!(
             "the opening fence of a header is followed by nothing or by `cargo`, not by `{info}`"
@@ -126,7 +127,9 @@ fn find_fence(cell: &str) -> Result<Option<Fence>, HeaderFault> {
                 return Ok(Some(Fence { toml: toml_start..at, end: at + line.len() }));
             }
             return Err(HeaderFault {
-                message: format!("the closing fence must be a line of {dashes} dashes and nothing else"),
+                message: format!(
+                    "the closing fence must be a line of {dashes} dashes and nothing else"
+                ),
                 range: at..at + trimmed.len(),
             });
         }

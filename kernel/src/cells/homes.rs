@@ -108,9 +108,16 @@ fn twin<'a>(account: &'a Account, item: &Item) -> Option<Twin<'a>> {
         ItemForm::Impl(_) => account.crates.iter().find_map(|(name, found)| {
             let live = |part: &&Arc<Part>| {
                 let home = home_in(name, found, part);
-                account.items.values().any(|defined| defined.home == home || defined.home.crate_name == *name)
+                account
+                    .items
+                    .values()
+                    .any(|defined| defined.home == home || defined.home.crate_name == *name)
             };
-            let part = found.parts.iter().filter(live).find(|part| part.items.iter().any(|other| other.tokens == item.tokens))?;
+            let part = found
+                .parts
+                .iter()
+                .filter(live)
+                .find(|part| part.items.iter().any(|other| other.tokens == item.tokens))?;
             Some(Twin { home: home_in(name, found, part), part })
         }),
         _ => {
@@ -134,17 +141,24 @@ pub fn home_in(crate_name: &str, found: &super::account::Crate, part: &Arc<Part>
 impl Twin<'_> {
     /// Whether a name means now what it meant in the part.
     fn resolves_as_before(&self, account: &Account, name: &str) -> bool {
-        let now: Vec<Home> = account.definitions(name).map(|(_, defined)| defined.home.clone()).collect();
-        let in_part = self.part.items.iter().any(|item| item.defines.iter().any(|(_, n)| n == name));
+        let now: Vec<Home> =
+            account.definitions(name).map(|(_, defined)| defined.home.clone()).collect();
+        let in_part =
+            self.part.items.iter().any(|item| item.defines.iter().any(|(_, n)| n == name));
         if in_part {
-            return now.is_empty() || now.iter().all(|home| *home == self.home || account.present(&self.home) == *home);
+            return now.is_empty()
+                || now
+                    .iter()
+                    .all(|home| *home == self.home || account.present(&self.home) == *home);
         }
         let mut then = Vec::new();
         let mut line_then = Vec::new();
         for import in &self.part.imports {
             match import {
                 Import::Item { home, name: n, .. } if n == name => then.push(account.present(home)),
-                Import::Use { path, suffix, .. } if binds(path, suffix) == Some(name) => line_then.push(path.as_str()),
+                Import::Use { path, suffix, .. } if binds(path, suffix) == Some(name) => {
+                    line_then.push(path.as_str())
+                }
                 _ => {}
             }
         }
@@ -214,18 +228,25 @@ pub fn absorb(account: &Account, items: &[Item], with_dependents: bool) -> Absor
 /// The crates in which the orphan rule would have an impl block; none if it may stay in its cell.
 fn homes_wanted(account: &Account, items: &[Item], block: &ImplBlock) -> BTreeSet<String> {
     let own = |name: &str| {
-        items.iter().any(|item| item.defines.iter().any(|(space, n)| *space == Namespace::Type && n == name))
+        items.iter().any(|item| {
+            item.defines.iter().any(|(space, n)| *space == Namespace::Type && n == name)
+        })
     };
     let mut heads: Vec<&str> = block.self_head.iter().map(String::as_str).collect();
     if let Some((of_trait, _)) = &block.of_trait {
         heads.push(of_trait);
         heads.extend(block.other_heads.iter().map(String::as_str));
     }
-    let heads: Vec<String> = heads.into_iter().map(|head| through_uses(account, items, head)).collect();
+    let heads: Vec<String> =
+        heads.into_iter().map(|head| through_uses(account, items, head)).collect();
     if heads.iter().any(|head| own(head)) {
         return BTreeSet::new();
     }
-    heads.iter().filter_map(|head| account.defined_type(head)).map(|defined| defined.home.crate_name.clone()).collect()
+    heads
+        .iter()
+        .filter_map(|head| account.defined_type(head))
+        .map(|defined| defined.home.crate_name.clone())
+        .collect()
 }
 
 /// The first segment of the path that a name stands for.
@@ -244,7 +265,10 @@ fn through_uses(account: &Account, items: &[Item], name: &str) -> String {
 }
 
 /// Crates with parts that use a superseded definition and define something that is in force.
-fn users_of(account: &Account, superseded: &BTreeMap<(Namespace, String), Home>) -> BTreeSet<String> {
+fn users_of(
+    account: &Account,
+    superseded: &BTreeMap<(Namespace, String), Home>,
+) -> BTreeSet<String> {
     let mut users = BTreeSet::new();
     for (name, found) in &account.crates {
         for part in &found.parts {
@@ -274,7 +298,10 @@ fn uses_superseded(
 ) -> bool {
     // An impl of the superseded type itself belongs to the old definition and goes with it.
     if let ItemForm::Impl(block) = &item.form
-        && block.self_head.as_ref().is_some_and(|head| superseded.contains_key(&(Namespace::Type, head.clone())))
+        && block
+            .self_head
+            .as_ref()
+            .is_some_and(|head| superseded.contains_key(&(Namespace::Type, head.clone())))
     {
         return false;
     }
@@ -331,7 +358,11 @@ fn prepare(
                 if made_of_absorbed(account, part, item, crates) {
                     absorption.restarted.extend(item.defines.iter().map(|(_, name)| name.clone()));
                 } else {
-                    lent.extend(item.defines.iter().map(|(_, name)| Lent::Static(from.clone(), name.clone())));
+                    lent.extend(
+                        item.defines
+                            .iter()
+                            .map(|(_, name)| Lent::Static(from.clone(), name.clone())),
+                    );
                     continue;
                 }
             }
@@ -360,20 +391,30 @@ fn prepare(
     }
     lent.dedup();
     let module = from.module.clone().unwrap_or_else(|| module_of(&from.crate_name));
-    let part = Part { module, cell: Arc::clone(&part.cell), items: kept, imports: part.imports.clone() };
+    let part =
+        Part { module, cell: Arc::clone(&part.cell), items: kept, imports: part.imports.clone() };
     Absorbed { from: from.clone(), part: Arc::new(part), lent }
 }
 
-fn made_of_absorbed(account: &Account, part: &Part, item: &Item, crates: &BTreeSet<String>) -> bool {
+fn made_of_absorbed(
+    account: &Account,
+    part: &Part,
+    item: &Item,
+    crates: &BTreeSet<String>,
+) -> bool {
     item.mentions.iter().any(|name| {
         let here = part.items.iter().any(|other| {
-            matches!(other.form, ItemForm::Data | ItemForm::Trait(_) | ItemForm::Alias | ItemForm::Module)
-                && other.defines.iter().any(|(_, n)| n == name)
+            matches!(
+                other.form,
+                ItemForm::Data | ItemForm::Trait(_) | ItemForm::Alias | ItemForm::Module
+            ) && other.defines.iter().any(|(_, n)| n == name)
         });
-        here || part.imports.iter().any(|import| matches!(import,
+        here || part.imports.iter().any(|import| {
+            matches!(import,
             Import::Item { home, name: n, .. } if n == name
                 && crates.contains(&account.present(home).crate_name)
-                && account.defined_type(name).is_some()))
+                && account.defined_type(name).is_some())
+        })
     })
 }
 
@@ -417,7 +458,10 @@ fn taint(account: &Account, absorption: &mut Absorption) {
         let mut found = Vec::new();
         for absorbed in &absorption.parts {
             for item in &absorbed.part.items {
-                if !matches!(item.form, ItemForm::Data | ItemForm::Trait(_) | ItemForm::Alias | ItemForm::Module) {
+                if !matches!(
+                    item.form,
+                    ItemForm::Data | ItemForm::Trait(_) | ItemForm::Alias | ItemForm::Module
+                ) {
                     continue;
                 }
                 let made_of = |(home, name): &(Home, String)| {
@@ -427,7 +471,9 @@ fn taint(account: &Account, absorption: &mut Absorption) {
                                 Import::Item { home: h, name: n, .. } if n == name && account.present(h) == *home)))
                 };
                 if absorption.tainted.iter().any(made_of) {
-                    found.extend(item.defines.iter().map(|(_, name)| (absorbed.from.clone(), name.clone())));
+                    found.extend(
+                        item.defines.iter().map(|(_, name)| (absorbed.from.clone(), name.clone())),
+                    );
                 }
             }
         }

@@ -63,7 +63,13 @@ impl VisitMut for Namer<'_> {
     }
 
     fn visit_type_mut(&mut self, ty: &mut syn::Type) {
-        if matches!(ty, syn::Type::ImplTrait(_) | syn::Type::Infer(_) | syn::Type::Macro(_) | syn::Type::Verbatim(_)) {
+        if matches!(
+            ty,
+            syn::Type::ImplTrait(_)
+                | syn::Type::Infer(_)
+                | syn::Type::Macro(_)
+                | syn::Type::Verbatim(_)
+        ) {
             self.nameless = true;
         }
         visit_mut::visit_type_mut(self, ty);
@@ -71,7 +77,12 @@ impl VisitMut for Namer<'_> {
 }
 
 fn spaced(tokens: proc_macro2::TokenStream) -> String {
-    tokens.to_string().replace(" :: ", "::").replace(" < ", "<").replace(" >", ">").replace("& ", "&")
+    tokens
+        .to_string()
+        .replace(" :: ", "::")
+        .replace(" < ", "<")
+        .replace(" >", ">")
+        .replace("& ", "&")
 }
 
 /// A type as a person would read it: without the paths that lead to well-known names.
@@ -112,12 +123,18 @@ mod tests {
         assert_eq!(named("std::vec::Vec<Tile>").as_deref(), Some("std::vec::Vec<cell_2::Tile>"));
         assert_eq!(named("shapes::Circle<f64>").as_deref(), Some("cell_2::shapes::Circle<f64>"));
         assert_eq!(named("cell_1::Tile").as_deref(), Some("cell_1::Tile"));
-        assert_eq!(named("std::boxed::Box<dyn Shape>").as_deref(), Some("std::boxed::Box<dyncell_2::Shape>"));
+        assert_eq!(
+            named("std::boxed::Box<dyn Shape>").as_deref(),
+            Some("std::boxed::Box<dyncell_2::Shape>")
+        );
         assert_eq!(
             named("std::boxed::Box<dyn std::ops::Fn(f64) -> Tile>").as_deref(),
             Some("std::boxed::Box<dynstd::ops::Fn(f64)->cell_2::Tile>")
         );
-        assert_eq!(named("(f64, [u8; 3], &'static str)").as_deref(), Some("(f64,[u8;3],&'staticstr)"));
+        assert_eq!(
+            named("(f64, [u8; 3], &'static str)").as_deref(),
+            Some("(f64,[u8;3],&'staticstr)")
+        );
         assert_eq!(named("()").as_deref(), Some("()"));
     }
 

@@ -11,6 +11,7 @@ use proc_macro2::{TokenStream, TokenTree};
 use quote::ToTokens;
 use syn::visit::{self, Visit};
 
+use super::edits::Edits;
 use super::source::Edit;
 
 /// A cell taken apart. All ranges are bytes of the whole cell.
@@ -197,18 +198,16 @@ fn read_statement(statement: &syn::Stmt, base: usize) -> Statement {
         }
         other => gather(other.to_token_stream(), &mut mentions),
     }
-    let mut edits = Edits { base, edits: Vec::new(), returns: true, constant: false };
+    let mut edits = Edits::new(base, true);
     edits.visit_stmt(statement);
     Statement { range: range_of(statement, base), edits: edits.sorted(), declares, mentions }
 }
 
 fn read_item(item: &syn::Item, base: usize) -> Item {
     let range = range_of(item, base);
-    let mut edits = Edits { base, edits: Vec::new(), returns: false, constant: false };
+    let mut edits = Edits::new(base, false);
     edits.visit_item(item);
-    let mut publish = Publish { base, edits: Vec::new() };
-    publish.item(item);
-    edits.edits.append(&mut publish.edits);
+    edits.publish(item);
     let mut mentions = BTreeSet::new();
     gather(item.to_token_stream(), &mut mentions);
     let (defines, form) = describe(item, base);
@@ -325,11 +324,15 @@ fn flatten(tree: &syn::UseTree, path: &str, leaves: &mut Vec<UseLeaf>) {
         }
         syn::UseTree::Name(name) if name.ident == "self" => {
             let path = path.trim_end_matches("::").to_owned();
-            let bound = path.rsplit("::").next().unwrap_or(&path).trim_start_matches("r#").to_owned();
+            let bound =
+                path.rsplit("::").next().unwrap_or(&path).trim_start_matches("r#").to_owned();
             leaves.push(leaf(path, Binding::Name(bound)));
         }
         syn::UseTree::Name(name) => {
-            leaves.push(leaf(format!("{path}{}", name.ident), Binding::Name(plain_name(&name.ident))));
+            leaves.push(leaf(
+                format!("{path}{}", name.ident),
+                Binding::Name(plain_name(&name.ident)),
+            ));
         }
         syn::UseTree::Rename(rename) => {
             let path = match rename.ident == "self" {
@@ -507,223 +510,7 @@ fn gather_captures(literal: &str, mentions: &mut BTreeSet<String>) {
     }
 }
 
-/// Notes the edits that running text needs: a check in each loop, and the value of early returns.
-struct Edits {
-    base: usize,
-    edits: Vec<Edit>,
-    /// Whether a `return` here leaves the cell.
-    returns: bool,
-    /// Whether this is evaluated by the compiler, where no check can be called.
-    constant: bool,
-}
-
-const CHECK: &str = " ::semiaxis::live::checkpoint();";
-
-impl Edits {
-    fn sorted(mut self) -> Vec<Edit> {
-        self.edits.sort_by_key(|edit| edit.range.start);
-        self.edits
-    }
-
-    fn check(&mut self, body: &syn::Block) {
-        if !self.constant {
-            let brace = body.brace_token.span.open().byte_range();
-            self.edits.push(Edit::insert(self.base + brace.end, CHECK));
-        }
-    }
-
-    fn within(&mut self, returns: bool, constant: bool, visit: impl FnOnce(&mut Self)) {
-        let before = (self.returns, self.constant);
-        (self.returns, self.constant) = (returns, constant);
-        visit(self);
-        (self.returns, self.constant) = before;
-    }
-}
-
-impl Edits {
-    /// `return Ok(…)` and `return Err(…)` leave their other type open, so they are settled here;
-    /// what any other value means is found by its type.
-    fn leave_with(&mut self, value: &syn::Expr) {
-        let range = range_of(value, self.base);
-        let mut insert = |at: usize, text: &str| self.edits.push(Edit::insert(at, text));
-        match called(value) {
-            Some(("Ok", parenthesis)) => {
-                let name = range.start..self.base + parenthesis.start;
-                insert(range.end, "; ::semiaxis::live::left() }");
-                self.edits.push(Edit { range: name, text: " { let _ = ".to_owned() });
-            }
-            Some(("Err", parenthesis)) => {
-                insert(self.base + parenthesis.end, "::semiaxis::live::Failure::from(");
-                insert(range.end - 1, ")");
-            }
-            _ => {
-                insert(range.start, "::semiaxis::leave!(__semiaxis, ");
-                insert(range.end, ")");
-            }
-        }
-    }
-}
-
-/// The name that a call calls, and the bytes of its opening parenthesis.
-fn called(value: &syn::Expr) -> Option<(&'static str, Range<usize>)> {
-    let syn::Expr::Call(call) = value else { return None };
-    let syn::Expr::Path(path) = call.func.as_ref() else { return None };
-    let name = ["Ok", "Err"].into_iter().find(|name| path.path.is_ident(name))?;
-    Some((name, call.paren_token.span.open().byte_range()))
-}
-
-impl<'ast> Visit<'ast> for Edits {
-    fn visit_expr_for_loop(&mut self, expr: &'ast syn::ExprForLoop) {
-        self.check(&expr.body);
-        visit::visit_expr_for_loop(self, expr);
-    }
-
-    fn visit_expr_while(&mut self, expr: &'ast syn::ExprWhile) {
-        self.check(&expr.body);
-        visit::visit_expr_while(self, expr);
-    }
-
-    fn visit_expr_loop(&mut self, expr: &'ast syn::ExprLoop) {
-        self.check(&expr.body);
-        visit::visit_expr_loop(self, expr);
-    }
-
-    fn visit_expr_return(&mut self, expr: &'ast syn::ExprReturn) {
-        if self.returns {
-            let after = self.base + expr.return_token.span.byte_range().end;
-            match expr.expr.as_deref() {
-                None => self.edits.push(Edit::insert(after, " ::semiaxis::live::left()")),
-                Some(value) => self.leave_with(value),
-            }
-        }
-        visit::visit_expr_return(self, expr);
-    }
-
-    fn visit_expr_closure(&mut self, expr: &'ast syn::ExprClosure) {
-        self.within(false, self.constant, |edits| visit::visit_expr_closure(edits, expr));
-    }
-
-    fn visit_expr_async(&mut self, expr: &'ast syn::ExprAsync) {
-        self.within(false, self.constant, |edits| visit::visit_expr_async(edits, expr));
-    }
-
-    fn visit_item(&mut self, item: &'ast syn::Item) {
-        let constant = match item {
-            syn::Item::Const(_) | syn::Item::Static(_) => true,
-            syn::Item::Fn(function) => function.sig.constness.is_some(),
-            _ => false,
-        };
-        self.within(false, constant, |edits| visit::visit_item(edits, item));
-    }
-
-    fn visit_impl_item_fn(&mut self, function: &'ast syn::ImplItemFn) {
-        let constant = function.sig.constness.is_some();
-        self.within(false, constant, |edits| visit::visit_impl_item_fn(edits, function));
-    }
-
-    fn visit_expr_const(&mut self, expr: &'ast syn::ExprConst) {
-        self.within(false, true, |edits| visit::visit_expr_const(edits, expr));
-    }
-
-    fn visit_type(&mut self, _: &'ast syn::Type) {}
-}
-
-/// Notes the edits that make an item and its parts visible to later cells.
-struct Publish {
-    base: usize,
-    edits: Vec<Edit>,
-}
-
-impl Publish {
-    fn item(&mut self, item: &syn::Item) {
-        let visibility = match item {
-            syn::Item::Const(item) => &item.vis,
-            syn::Item::Enum(item) => &item.vis,
-            syn::Item::ExternCrate(item) => &item.vis,
-            syn::Item::Fn(item) => &item.vis,
-            syn::Item::Mod(item) => &item.vis,
-            syn::Item::Static(item) => &item.vis,
-            syn::Item::Struct(item) => &item.vis,
-            syn::Item::Trait(item) => &item.vis,
-            syn::Item::TraitAlias(item) => &item.vis,
-            syn::Item::Type(item) => &item.vis,
-            syn::Item::Union(item) => &item.vis,
-            syn::Item::Use(_) => return,
-            syn::Item::Impl(item) => {
-                if item.trait_.is_none() {
-                    for member in &item.items {
-                        self.member(member);
-                    }
-                }
-                return;
-            }
-            syn::Item::ForeignMod(item) => {
-                for member in &item.items {
-                    match member {
-                        syn::ForeignItem::Fn(f) => self.publish(&f.vis, &f.attrs, member),
-                        syn::ForeignItem::Static(s) => self.publish(&s.vis, &s.attrs, member),
-                        syn::ForeignItem::Type(t) => self.publish(&t.vis, &t.attrs, member),
-                        _ => {}
-                    }
-                }
-                return;
-            }
-            syn::Item::Macro(rules) => {
-                let exported = rules.attrs.iter().any(|attr| attr.path().is_ident("macro_export"));
-                if rules.ident.is_some() && !exported {
-                    let start = range_of(item, self.base).start;
-                    self.edits.push(Edit::insert(start, "#[macro_export] "));
-                }
-                return;
-            }
-            _ => return,
-        };
-        self.publish(visibility, attributes_of(item), item);
-        match item {
-            syn::Item::Struct(item) => self.fields(&item.fields),
-            syn::Item::Union(item) => {
-                for field in &item.fields.named {
-                    self.publish(&field.vis, &field.attrs, field);
-                }
-            }
-            _ => {}
-        }
-    }
-
-    fn fields(&mut self, fields: &syn::Fields) {
-        for field in fields {
-            self.publish(&field.vis, &field.attrs, field);
-        }
-    }
-
-    fn member(&mut self, member: &syn::ImplItem) {
-        match member {
-            syn::ImplItem::Fn(item) => self.publish(&item.vis, &item.attrs, member),
-            syn::ImplItem::Const(item) => self.publish(&item.vis, &item.attrs, member),
-            syn::ImplItem::Type(item) => self.publish(&item.vis, &item.attrs, member),
-            _ => {}
-        }
-    }
-
-    fn publish(&mut self, visibility: &syn::Visibility, attributes: &[syn::Attribute], node: &impl ToTokens) {
-        match visibility {
-            syn::Visibility::Public(_) => {}
-            syn::Visibility::Restricted(restricted) => {
-                let range = range_of(restricted, self.base);
-                self.edits.push(Edit { range, text: "pub".to_owned() });
-            }
-            syn::Visibility::Inherited => {
-                let skip: usize = attributes.iter().map(|a| a.to_token_stream().into_iter().count()).sum();
-                if let Some(first) = node.to_token_stream().into_iter().nth(skip) {
-                    let at = self.base + first_byte(&first);
-                    self.edits.push(Edit::insert(at, "pub "));
-                }
-            }
-        }
-    }
-}
-
-fn first_byte(token: &TokenTree) -> usize {
+pub(super) fn first_byte(token: &TokenTree) -> usize {
     match token {
         TokenTree::Group(group) => group.span_open().byte_range().start,
         other => other.span().byte_range().start,
@@ -731,7 +518,7 @@ fn first_byte(token: &TokenTree) -> usize {
 }
 
 /// The bytes of the cell that a node stands on.
-fn range_of(node: &impl ToTokens, base: usize) -> Range<usize> {
+pub(super) fn range_of(node: &impl ToTokens, base: usize) -> Range<usize> {
     let mut tokens = node.to_token_stream().into_iter();
     let Some(first) = tokens.next() else { return base..base };
     let start = first_byte(&first);
@@ -750,7 +537,7 @@ fn plain_name(name: &syn::Ident) -> String {
     name.strip_prefix("r#").map(str::to_owned).unwrap_or(name)
 }
 
-fn attributes_of(item: &syn::Item) -> &[syn::Attribute] {
+pub(super) fn attributes_of(item: &syn::Item) -> &[syn::Attribute] {
     match item {
         syn::Item::Const(item) => &item.attrs,
         syn::Item::Enum(item) => &item.attrs,
@@ -787,15 +574,23 @@ fn docs_of(attributes: &[syn::Attribute]) -> String {
 fn signature_of(item: &syn::Item) -> String {
     let tokens = match item {
         syn::Item::Fn(item) => item.sig.to_token_stream().to_string(),
-        syn::Item::Struct(item) => format!("struct {} {}", item.ident, item.generics.to_token_stream()),
+        syn::Item::Struct(item) => {
+            format!("struct {} {}", item.ident, item.generics.to_token_stream())
+        }
         syn::Item::Enum(item) => format!("enum {} {}", item.ident, item.generics.to_token_stream()),
-        syn::Item::Union(item) => format!("union {} {}", item.ident, item.generics.to_token_stream()),
-        syn::Item::Trait(item) => format!("trait {} {}", item.ident, item.generics.to_token_stream()),
+        syn::Item::Union(item) => {
+            format!("union {} {}", item.ident, item.generics.to_token_stream())
+        }
+        syn::Item::Trait(item) => {
+            format!("trait {} {}", item.ident, item.generics.to_token_stream())
+        }
         syn::Item::Const(item) => format!("const {}: {}", item.ident, item.ty.to_token_stream()),
         syn::Item::Static(item) => format!("static {}: {}", item.ident, item.ty.to_token_stream()),
         syn::Item::Type(item) => item.to_token_stream().to_string(),
         syn::Item::Mod(item) => format!("mod {}", item.ident),
-        syn::Item::Macro(item) => item.ident.as_ref().map(|n| format!("macro {n}!")).unwrap_or_default(),
+        syn::Item::Macro(item) => {
+            item.ident.as_ref().map(|n| format!("macro {n}!")).unwrap_or_default()
+        }
         _ => String::new(),
     };
     tidy(&tokens)
@@ -805,8 +600,20 @@ fn signature_of(item: &syn::Item) -> String {
 fn tidy(tokens: &str) -> String {
     let mut text = tokens.to_owned();
     for (from, to) in [
-        (" :: ", "::"), (" < ", "<"), (" >", ">"), (" ,", ","), (" ;", ";"), ("& ", "&"), (" (", "("),
-        ("( ", "("), (" )", ")"), (" :", ":"), ("' ", "'"), ("[ ", "["), (" ]", "]"), (" !", "!"),
+        (" :: ", "::"),
+        (" < ", "<"),
+        (" >", ">"),
+        (" ,", ","),
+        (" ;", ";"),
+        ("& ", "&"),
+        (" (", "("),
+        ("( ", "("),
+        (" )", ")"),
+        (" :", ":"),
+        ("' ", "'"),
+        ("[ ", "["),
+        (" ]", "]"),
+        (" !", "!"),
     ] {
         text = text.replace(from, to);
     }
@@ -815,6 +622,7 @@ fn tidy(tokens: &str) -> String {
 
 #[cfg(test)]
 mod tests {
+    use super::super::edits::CHECK;
     use super::super::source::{CellText, Generated};
     use super::*;
     use std::sync::Arc;
@@ -847,8 +655,10 @@ mod tests {
 
     #[test]
     fn patterns_declare_variables_and_no_constants() {
-        let parsed = parse("let (mut a, Point { x, y: [b, ..] }, None) = f(c) else { d };", 0).unwrap();
-        let names: Vec<_> = parsed.statements[0].declares.iter().map(|d| (d.name.as_str(), d.mutable)).collect();
+        let parsed =
+            parse("let (mut a, Point { x, y: [b, ..] }, None) = f(c) else { d };", 0).unwrap();
+        let names: Vec<_> =
+            parsed.statements[0].declares.iter().map(|d| (d.name.as_str(), d.mutable)).collect();
         assert_eq!(names, [("a", true), ("x", false), ("b", false)]);
         let mentions: Vec<_> = parsed.statements[0].mentions.iter().map(String::as_str).collect();
         assert_eq!(mentions, ["None", "Point", "c", "d", "f"]);
@@ -871,23 +681,40 @@ mod tests {
 
     #[test]
     fn items_are_made_visible() {
-        assert_eq!(item("/// doc\n#[derive(Debug)] struct P { /// f\n x: f64, pub y: f64 }").1,
-            "/// doc\n#[derive(Debug)] pub struct P { /// f\n pub x: f64, pub y: f64 }");
+        assert_eq!(
+            item("/// doc\n#[derive(Debug)] struct P { /// f\n x: f64, pub y: f64 }").1,
+            "/// doc\n#[derive(Debug)] pub struct P { /// f\n pub x: f64, pub y: f64 }"
+        );
         assert_eq!(item("struct T(f64, pub(crate) u8);").1, "pub struct T(pub f64, pub u8);");
-        assert_eq!(item("impl P { const N: u8 = 1; fn f(&self) {} }").1,
-            "impl P { pub const N: u8 = 1; pub fn f(&self) {} }");
-        assert_eq!(item("impl Clone for P { fn clone(&self) -> P { P } }").1,
-            "impl Clone for P { fn clone(&self) -> P { P } }");
-        assert_eq!(item("macro_rules! m { () => {} }").1, "#[macro_export] macro_rules! m { () => {} }");
+        assert_eq!(
+            item("impl P { const N: u8 = 1; fn f(&self) {} }").1,
+            "impl P { pub const N: u8 = 1; pub fn f(&self) {} }"
+        );
+        assert_eq!(
+            item("impl Clone for P { fn clone(&self) -> P { P } }").1,
+            "impl Clone for P { fn clone(&self) -> P { P } }"
+        );
+        assert_eq!(
+            item("macro_rules! m { () => {} }").1,
+            "#[macro_export] macro_rules! m { () => {} }"
+        );
         assert_eq!(item("async unsafe fn f() {}").1, "pub async unsafe fn f() {}");
-        assert_eq!(item("thread_local! { static A: u8 = 1; }").1, "thread_local! { pub static A: u8 = 1; }");
+        assert_eq!(
+            item("thread_local! { static A: u8 = 1; }").1,
+            "thread_local! { pub static A: u8 = 1; }"
+        );
     }
 
     #[test]
     fn loops_get_a_check_but_not_where_the_compiler_runs_them() {
-        assert_eq!(item("fn f() { for i in 0..3 { g(i) } }").1,
-            format!("pub fn f() {{ for i in 0..3 {{{CHECK} g(i) }} }}"));
-        assert_eq!(item("const fn f() { loop { break } }").1, "pub const fn f() { loop { break } }");
+        assert_eq!(
+            item("fn f() { for i in 0..3 { g(i) } }").1,
+            format!("pub fn f() {{ for i in 0..3 {{{CHECK} g(i) }} }}")
+        );
+        assert_eq!(
+            item("const fn f() { loop { break } }").1,
+            "pub const fn f() { loop { break } }"
+        );
     }
 
     #[test]
@@ -909,13 +736,16 @@ mod tests {
     fn use_lines_are_flattened() {
         let (item, _) = item("use a::{self, b::*, c as d, e as _};");
         let ItemForm::Use(leaves) = item.form else { panic!() };
-        let told: Vec<_> = leaves.iter().map(|leaf| format!("{} {:?}", leaf.path, leaf.binding)).collect();
+        let told: Vec<_> =
+            leaves.iter().map(|leaf| format!("{} {:?}", leaf.path, leaf.binding)).collect();
         assert_eq!(told, ["a Name(\"a\")", "a::b Glob", "a::c Name(\"d\")", "a::e Nameless"]);
     }
 
     #[test]
     fn impl_blocks_tell_what_the_orphan_rule_looks_at() {
-        let (item, _) = item("impl<T> From<Vec<Tile>> for &Box<Kiln<T>> { fn from(x: Vec<Tile>) -> Self { x } }");
+        let (item, _) = item(
+            "impl<T> From<Vec<Tile>> for &Box<Kiln<T>> { fn from(x: Vec<Tile>) -> Self { x } }",
+        );
         let ItemForm::Impl(block) = item.form else { panic!() };
         assert_eq!(block.of_trait.as_ref().unwrap().0, "From");
         assert_eq!(block.self_head.as_deref(), Some("Box"));

@@ -3,7 +3,7 @@
 use std::collections::BTreeMap;
 use std::ffi::OsString;
 use std::io;
-use std::path::{Path, PathBuf};
+use std::path::Path;
 use std::process::Stdio;
 
 use serde::{Deserialize, Serialize};
@@ -104,11 +104,6 @@ impl Call<'_> {
         format!("{}.rs", self.crate_name)
     }
 
-    /// Where the library will be.
-    pub fn library(&self) -> PathBuf {
-        self.folder.join(format!("lib{}.so", self.crate_name))
-    }
-
     /// Flags that decide what comes out, in the order they are given.
     pub fn flags(optimise: u8) -> Vec<String> {
         [
@@ -116,7 +111,14 @@ impl Call<'_> {
             "--crate-type=dylib",
             "-Cprefer-dynamic",
             "-Cdebuginfo=0",
+            "-Cdebug-assertions=no",
             "-Cembed-bitcode=no",
+            // A cell is small: splitting it costs more than a second core gives.
+            "-Ccodegen-units=1",
+            // What the prelude has instantiated of generic code is not instantiated again.
+            "-Zshare-generics=y",
+            // A sum that does not fit is an error at every level of optimisation.
+            "-Coverflow-checks=yes",
             "--error-format=json",
             "--diagnostic-width=100000",
             "-Ztrim-diagnostic-paths=no",
@@ -216,7 +218,8 @@ impl Answer {
     pub fn errors(&self) -> impl Iterator<Item = &Said> {
         self.said.iter().filter(|said| said.level.starts_with("error")).filter(|said| {
             !(said.spans.is_empty()
-                && (said.message.starts_with("aborting due to") || said.message.starts_with("could not compile")))
+                && (said.message.starts_with("aborting due to")
+                    || said.message.starts_with("could not compile")))
         })
     }
 
@@ -239,10 +242,14 @@ impl Answer {
                 continue;
             }
             for span in said.spans.iter().filter(|span| span.file_name == self.file) {
-                let Some(Origin::Type(name)) = text.origin(&(span.byte_start..span.byte_end)) else {
+                let Some(Origin::Type(name)) = text.origin(&(span.byte_start..span.byte_end))
+                else {
                     continue;
                 };
-                let label = span.label.as_deref().and_then(|label| label.strip_prefix("argument has type `&"));
+                let label = span
+                    .label
+                    .as_deref()
+                    .and_then(|label| label.strip_prefix("argument has type `&"));
                 if let Some(shown) = label.and_then(|label| label.strip_suffix('`')) {
                     types.insert(name.clone(), shown.to_owned());
                 }
@@ -260,7 +267,8 @@ impl Answer {
             // Used after it was moved, or without ever having got a value.
             let spent = matches!(code, Some("E0382" | "E0381"));
             // Whatever the message names, the line that cannot be had is the kernel's.
-            let spans = said.spans.iter().chain(said.children.iter().flat_map(|child| &child.spans));
+            let spans =
+                said.spans.iter().chain(said.children.iter().flat_map(|child| &child.spans));
             for span in spans.flat_map(|span| span.all_in(&self.file)) {
                 match text.origin(&(span.byte_start..span.byte_end)) {
                     Some(Origin::Return(name)) => _ = found.returns.insert(name.clone()),

@@ -95,7 +95,9 @@ impl Generated {
     /// Adds a stretch of a cell with insertions and deletions, which must be in order.
     pub fn edited(&mut self, cell: &Arc<CellText>, range: Range<usize>, edits: &[Edit]) {
         let mut at = range.start;
-        for edit in edits.iter().filter(|e| e.range.start >= range.start && e.range.end <= range.end) {
+        for edit in
+            edits.iter().filter(|e| e.range.start >= range.start && e.range.end <= range.end)
+        {
             self.cell(cell, at..edit.range.start);
             self.own(&edit.text);
             at = edit.range.end;

@@ -26,8 +26,6 @@ pub struct CellRequest {
     pub code: String,
     /// The number shown as cell `[n]`.
     pub count: u32,
-    /// The client's identifier of the cell, if it sent one.
-    pub cell_id: Option<String>,
     /// A silent cell shows nothing and is not counted.
     pub silent: bool,
 }
@@ -171,8 +169,6 @@ pub enum ItemKind {
     Module,
     /// `macro_rules!`
     Macro,
-    /// A name brought in by `use`.
-    Use,
 }
 
 impl ItemKind {
@@ -188,7 +184,6 @@ impl ItemKind {
             ItemKind::Static => "static",
             ItemKind::Module => "module",
             ItemKind::Macro => "macro",
-            ItemKind::Use => "use",
         }
     }
 }

@@ -95,6 +95,7 @@ impl Document {
     }
 
     /// The identifier of a cell.
+    #[cfg(test)]
     pub fn id(&self, cell_idx: usize) -> Option<&str> {
         self.cells.get(cell_idx)?.get("id")?.as_str()
     }

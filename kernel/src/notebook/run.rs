@@ -91,12 +91,7 @@ pub async fn run_cells(
         let place = cell_idx + 1;
         let n_cells = document.n_cells();
         screen.begin(place, n_cells, &code);
-        let request = CellRequest {
-            code: code.clone(),
-            count,
-            cell_id: document.id(cell_idx).map(str::to_owned),
-            silent: false,
-        };
+        let request = CellRequest { code: code.clone(), count, silent: false };
         let mut outputs = Outputs::default();
         let began = Utc::now();
         let reply = run_cell(engine, request, &mut outputs, screen, &mut keyboard).await;

@@ -72,12 +72,10 @@ impl Running {
             expressions.map(|(name, text)| (name.clone(), text.clone())).collect();
         // The protocol's map has no order; sorting makes a run repeatable.
         expressions.sort();
-        let cell_id = self.order.message.metadata.get("cellId").and_then(|id| id.as_str());
         Job {
             request: CellRequest {
                 code: self.order.execute.code.clone(),
                 count: u32::try_from(self.count).unwrap_or(u32::MAX),
-                cell_id: cell_id.map(str::to_owned),
                 silent: self.order.execute.silent,
             },
             expressions,

@@ -7,7 +7,9 @@
 
 use std::collections::{BTreeMap, BTreeSet};
 use std::ffi::OsStr;
+use std::fs;
 use std::io::{BufRead, BufReader, Read};
+use std::os::unix::fs::PermissionsExt;
 use std::path::{Path, PathBuf};
 use std::process::{Command, Stdio};
 use std::sync::mpsc::{self, RecvTimeoutError, Sender};
@@ -20,6 +22,7 @@ use super::Place;
 use super::compiler::{Compiler, command_path};
 use super::error::SetupError;
 use super::graph::{Package, Target, inside, metadata, n_compiled};
+use super::kit::KitHome;
 use super::progress::SetupEvent;
 
 /// How many of cargo's last lines a failure shows.
@@ -141,6 +144,7 @@ fn run_cargo(
         .args(chosen)
         .args(["--message-format=json-render-diagnostics", "--color=never", "--"])
         .args(prelude_flags(compiler, name))
+        .env("RUSTC_WORKSPACE_WRAPPER", wrapper(&place.home)?)
         .stdout(Stdio::piped())
         .stderr(Stdio::piped())
         .spawn()
@@ -182,10 +186,32 @@ fn run_cargo(
 /// The name of the kit goes into the linker's build identifier for cargo's sake. Cargo compares times
 /// of files under names relative to the workspace, so of two workspaces that share a folder for build
 /// results it would take the other's library for this one's; flags it compares as they are.
+/// A way around the compiler for the workspace's own crates, so that the prelude alone is compiled
+/// with the flags that stable compilers keep back. Said to cargo itself, the same would make build
+/// scripts run, and everything behind them be compiled, again. Cargo takes the place of the script
+/// for a part of what is built, so it must not change.
+fn wrapper(home: &KitHome) -> Result<PathBuf, SetupError> {
+    let path = home.compile_script();
+    let script = "#!/bin/sh\nRUSTC_BOOTSTRAP=1 exec \"$@\"\n";
+    if fs::read_to_string(&path).is_ok_and(|text| text == script) {
+        return Ok(path);
+    }
+    let parent = path.parent().unwrap_or(Path::new("/"));
+    fs::create_dir_all(parent).map_err(SetupError::files("make", parent))?;
+    let fresh = path.with_extension("new");
+    fs::write(&fresh, script).map_err(SetupError::files("write", &fresh))?;
+    fs::set_permissions(&fresh, fs::Permissions::from_mode(0o755))
+        .map_err(SetupError::files("write", &fresh))?;
+    fs::rename(&fresh, &path).map_err(SetupError::files("write", &path))?;
+    Ok(path)
+}
+
 fn prelude_flags(compiler: &Compiler, name: &str) -> Vec<String> {
     let library = compiler.sysroot.join("lib").join("rustlib").join(compiler.host()).join("lib");
     vec![
         "-Cprefer-dynamic".to_owned(),
+        // What the prelude instantiates of generic code, the cells need not.
+        "-Zshare-generics=y".to_owned(),
         "-Clink-arg=-Wl,-rpath,$ORIGIN".to_owned(),
         format!("-Clink-arg=-Wl,-rpath,{}", library.display()),
         format!("-Clink-arg=-Wl,--build-id=0x{name}"),

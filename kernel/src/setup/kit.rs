@@ -77,15 +77,11 @@ impl Kit {
     /// Reads the kit in a folder back, if there is one and it is whole and of this interface.
     pub fn load(dir: &Path) -> Option<Self> {
         let text = fs::read(dir.join("kit.json")).ok()?;
-        let mut kit: Self = serde_json::from_slice(&text).ok()?;
+        let kit: Self = serde_json::from_slice(&text).ok()?;
         let whole = kit.dir == dir
             && kit.interface == INTERFACE
             && [&kit.prelude, &kit.dependencies, &kit.lock, &kit.index].iter().all(|p| p.exists())
             && kit.externs.values().all(|file| file.exists());
-        if !kit.target_dir.is_dir() {
-            // What cargo built may have been cleaned away; extra dependencies then start afresh.
-            kit.target_dir = target_dir(&kit.workspace);
-        }
         whole.then_some(kit)
     }
 
@@ -138,6 +134,11 @@ impl KitHome {
             .ok_or(SetupError::NoDataFolder)?
             .join("semiaxis");
         Ok(Self { kits: data.join("kits"), compilers: data.join("compilers.json") })
+    }
+
+    /// The script by which cargo calls the compiler for the prelude.
+    pub fn compile_script(&self) -> PathBuf {
+        self.compilers.with_file_name("compile-prelude")
     }
 
     /// The folder of one kit.

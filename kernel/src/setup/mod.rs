@@ -56,10 +56,15 @@ pub struct Place {
 /// As [`ensure`].
 pub fn ensure_at(place: &Place, progress: &mut dyn FnMut(SetupEvent)) -> Result<Kit, SetupError> {
     let started = Instant::now();
-    let kit = match find(&place.home, &place.workspace)? {
+    let mut kit = match find(&place.home, &place.workspace)? {
         Found::Kit(kit) => *kit,
         Found::Missing { sources, compiler } => build_once(place, &sources, &compiler, progress)?,
     };
+    if !kit.target_dir.is_dir() {
+        // What cargo built was cleaned away; extra dependencies start afresh in this workspace.
+        kit.target_dir =
+            place.target_dir.clone().unwrap_or_else(|| kit::target_dir(&place.workspace));
+    }
     kit.hold()?;
     progress(SetupEvent::Ready { elapsed: started.elapsed() });
     Ok(kit)

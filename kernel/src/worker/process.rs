@@ -113,7 +113,9 @@ impl Worker {
         };
         match worker.reports.recv().await {
             Some(Report::Ready { interface: INTERFACE }) => Ok(worker),
-            Some(_) => Err(io::Error::other("the worker speaks another language than the kernel; the prelude must be built again")),
+            Some(_) => Err(io::Error::other(
+                "the worker speaks another language than the kernel; the prelude must be built again",
+            )),
             None => {
                 let (how, last_words) = worker.obituary().await;
                 Err(io::Error::other(format!("the worker {how} before it was up: {last_words}")))
@@ -259,7 +261,9 @@ fn describe(status: io::Result<ExitStatus>) -> String {
         Err(error) => format!("ended in a way that could not be found out ({error})"),
         Ok(status) => match (status.code(), status.signal()) {
             (Some(code), _) => format!("ended with exit status {code}"),
-            (None, Some(signal)) => format!("was ended by signal {signal} ({})", signal_words(signal)),
+            (None, Some(signal)) => {
+                format!("was ended by signal {signal} ({})", signal_words(signal))
+            }
             (None, None) => "ended".to_owned(),
         },
     }
@@ -406,7 +410,8 @@ fn fill(descriptor: &impl AsRawFd, chunk: &mut Vec<u8>) -> Filled {
         }
         let room = &mut chunk[length..];
         // SAFETY: `room` is writable for its length.
-        let got = unsafe { libc::read(descriptor.as_raw_fd(), room.as_mut_ptr().cast(), room.len()) };
+        let got =
+            unsafe { libc::read(descriptor.as_raw_fd(), room.as_mut_ptr().cast(), room.len()) };
         match usize::try_from(got) {
             Ok(0) => break Filled::Ended,
             Ok(got) => length += got,

@@ -6,7 +6,7 @@ use std::fmt::Debug;
 use std::panic::{AssertUnwindSafe, Location, catch_unwind};
 
 use super::message::{How, Place, Trouble};
-use super::shelf::{Discarded, Shelf};
+use super::shelf::{Discarded, Kind, Shelf};
 use crate::exhibit::Bundle;
 
 /// The worker's side of one run of one cell. Compiled cells call these methods; nobody else does.
@@ -46,13 +46,16 @@ impl<'a> Cell<'a> {
     /// Whether `take` will find a value of this type; asked for all variables before any is taken,
     /// because a failure in the middle would drop those taken already.
     pub fn ready<T: 'static>(&mut self, name: &str) -> bool {
-        match self.shelf.fits::<T>(name) {
-            Ok(()) => true,
-            Err(message) => {
-                self.how = How::NotStarted(Trouble { message, type_name: None, place: None });
-                false
-            }
+        self.is_ready(name, &Kind::of::<T>())
+    }
+
+    #[inline(never)]
+    fn is_ready(&mut self, name: &str, kind: &Kind) -> bool {
+        let fits = self.shelf.fits(name, kind);
+        if let Err(message) = &fits {
+            self.not_started(message.clone());
         }
+        fits.is_ok()
     }
 
     /// Takes a variable off the shelf.
@@ -60,7 +63,14 @@ impl<'a> Cell<'a> {
     /// # Panics
     /// When `ready` was not asked, or said no.
     pub fn take<T: 'static>(&mut self, name: &str) -> T {
-        let value = self.shelf.take(name).expect("`ready` was asked before");
+        let value = self.take_out(name, &Kind::of::<T>());
+        // SAFETY: the shelf hands over the content of a box of this type.
+        *unsafe { Box::from_raw(value.cast::<T>()) }
+    }
+
+    #[inline(never)]
+    fn take_out(&mut self, name: &str, kind: &Kind) -> *mut () {
+        let value = self.shelf.take(name, kind).expect("`ready` was asked before");
         self.out.push(name.to_owned());
         value
     }
@@ -68,19 +78,34 @@ impl<'a> Cell<'a> {
     /// Puts a variable back that the cell did not move; one that the cell has declared anew
     /// replaces it.
     pub fn put_back<T: 'static>(&mut self, name: &str, value: T) {
+        let value = Box::into_raw(Box::new(value)).cast();
+        // SAFETY: the box is of the type.
+        unsafe { self.return_to_shelf(name, value, Kind::of::<T>()) }
+    }
+
+    #[inline(never)]
+    unsafe fn return_to_shelf(&mut self, name: &str, value: *mut (), kind: Kind) {
         self.out.retain(|out| out != name);
         if self.kept.iter().any(|kept| kept == name) {
-            if let Err(panic) = catch_unwind(AssertUnwindSafe(|| drop(value))) {
-                eprintln!("dropping the old value of `{name}` panicked: {}", words_of(&panic));
-            }
+            // SAFETY: as the caller vouches.
+            self.discarded.push(unsafe { Discarded::new(value, kind) });
         } else {
-            self.shelf.put(name, value);
+            // SAFETY: as the caller vouches.
+            self.discarded.extend(unsafe { self.shelf.put(name, value, kind) });
         }
     }
 
     /// Puts a variable on the shelf that the cell has declared.
     pub fn put<T: 'static>(&mut self, name: &str, value: T) {
-        self.discarded.extend(self.shelf.put(name, value));
+        let value = Box::into_raw(Box::new(value)).cast();
+        // SAFETY: the box is of the type.
+        unsafe { self.keep(name, value, Kind::of::<T>()) }
+    }
+
+    #[inline(never)]
+    unsafe fn keep(&mut self, name: &str, value: *mut (), kind: Kind) {
+        // SAFETY: as the caller vouches.
+        self.discarded.extend(unsafe { self.shelf.put(name, value, kind) });
         self.kept.push(name.to_owned());
     }
 
@@ -99,6 +124,7 @@ impl<'a> Cell<'a> {
         });
     }
 
+    #[inline(never)]
     fn run_dyn(&mut self, body: &mut dyn FnMut(&mut Cell<'a>) -> Result<(), Failure>) {
         LAST_PANIC.take();
         self.how = match catch_unwind(AssertUnwindSafe(|| body(self))) {
@@ -199,16 +225,24 @@ enum Ending {
 impl<E: Debug + 'static> From<E> for Failure {
     #[track_caller]
     fn from(error: E) -> Self {
-        let place = Some(place_of(Location::caller()));
-        let message = describe(&error);
-        let type_name = Some(std::any::type_name::<E>().to_owned());
-        Self(Ending::Failed(Trouble { message, type_name, place }))
+        Self::new(&error, &error, std::any::type_name::<E>(), Location::caller())
+    }
+}
+
+impl Failure {
+    #[inline(never)]
+    fn new(error: &dyn Any, debug: &dyn Debug, type_name: &str, place: &Location<'_>) -> Self {
+        Self(Ending::Failed(Trouble {
+            message: describe(error, debug),
+            type_name: Some(type_name.to_owned()),
+            place: Some(place_of(place)),
+        }))
     }
 }
 
 /// An error in words: by `Display`, with its causes, for the types in use; by `Debug` for others,
 /// since a conversion cannot ask whether a type has `Display`.
-fn describe<E: Debug + 'static>(error: &E) -> String {
+fn describe(any: &dyn Any, debug: &dyn Debug) -> String {
     use std::error::Error;
     fn chain(error: &(dyn Error + 'static)) -> String {
         let mut words = error.to_string();
@@ -223,7 +257,6 @@ fn describe<E: Debug + 'static>(error: &E) -> String {
         }
         words
     }
-    let any: &dyn Any = error;
     macro_rules! try_as {
         ($($type:ty),+ $(,)?) => {
             $(if let Some(error) = any.downcast_ref::<$type>() {
@@ -256,7 +289,7 @@ fn describe<E: Debug + 'static>(error: &E) -> String {
         std::env::VarError,
         std::time::SystemTimeError,
     );
-    format!("{error:?}")
+    format!("{debug:?}")
 }
 
 /// What an early `return;` at the top level of a cell gives back.
@@ -272,7 +305,7 @@ pub fn left() -> Result<(), Failure> {
 /// value is shown as a final expression would be.
 #[doc(hidden)]
 pub mod leaving {
-    use super::{Bundle, Cell, Debug, Ending, Failure, Location, Trouble, describe, place_of};
+    use super::{Bundle, Cell, Debug, Ending, Failure, Location};
 
     /// A value given to `return`.
     #[derive(Clone, Copy)]
@@ -288,11 +321,9 @@ pub mod leaving {
         fn semiaxis_leave(self, _: &mut Cell<'_>, _: impl FnOnce() -> Bundle) -> Failure {
             match self.0 {
                 Ok(_) => Failure(Ending::Left),
-                Err(error) => Failure(Ending::Failed(Trouble {
-                    message: describe(error),
-                    type_name: Some(std::any::type_name::<E>().to_owned()),
-                    place: Some(place_of(Location::caller())),
-                })),
+                Err(error) => {
+                    Failure::new(error, error, std::any::type_name::<E>(), Location::caller())
+                }
             }
         }
     }

@@ -138,7 +138,10 @@ pub struct Place {
 
 /// What the dynamic linker says; the error around it only says that it failed.
 pub fn linker_words(error: &dyn std::error::Error) -> String {
-    error.source().map_or_else(|| error.to_string(), |cause| format!("{cause:?}").trim_matches('"').to_owned())
+    error.source().map_or_else(
+        || error.to_string(),
+        |cause| format!("{cause:?}").trim_matches('"').to_owned(),
+    )
 }
 
 /// Writes one frame.

@@ -103,9 +103,7 @@ fn forms(bundle: &Bundle) -> Vec<Form> {
         mime: mime.clone(),
         content: match content {
             Content::Text(text) => text.as_str().into(),
-            Content::Bytes(bytes) => {
-                base64::engine::general_purpose::STANDARD.encode(bytes).into()
-            }
+            Content::Bytes(bytes) => base64::engine::general_purpose::STANDARD.encode(bytes).into(),
             Content::Json(json) => json.clone(),
         },
     };

@@ -34,7 +34,7 @@ pub trait ByDisplay {
 }
 impl<T: Display + ?Sized> ByDisplay for &&Seen<'_, T> {
     fn semiaxis_bundle(&self) -> Bundle {
-        plain(self.0.to_string())
+        by_display(&self.0)
     }
 }
 
@@ -45,7 +45,7 @@ pub trait ByDebug {
 }
 impl<T: Debug + ?Sized> ByDebug for &Seen<'_, T> {
     fn semiaxis_bundle(&self) -> Bundle {
-        plain(format!("{:?}", self.0))
+        by_debug(&self.0)
     }
 }
 
@@ -56,8 +56,25 @@ pub trait ByName {
 }
 impl<T: ?Sized> ByName for Seen<'_, T> {
     fn semiaxis_bundle(&self) -> Bundle {
-        plain(format!("a value of type {}", std::any::type_name::<T>()))
+        by_name(std::any::type_name::<T>())
     }
+}
+
+// These are compiled once, here, and not in every cell.
+
+#[inline(never)]
+fn by_display(value: &dyn Display) -> Bundle {
+    plain(value.to_string())
+}
+
+#[inline(never)]
+fn by_debug(value: &dyn Debug) -> Bundle {
+    plain(format!("{value:?}"))
+}
+
+#[inline(never)]
+fn by_name(name: &str) -> Bundle {
+    plain(format!("a value of type {name}"))
 }
 
 fn plain(mut text: String) -> Bundle {
@@ -82,8 +99,10 @@ macro_rules! bundle_of {
 
 /// Shows a value now, in the middle of a cell.
 ///
-/// ```ignore-outside-a-cell
-/// show!(scree(&pca));
+/// ```
+/// for kiln in ["north", "mill"] {
+///     semiaxis::show!(format!("kiln {kiln}"));
+/// }
 /// ```
 #[macro_export]
 macro_rules! show {

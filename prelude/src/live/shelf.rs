@@ -15,54 +15,56 @@ pub(super) struct Shelf {
     slots: HashMap<String, Slot>,
 }
 
-/// One stored value: an owned allocation, and what is needed to hand it out or to drop it.
-struct Slot {
-    /// Made by `Box::into_raw` on a box of the type that `identity` stands for.
-    value: *mut (),
+/// What the shelf must know of a type. The shelf's own code is compiled once, here, and takes this
+/// instead of a type parameter, because whatever is generic is compiled again in every cell.
+#[doc(hidden)]
+#[derive(Clone, Copy)]
+pub struct Kind {
     identity: TypeId,
     type_name: &'static str,
     size: usize,
     align: usize,
-    /// Frees `value`; instantiated for its type by `Slot::new`.
+    /// Frees a value that was made by `Box::into_raw` on a box of the type.
     free: unsafe fn(*mut ()),
-    /// The kernel vouches that the type's present name means the definition it was stored under.
-    relabelled: bool,
 }
 
-impl Slot {
-    fn new<T: 'static>(value: T) -> Self {
+impl Kind {
+    /// What there is to know of `T`.
+    pub fn of<T: 'static>() -> Self {
         unsafe fn free<T>(value: *mut ()) {
-            // SAFETY: `value` came from `Box::into_raw` on a `Box<T>`, and is freed once.
+            // SAFETY: the caller owns `value`, which came from `Box::into_raw` on a `Box<T>`.
             drop(unsafe { Box::from_raw(value.cast::<T>()) });
         }
         Self {
-            value: Box::into_raw(Box::new(value)).cast(),
             identity: TypeId::of::<T>(),
             type_name: type_name::<T>(),
             size: size_of::<T>(),
             align: align_of::<T>(),
             free: free::<T>,
-            relabelled: false,
         }
     }
+}
 
-    fn fits<T: 'static>(&self) -> bool {
-        self.identity == TypeId::of::<T>()
-            || (self.relabelled && self.size == size_of::<T>() && self.align == align_of::<T>())
-    }
+/// One stored value.
+struct Slot {
+    /// Made by `Box::into_raw` on a box of the type that `kind` stands for.
+    value: *mut (),
+    kind: Kind,
+    /// The kernel vouches that the type's present name means the definition it was stored under.
+    relabelled: bool,
+}
 
-    fn into_value<T: 'static>(self) -> T {
-        // SAFETY: `fits` was asked before; `self` is forgotten, so the value has one owner.
-        let value = unsafe { Box::from_raw(self.value.cast::<T>()) };
-        std::mem::forget(self);
-        *value
+impl Slot {
+    fn fits(&self, kind: &Kind) -> bool {
+        self.kind.identity == kind.identity
+            || (self.relabelled && self.kind.size == kind.size && self.kind.align == kind.align)
     }
 }
 
 impl Drop for Slot {
     fn drop(&mut self) {
-        // SAFETY: the slot owns its value, which was not taken out (that forgets the slot).
-        unsafe { (self.free)(self.value) }
+        // SAFETY: the slot owns its value; one that was taken out forgets its slot.
+        unsafe { (self.kind.free)(self.value) }
     }
 }
 
@@ -71,32 +73,40 @@ impl Shelf {
         self.slots.contains_key(name)
     }
 
-    /// Takes a variable off the shelf, or says why that cannot be.
-    pub(super) fn take<T: 'static>(&mut self, name: &str) -> Result<T, String> {
-        let slot = self.slots.remove(name).ok_or_else(|| format!("there is no variable `{name}`"))?;
-        if slot.fits::<T>() {
-            return Ok(slot.into_value());
-        }
-        let found = slot.type_name;
-        self.slots.insert(name.to_owned(), slot);
-        Err(format!("`{name}` holds a {found}, not a {}", type_name::<T>()))
-    }
-
-    /// Whether `take` would succeed.
-    pub(super) fn fits<T: 'static>(&self, name: &str) -> Result<(), String> {
+    /// Whether a variable can be taken as this type, and if not why.
+    pub(super) fn fits(&self, name: &str, kind: &Kind) -> Result<(), String> {
         match self.slots.get(name) {
             None => Err(format!("there is no variable `{name}`")),
-            Some(slot) if slot.fits::<T>() => Ok(()),
+            Some(slot) if slot.fits(kind) => Ok(()),
             Some(slot) => {
-                Err(format!("`{name}` holds a {}, not a {}", slot.type_name, type_name::<T>()))
+                Err(format!("`{name}` holds a {}, not a {}", slot.kind.type_name, kind.type_name))
             }
         }
     }
 
+    /// Takes a variable off the shelf: the content of a box of the type, which the caller now owns.
+    pub(super) fn take(&mut self, name: &str, kind: &Kind) -> Result<*mut (), String> {
+        self.fits(name, kind)?;
+        let slot =
+            self.slots.remove(name).ok_or_else(|| format!("there is no variable `{name}`"))?;
+        let value = slot.value;
+        std::mem::forget(slot);
+        Ok(value)
+    }
+
     /// Puts a variable on the shelf; the one that was there under its name comes back, for the
     /// caller to drop where a panic in its destructor does no harm.
-    pub(super) fn put<T: 'static>(&mut self, name: &str, value: T) -> Option<Discarded> {
-        self.slots.insert(name.to_owned(), Slot::new(value)).map(Discarded)
+    ///
+    /// # Safety
+    /// `value` must come from `Box::into_raw` on a box of the type of `kind`; the shelf owns it now.
+    pub(super) unsafe fn put(
+        &mut self,
+        name: &str,
+        value: *mut (),
+        kind: Kind,
+    ) -> Option<Discarded> {
+        let slot = Slot { value, kind, relabelled: false };
+        self.slots.insert(name.to_owned(), slot).map(Discarded)
     }
 
     pub(super) fn remove(&mut self, name: &str) -> Option<Discarded> {
@@ -114,8 +124,17 @@ impl Shelf {
 pub(super) struct Discarded(Slot);
 
 impl Discarded {
+    /// A value that is not on the shelf.
+    ///
+    /// # Safety
+    /// As for [`Shelf::put`].
+    pub(super) unsafe fn new(value: *mut (), kind: Kind) -> Self {
+        Self(Slot { value, kind, relabelled: false })
+    }
+
     /// Drops the value; a panic in its destructor is reported instead of spread.
     pub(super) fn drop_quietly(self) -> Result<(), String> {
-        catch_unwind(AssertUnwindSafe(|| drop(self.0))).map_err(|panic| super::cell::words_of(&panic))
+        catch_unwind(AssertUnwindSafe(|| drop(self.0)))
+            .map_err(|panic| super::cell::words_of(&panic))
     }
 }

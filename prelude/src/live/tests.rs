@@ -2,24 +2,35 @@
 
 use super::cell::{Cell, words_of};
 use super::message::{Command, How, Report, read_frame, write_frame};
-use super::shelf::Shelf;
+use super::shelf::{Discarded, Kind, Shelf};
+
+fn put<T: 'static>(shelf: &mut Shelf, name: &str, value: T) -> Option<Discarded> {
+    // SAFETY: the box is of the type.
+    unsafe { shelf.put(name, Box::into_raw(Box::new(value)).cast(), Kind::of::<T>()) }
+}
+
+fn take<T: 'static>(shelf: &mut Shelf, name: &str) -> Result<T, String> {
+    let value = shelf.take(name, &Kind::of::<T>())?;
+    // SAFETY: the shelf hands over the content of a box of this type.
+    Ok(*unsafe { Box::from_raw(value.cast::<T>()) })
+}
 
 #[test]
 fn a_shelf_gives_back_what_was_put() {
     let mut shelf = Shelf::default();
-    assert!(shelf.put("x", vec![1, 2, 3]).is_none());
-    assert!(shelf.fits::<Vec<i32>>("x").is_ok());
-    assert_eq!(shelf.take::<Vec<i32>>("x"), Ok(vec![1, 2, 3]));
+    assert!(put(&mut shelf, "x", vec![1, 2, 3]).is_none());
+    assert!(shelf.fits("x", &Kind::of::<Vec<i32>>()).is_ok());
+    assert_eq!(take::<Vec<i32>>(&mut shelf, "x"), Ok(vec![1, 2, 3]));
     assert!(!shelf.holds("x"));
 }
 
 #[test]
 fn a_shelf_refuses_another_type_and_keeps_the_value() {
     let mut shelf = Shelf::default();
-    shelf.put("x", 1.5f64);
-    let error = shelf.take::<u64>("x").unwrap_err();
+    put(&mut shelf, "x", 1.5f64);
+    let error = take::<u64>(&mut shelf, "x").unwrap_err();
     assert!(error.contains("f64") && error.contains("u64"), "{error}");
-    assert_eq!(shelf.take::<f64>("x"), Ok(1.5));
+    assert_eq!(take::<f64>(&mut shelf, "x"), Ok(1.5));
 }
 
 #[test]
@@ -29,11 +40,11 @@ fn relabelling_lets_a_twin_type_through_but_not_another_size() {
     #[derive(Debug, PartialEq)]
     struct Twin(u32);
     let mut shelf = Shelf::default();
-    shelf.put("x", First(7));
-    assert!(shelf.fits::<Twin>("x").is_err());
+    put(&mut shelf, "x", First(7));
+    assert!(shelf.fits("x", &Kind::of::<Twin>()).is_err());
     shelf.relabel("x");
-    assert!(shelf.fits::<[u32; 2]>("x").is_err());
-    assert_eq!(shelf.take::<Twin>("x"), Ok(Twin(7)));
+    assert!(shelf.fits("x", &Kind::of::<[u32; 2]>()).is_err());
+    assert_eq!(take::<Twin>(&mut shelf, "x"), Ok(Twin(7)));
 }
 
 #[test]
@@ -45,16 +56,16 @@ fn a_panic_in_a_destructor_is_reported_and_goes_no_further() {
         }
     }
     let mut shelf = Shelf::default();
-    shelf.put("x", Loud);
-    let discarded = shelf.put("x", 1).expect("the old value comes back");
+    put(&mut shelf, "x", Loud);
+    let discarded = put(&mut shelf, "x", 1).expect("the old value comes back");
     assert_eq!(discarded.drop_quietly(), Err("not quietly".to_owned()));
-    assert_eq!(shelf.take::<i32>("x"), Ok(1));
+    assert_eq!(take::<i32>(&mut shelf, "x"), Ok(1));
 }
 
 #[test]
 fn a_variable_borrowed_by_a_panicking_body_goes_back() {
     let mut shelf = Shelf::default();
-    shelf.put("x", vec![1]);
+    put(&mut shelf, "x", vec![1]);
     let mut cell = Cell::new(&mut shelf);
     assert!(cell.ready::<Vec<i32>>("x"));
     let mut x: Vec<i32> = cell.take("x");
@@ -66,13 +77,13 @@ fn a_variable_borrowed_by_a_panicking_body_goes_back() {
     let finished = cell.finish();
     assert!(matches!(finished.how, How::Panicked(trouble) if trouble.message == "enough"));
     assert!(finished.gone.is_empty());
-    assert_eq!(shelf.take::<Vec<i32>>("x"), Ok(vec![1, 2]));
+    assert_eq!(take::<Vec<i32>>(&mut shelf, "x"), Ok(vec![1, 2]));
 }
 
 #[test]
 fn a_moved_variable_is_reported_gone_and_a_new_one_kept() {
     let mut shelf = Shelf::default();
-    shelf.put("x", String::from("moved"));
+    put(&mut shelf, "x", String::from("moved"));
     let mut cell = Cell::new(&mut shelf);
     let x: String = cell.take("x");
     cell.run(|cell| {
@@ -83,7 +94,7 @@ fn a_moved_variable_is_reported_gone_and_a_new_one_kept() {
     let finished = cell.finish();
     assert_eq!(finished.gone, ["x"]);
     assert_eq!(finished.kept, ["y"]);
-    assert_eq!(shelf.take::<String>("y"), Ok("moved".to_owned()));
+    assert_eq!(take::<String>(&mut shelf, "y"), Ok("moved".to_owned()));
 }
 
 #[test]
@@ -152,6 +163,7 @@ fn the_best_way_to_show_a_value_is_found_by_what_it_implements() {
 
 #[test]
 fn the_words_of_a_panic_are_found_inside_a_box() {
-    let carried: Box<dyn std::any::Any + Send> = Box::new(Box::new("inner") as Box<dyn std::any::Any + Send>);
+    let carried: Box<dyn std::any::Any + Send> =
+        Box::new(Box::new("inner") as Box<dyn std::any::Any + Send>);
     assert_eq!(words_of(&*carried), "inner");
 }

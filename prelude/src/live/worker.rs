@@ -17,7 +17,8 @@ use std::time::Duration;
 
 use super::cell::{Cell, note_panics};
 use super::message::{
-    Command, Ended, Form, How, INTERFACE, Report, Run, Trouble, linker_words, read_frame, write_frame,
+    Command, Ended, Form, How, INTERFACE, Report, Run, Trouble, linker_words, read_frame,
+    write_frame,
 };
 use super::shelf::Shelf;
 
@@ -49,8 +50,7 @@ enum Task {
 #[unsafe(no_mangle)]
 pub unsafe extern "C" fn semiaxis_worker(commands: i32, reports: i32) -> i32 {
     // SAFETY: the caller hands over the descriptors.
-    let (commands, reports) =
-        unsafe { (File::from_raw_fd(commands), File::from_raw_fd(reports)) };
+    let (commands, reports) = unsafe { (File::from_raw_fd(commands), File::from_raw_fd(reports)) };
     let (proceed, proceeds) = mpsc::channel();
     let lines = Lines { reports: Mutex::new(reports), proceed: Mutex::new(proceeds) };
     if LINES.set(lines).is_err() {
@@ -105,7 +105,8 @@ fn serve_cells(inbox: &Receiver<Task>) {
                 Report::Ended(ended)
             }
             Task::Forget(names) => {
-                let discarded: Vec<_> = names.iter().filter_map(|name| shelf.remove(name)).collect();
+                let discarded: Vec<_> =
+                    names.iter().filter_map(|name| shelf.remove(name)).collect();
                 let mut trouble = None;
                 for value in discarded {
                     trouble = trouble.or(value.drop_quietly().err());
@@ -138,12 +139,7 @@ fn run_cell(shelf: &mut Shelf, libraries: &mut Libraries, run: &Run) -> Ended {
         eprintln!("dropping a replaced value panicked: {trouble}");
     }
     let gone = finished.gone.into_iter().filter(|name| !shelf.holds(name)).collect();
-    Ended {
-        how: finished.how,
-        result: super::forms(&finished.result),
-        gone,
-        kept: finished.kept,
-    }
+    Ended { how: finished.how, result: super::forms(&finished.result), gone, kept: finished.kept }
 }
 
 /// The compiled cells loaded so far. They are never unloaded: values on the shelf, threads and
@@ -162,8 +158,9 @@ impl Libraries {
             if !self.loaded.contains_key(path) {
                 // SAFETY: the library was compiled for this worker by its kernel; its initializers
                 // are those of Rust code, which has none of its own.
-                let library = unsafe { libloading::Library::new(path) }
-                    .map_err(|error| format!("the compiled cell would not load: {}", linker_words(&error)))?;
+                let library = unsafe { libloading::Library::new(path) }.map_err(|error| {
+                    format!("the compiled cell would not load: {}", linker_words(&error))
+                })?;
                 self.loaded.insert(path.clone(), library);
             }
         }

@@ -57,7 +57,7 @@ const OFFERED: usize = 5;
 /// [`Error::UnclosedQuote`], [`Error::StrayQuote`], [`Error::BadJsonLine`],
 /// [`Error::MixedKinds`] and [`Error::Unreadable`] for what is in it.
 pub fn read_table(path: impl AsRef<Path>) -> Result<DataFrame> {
-    read_table_with(path, TableOptions::new())
+    read_at(path.as_ref(), &TableOptions::new())
 }
 
 /// Reads a table whose text departs from the usual: another delimiter, a decimal comma, other
@@ -80,15 +80,19 @@ pub fn read_table(path: impl AsRef<Path>) -> Result<DataFrame> {
 ///
 /// Those of [`read_table`], and [`Error::BadDelimiter`] for a delimiter that cannot be one.
 pub fn read_table_with(path: impl AsRef<Path>, options: TableOptions) -> Result<DataFrame> {
-    let path = path.as_ref();
+    read_at(path.as_ref(), &options)
+}
+
+/// Apart from the generic function, so that it is compiled once and not in every cell.
+fn read_at(path: &Path, options: &TableOptions) -> Result<DataFrame> {
     let extension = path
         .extension()
         .map(|extension| extension.to_string_lossy().to_lowercase())
         .filter(|extension| READABLE.contains(&extension.as_str()));
     let bytes = read_bytes(path, extension.is_some())?;
     match extension.as_deref() {
-        Some("csv") => delimited::read(path, bytes, ',', &options),
-        Some("tsv" | "tab") => delimited::read(path, bytes, '\t', &options),
+        Some("csv") => delimited::read(path, bytes, ',', options),
+        Some("tsv" | "tab") => delimited::read(path, bytes, '\t', options),
         Some("parquet") => columnar::read_parquet(path, bytes),
         Some("arrow" | "ipc" | "feather") => columnar::read_arrow(path, bytes),
         Some("jsonl" | "ndjson") => json_lines::read(path, bytes),
