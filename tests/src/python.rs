@@ -41,8 +41,8 @@ impl Python {
         debian::need(&["python3", "-c", "import venv, ensurepip"], &["python3", "python3-venv"]);
         let mut venv = Command::new("python3");
         succeed(venv.args(["-m", "venv"]).arg(&python.folder));
-        let mut pip = python.command(["-m", "pip", "install", "--quiet", "--requirement"]);
-        succeed(pip.arg("--disable-pip-version-check").arg(&requirements));
+        let mut pip = python.command(["-m", "pip", "install", "--quiet"]);
+        succeed(pip.args(["--disable-pip-version-check", "--requirement"]).arg(&requirements));
         std::fs::write(made_for, wanted).expect("the folder of the build can be written");
         python
     }

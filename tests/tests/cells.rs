@@ -2,10 +2,13 @@
 //! session of its own, as from a notebook.
 
 use std::collections::HashMap;
+use std::process::Command;
+use std::sync::OnceLock;
 use std::time::{Duration, Instant};
 
 use jupyter_protocol::{ExecuteRequest, JupyterMessageContent};
-use semiaxis_tests::client::{CELL, Client, Execution, LONG, Start};
+use semiaxis_tests::client::{CELL, Client, Execution, LONG, Start, kernel_executable};
+use semiaxis_tests::python::succeed;
 use semiaxis_tests::sequences::{self, Failure, Seen};
 
 /// One test for each file, so that a failure says at once which part of the cells' behaviour is
@@ -28,13 +31,22 @@ macro_rules! files {
 
 files!(bad_tables, diagnostics, extras, flow, items, moves, statistics, variables);
 
+/// Starts a kernel for which all is built, so that its first cell says nothing of a build.
+async fn start(start: Start) -> Client {
+    static PREPARED: OnceLock<()> = OnceLock::new();
+    PREPARED.get_or_init(|| {
+        succeed(Command::new(kernel_executable()).arg("prepare"));
+    });
+    Client::start_with(start).await
+}
+
 /// Sends every sequence of a file and reports all that went wrong at once.
 async fn send(file: &str) {
     let mut wrong = Vec::new();
     for sequence in sequences::read(file) {
         let folder = tempfile::tempdir().expect("a temporary folder");
-        let start = Start { working_dir: Some(folder.path().to_owned()), ..Start::default() };
-        let mut client = Client::start_with(start).await;
+        let settings = Start { working_dir: Some(folder.path().to_owned()), ..Start::default() };
+        let mut client = start(settings).await;
         for (cell_idx, cell) in sequence.cells.iter().enumerate() {
             let seen = seen(&client.execute(&cell.code).await);
             for problem in cell.check(&seen) {
@@ -75,7 +87,7 @@ fn seen(execution: &Execution) -> Seen {
 
 #[tokio::test]
 async fn output_without_a_newline_appears_at_once() {
-    let mut client = Client::start().await;
+    let mut client = start(Start::default()).await;
     client.execute_well("use std::time::Duration; use std::thread::sleep;").await;
     let code = "print!(\"begun\"); sleep(Duration::from_secs(3)); print!(\" and ended\");";
     let id = client.send(ExecuteRequest::new(code.to_owned())).await;
@@ -103,7 +115,7 @@ async fn output_without_a_newline_appears_at_once() {
 async fn run(cells: &[&str], environment: &[(&str, &str)]) -> String {
     let environment: HashMap<String, String> =
         environment.iter().map(|(name, value)| ((*name).to_owned(), (*value).to_owned())).collect();
-    let mut client = Client::start_with(Start { environment, ..Start::default() }).await;
+    let mut client = start(Start { environment, ..Start::default() }).await;
     let mut text = String::new();
     for cell in cells {
         let execution = client.execute_well(cell).await;

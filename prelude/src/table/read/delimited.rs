@@ -120,12 +120,22 @@ fn refine(column: &Column, decimal_comma: bool) -> Column {
     if let Some(numbers) = all_numbers(&text, decimal_comma) {
         return Series::new(column.name().clone(), numbers).into_column();
     }
-    if text.iter().flatten().all(is_iso_date)
-        && let Ok(dates) = column.strict_cast(&DataType::Date)
+    if let Some(days) = all_dates(&text)
+        && let Ok(dates) = Series::new(column.name().clone(), days).cast(&DataType::Date)
     {
-        return dates;
+        return dates.into_column();
     }
     column.clone()
+}
+
+/// Days since 1970-01-01, which is how the library keeps dates; its own way from text to dates is
+/// going away, and says so on the standard error of whoever reads a table.
+fn all_dates(text: &StringChunked) -> Option<Vec<Option<i32>>> {
+    let days = |cell: &str| {
+        let date = is_iso_date(cell).then(|| cell.parse::<chrono::NaiveDate>().ok())??;
+        i32::try_from((date - chrono::NaiveDate::default()).num_days()).ok()
+    };
+    text.iter().map(|cell| cell.map_or(Some(None), |cell| days(cell).map(Some))).collect()
 }
 
 fn all_numbers(text: &StringChunked, decimal_comma: bool) -> Option<Vec<Option<f64>>> {
