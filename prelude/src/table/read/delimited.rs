@@ -78,7 +78,7 @@ fn checked_delimiter(delimiter: char, decimal_comma: bool) -> Result<u8> {
     let usable = matches!(delimiter, '\t' | ' '..='~')
         && !delimiter.is_ascii_alphanumeric()
         && !matches!(delimiter, '"' | '.' | '-' | '+')
-        && !(decimal_comma && delimiter == ',');
+        && (!decimal_comma || delimiter != ',');
     if usable { Ok(delimiter as u8) } else { Err(Error::BadDelimiter { delimiter, decimal_comma }) }
 }
 
