@@ -21,6 +21,7 @@ use tokio::sync::mpsc;
 use super::cache::Cache;
 use super::types::{CellEvent, StreamName};
 use crate::setup::Kit;
+use crate::setup::kit::KitPackage;
 
 /// The extra crates of a session.
 #[derive(Debug, Default)]
@@ -69,14 +70,14 @@ impl Extras {
         if all.len() == self.wanted.len() {
             return Ok(());
         }
-        let table: String = all.iter().map(|(name, value)| format!("{name} = {value}\n")).collect();
+        let table = lines_of(&all);
         let before: String = self.sets.iter().filter_map(|set| set.crate_name.clone()).collect();
         let hash = blake3::hash(format!("{}\n{table}\n{before}", kit.stamp).as_bytes()).to_hex();
         let folder = cache.extras_folder().join(&hash[..16]);
         let set = match read(&folder) {
             Some(set) => set,
             None => {
-                let project = Project { kit, extras: self, folder: &folder, table: &table, events };
+                let project = Project { kit, extras: self, folder: &folder, events };
                 project.build(&hash[..16], &all).await?
             }
         };
@@ -144,7 +145,6 @@ struct Project<'a> {
     kit: &'a Kit,
     extras: &'a Extras,
     folder: &'a Path,
-    table: &'a str,
     events: &'a mpsc::Sender<CellEvent>,
 }
 
@@ -184,18 +184,19 @@ impl Project<'_> {
             return Ok(set);
         }
         std::fs::write(self.folder.join("lib.rs"), "").map_err(trouble)?;
-        self.write_manifest("").map_err(trouble)?;
+        let plain: String = lines_of(all);
+        self.write_manifest(&plain).map_err(trouble)?;
         let graph = self.cargo(&["metadata", "--format-version=1"], false).await?;
         let graph: Value = serde_json::from_str(graph.last().map_or("", String::as_str))
             .map_err(|error| format!("cargo's account of the crates cannot be read: {error}"))?;
-        let pins = self.pins(&graph);
-        self.write_manifest(&pins).map_err(trouble)?;
-        // Features that the new crates add to shared ones can make the pins impossible; the crates
-        // are then built apart from the prelude's.
+        let shared = self.sharing(all, &graph);
+        self.write_manifest(&shared).map_err(trouble)?;
+        // What the header asks for can make sharing impossible; the crates are then built apart from
+        // the prelude's, and their types are not the prelude's.
         let lines = match self.cargo(&BUILD, true).await {
             Ok(lines) => lines,
-            Err(_) if !pins.is_empty() => {
-                self.write_manifest("").map_err(trouble)?;
+            Err(_) if shared != plain => {
+                self.write_manifest(&plain).map_err(trouble)?;
                 self.cargo(&BUILD, true).await?
             }
             Err(words) => return Err(words),
@@ -210,42 +211,61 @@ impl Project<'_> {
         Ok(set)
     }
 
-    fn write_manifest(&self, pins: &str) -> std::io::Result<()> {
+    fn write_manifest(&self, dependencies: &str) -> std::io::Result<()> {
         let manifest = format!(
             "[workspace]\n[package]\nname = \"cell-extras\"\nversion = \"0.0.0\"\nedition = \"2024\"\n\
-             [lib]\npath = \"lib.rs\"\n[dependencies]\n{}{pins}\n{}\n",
-            self.table, self.kit.profile
+             [lib]\npath = \"lib.rs\"\n[dependencies]\n{dependencies}\n{}\n",
+            self.kit.profile
         );
         std::fs::write(self.folder.join("Cargo.toml"), manifest)?;
         std::fs::copy(&self.kit.lock, self.folder.join("Cargo.lock")).map(|_| ())
     }
 
-    /// Asks for crates that the prelude stands on too with the features that it has them with.
-    fn pins(&self, graph: &Value) -> String {
-        let mut known: BTreeMap<(&str, &str), Vec<&crate::setup::kit::KitPackage>> =
-            BTreeMap::new();
+    /// The dependencies of the project such that every crate on which the prelude stands too is asked
+    /// for in the prelude's version, with the features that the prelude has it with and those that
+    /// the header names, and no others; cargo then finds it compiled.
+    fn sharing(&self, all: &BTreeMap<String, String>, graph: &Value) -> String {
+        let mut known: BTreeMap<(&str, &str), Vec<&KitPackage>> = BTreeMap::new();
         for package in &self.kit.packages {
             known.entry((&package.name, &package.version)).or_default().push(package);
         }
-        let mut pins = String::new();
-        for (idx, package) in graph["packages"].as_array().into_iter().flatten().enumerate() {
-            let key = (
-                package["name"].as_str().unwrap_or_default(),
-                package["version"].as_str().unwrap_or_default(),
-            );
-            // A crate that is there twice is there for build scripts or macros too, and which is
-            // which cannot be told.
-            let Some([one]) = known.get(&key).map(Vec::as_slice) else { continue };
-            let features: Vec<String> =
-                one.features.iter().map(|feature| format!("{feature:?}")).collect();
-            pins.push_str(&format!(
-                "shared-{idx} = {{ package = {:?}, version = \"={}\", default-features = false, features = [{}] }}\n",
-                one.name,
-                one.version,
-                features.join(", ")
-            ));
+        // A crate that is there twice is there for build scripts or macros too, and which is which
+        // cannot be told.
+        let in_kit = |package: &Value| -> Option<&KitPackage> {
+            let key = (package["name"].as_str()?, package["version"].as_str()?);
+            match known.get(&key).map(Vec::as_slice) {
+                Some([one]) => Some(*one),
+                _ => None,
+            }
+        };
+        let packages = graph["packages"].as_array();
+        let by_id: BTreeMap<&str, &Value> = packages
+            .into_iter()
+            .flatten()
+            .filter_map(|package| Some((package["id"].as_str()?, package)))
+            .collect();
+        let asked = direct(graph);
+        let mut lines = String::new();
+        for (name, requirement) in all {
+            let package = asked
+                .iter()
+                .find(|(asked, _)| *asked == name.replace('-', "_"))
+                .and_then(|(_, id)| in_kit(by_id.get(id.as_str())?));
+            let line = package.and_then(|package| with_features_of(requirement, package));
+            lines.push_str(&format!("{name} = {}\n", line.as_ref().unwrap_or(requirement)));
         }
-        pins
+        for (idx, (id, package)) in by_id.iter().enumerate() {
+            if asked.iter().any(|(_, asked)| asked == id) {
+                continue;
+            }
+            if let Some(package) = in_kit(package) {
+                let requirement = format!("{{ package = {:?} }}", package.name);
+                if let Some(line) = with_features_of(&requirement, package) {
+                    lines.push_str(&format!("shared-{idx} = {line}\n"));
+                }
+            }
+        }
+        lines
     }
 
     /// Runs cargo in the project; gives the lines of its standard output.
@@ -377,6 +397,7 @@ impl Project<'_> {
         command.arg(joined("semiaxis=", &self.kit.prelude));
         command
             .arg(joined("-Ldependency=", &self.kit.dependencies))
+            .arg(joined("-Ldependency=", &self.kit.dir))
             .arg(joined("-Ldependency=", &set.folder));
         command.args(self.extras.arguments());
         for (name, file) in &set.named {
@@ -403,6 +424,26 @@ impl Project<'_> {
         set.library = Some(library);
         Ok(())
     }
+}
+
+fn lines_of(all: &BTreeMap<String, String>) -> String {
+    all.iter().map(|(name, value)| format!("{name} = {value}\n")).collect()
+}
+
+/// A requirement for the very crate that the prelude has.
+fn with_features_of(requirement: &str, package: &KitPackage) -> Option<String> {
+    let table: toml::Table = toml::from_str(&format!("it = {requirement}")).ok()?;
+    let mut table = match table.get("it")? {
+        toml::Value::Table(table) => table.clone(),
+        _ => toml::Table::new(),
+    };
+    let mut features: BTreeSet<String> = package.features.iter().cloned().collect();
+    let asked = table.get("features").and_then(toml::Value::as_array).into_iter().flatten();
+    features.extend(asked.filter_map(|feature| feature.as_str().map(str::to_owned)));
+    table.insert("version".to_owned(), format!("={}", package.version).into());
+    table.insert("default-features".to_owned(), false.into());
+    table.insert("features".to_owned(), features.into_iter().collect::<Vec<_>>().into());
+    Some(toml::Value::Table(table).to_string().replace('\n', " "))
 }
 
 const BUILD: [&str; 3] = ["build", "--release", "--message-format=json"];
@@ -468,4 +509,53 @@ fn tidy(words: &str, folder: &Path) -> String {
             .any(|start| line.starts_with(start))
     });
     lines.map(|line| line.replace(place.as_ref(), "the header")).collect::<Vec<_>>().join("\n")
+}
+
+#[cfg(test)]
+mod tests {
+    use super::*;
+
+    fn package() -> KitPackage {
+        KitPackage {
+            name: "rand_distr".into(),
+            version: "0.6.0".into(),
+            features: vec!["std".into(), "alloc".into()],
+            artifact: "librand_distr-0123456789abcdef".into(),
+        }
+    }
+
+    fn read(line: &str) -> toml::Table {
+        let table: toml::Table = toml::from_str(&format!("it = {line}")).expect("one line of TOML");
+        table["it"].as_table().expect("a table").clone()
+    }
+
+    #[test]
+    fn a_shared_crate_is_asked_for_as_the_prelude_has_it() {
+        for requirement in ["\"0.6\"", "{ version = \"0.6\", features = [\"serde\"] }"] {
+            let line = with_features_of(requirement, &package()).unwrap();
+            let table = read(&line);
+            assert_eq!(table["version"].as_str(), Some("=0.6.0"));
+            assert_eq!(table["default-features"].as_bool(), Some(false));
+            let features = table["features"].as_array().unwrap().len();
+            assert_eq!(features, if requirement.contains("serde") { 3 } else { 2 }, "{line}");
+        }
+    }
+
+    #[test]
+    fn only_libraries_and_macros_are_artifacts_of_interest() {
+        let line = |kind: &str| {
+            format!(
+                "{{\"reason\":\"compiler-artifact\",\"package_id\":\"p\",\"target\":{{\"kind\":[\"{kind}\"],\
+                 \"name\":\"a-b\"}},\"filenames\":[\"/t/liba_b-1.rlib\",\"/t/liba_b-1.rmeta\"],\"fresh\":false}}"
+            )
+        };
+        let library = artifact(&line("lib")).unwrap();
+        assert_eq!(
+            (library.crate_name.as_str(), library.stem().as_deref()),
+            ("a_b", Some("liba_b-1"))
+        );
+        assert!(artifact(&line("custom-build")).is_none());
+        assert!(artifact("not JSON").is_none());
+        assert_eq!(progress(&line("lib")).as_deref(), Some("compiled the crate a-b"));
+    }
 }

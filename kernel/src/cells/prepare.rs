@@ -278,6 +278,7 @@ impl Engine {
             arguments.push(argument);
         };
         folder(&self.kit.dependencies);
+        folder(&self.kit.dir);
         // A crate that another crate needs is looked for in folders only, named or not.
         for name in self.account.closure(crates) {
             if let Some(parent) = self.account.crates[&name].library.parent() {
