@@ -103,7 +103,8 @@ pub fn kernel_executable() -> &'static Path {
         let test = std::env::current_exe().expect("the test knows its own path");
         // A test lies in <profile>/deps, another program of this package beside the kernel.
         let folder = test.parent().expect("an executable lies in a folder");
-        let folder = if folder.ends_with("deps") { folder.parent().unwrap_or(folder) } else { folder };
+        let folder =
+            if folder.ends_with("deps") { folder.parent().unwrap_or(folder) } else { folder };
         // Where the tests were built, for that need not be where cargo would build by itself.
         let target = folder.parent().expect("a profile's folder lies in the target folder");
         let mut build =

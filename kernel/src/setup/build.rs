@@ -143,7 +143,7 @@ fn run_cargo(
         .args(["rustc", "--release", "--locked", "-p", "semiaxis", "--crate-type", "dylib"])
         .args(chosen)
         .args(["--message-format=json-render-diagnostics", "--color=never", "--"])
-        .args(prelude_flags(compiler, name))
+        .args(prelude_flags(compiler, &place.home, name))
         .env("RUSTC_WORKSPACE_WRAPPER", wrapper(&place.home)?)
         .stdout(Stdio::piped())
         .stderr(Stdio::piped())
@@ -206,12 +206,15 @@ fn wrapper(home: &KitHome) -> Result<PathBuf, SetupError> {
     Ok(path)
 }
 
-fn prelude_flags(compiler: &Compiler, name: &str) -> Vec<String> {
+fn prelude_flags(compiler: &Compiler, home: &KitHome, name: &str) -> Vec<String> {
     let library = compiler.sysroot.join("lib").join("rustlib").join(compiler.host()).join("lib");
     vec![
         "-Cprefer-dynamic".to_owned(),
-        // What the prelude instantiates of generic code, the cells need not.
+        // What the prelude instantiates of generic code, the cells need not; code that drops values
+        // is among that only where the compiler works incrementally.
         "-Zshare-generics=y".to_owned(),
+        "-Ccodegen-units=16".to_owned(),
+        format!("-Cincremental={}", home.parts().display()),
         "-Clink-arg=-Wl,-rpath,$ORIGIN".to_owned(),
         format!("-Clink-arg=-Wl,-rpath,{}", library.display()),
         format!("-Clink-arg=-Wl,--build-id=0x{name}"),

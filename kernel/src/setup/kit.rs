@@ -141,6 +141,11 @@ impl KitHome {
         self.compilers.with_file_name("compile-prelude")
     }
 
+    /// Where the compiler keeps parts of the prelude, so that a small change is compiled quickly.
+    pub fn parts(&self) -> PathBuf {
+        self.compilers.with_file_name("prelude-parts")
+    }
+
     /// The folder of one kit.
     pub fn folder(&self, stamp: &str) -> PathBuf {
         self.kits.join(stamp)

@@ -78,7 +78,7 @@ const KINDS: [(&str, &str); 5] = [
         "function and struct",
         "struct Load# { name: String, size: f64 }\n\
          fn largest#(x: &DataMatrix) -> Load# {\n    \
-             let sums = x.values().row_sum();\n    \
+             let sums = x.values().row_sum_tr();\n    \
              let at = sums.imax();\n    \
              Load# { name: x.variables()[at].to_string(), size: sums[at] }\n}\n\
          let load# = largest#(&x);\nprintln!(\"{} {}\", load#.name, load#.size);",
@@ -154,9 +154,11 @@ fn resident(process: u32) -> u64 {
 }
 
 fn children(process: u32) -> Vec<u32> {
-    let path = format!("/proc/{process}/task/{process}/children");
-    let all = std::fs::read_to_string(path).unwrap_or_default();
-    all.split_whitespace().filter_map(|id| id.parse().ok()).collect()
+    let tasks = std::fs::read_dir(format!("/proc/{process}/task")).into_iter().flatten().flatten();
+    let all: Vec<String> = tasks
+        .filter_map(|task| std::fs::read_to_string(task.path().join("children")).ok())
+        .collect();
+    all.iter().flat_map(|line| line.split_whitespace()).filter_map(|id| id.parse().ok()).collect()
 }
 
 struct Compiler {
