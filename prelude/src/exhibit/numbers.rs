@@ -103,7 +103,7 @@ pub(crate) fn grouped(count: usize) -> String {
     }
     let mut out = String::with_capacity(digits.len() + digits.len() / 3 * 3);
     for (place, digit) in digits.chars().enumerate() {
-        if place > 0 && (digits.len() - place) % 3 == 0 {
+        if place > 0 && (digits.len() - place).is_multiple_of(3) {
             out.push('\u{202f}');
         }
         out.push(digit);

@@ -75,10 +75,12 @@ pub(super) fn read(
 }
 
 fn checked_delimiter(delimiter: char, decimal_comma: bool) -> Result<u8> {
-    let usable = matches!(delimiter, '\t' | ' '..='~')
-        && !delimiter.is_ascii_alphanumeric()
-        && !matches!(delimiter, '"' | '.' | '-' | '+')
-        && !(decimal_comma && delimiter == ',');
+    let in_numbers = match delimiter {
+        '.' | '-' | '+' => true,
+        ',' => decimal_comma,
+        _ => delimiter.is_ascii_alphanumeric(),
+    };
+    let usable = matches!(delimiter, '\t' | ' '..='~') && delimiter != '"' && !in_numbers;
     if usable { Ok(delimiter as u8) } else { Err(Error::BadDelimiter { delimiter, decimal_comma }) }
 }
 
