@@ -242,12 +242,12 @@ impl Engine {
                 self.cache.keep(&crate_name, workplace, &entry).map_err(trouble)?;
                 return Ok(Built::Ready { crate_name, text, entry, compiled: true });
             }
+            let before = without.clone();
             if let Some(more) = answer.can_do_without(&text) {
-                let before = without.clone();
                 without.extend(more);
-                if without != before {
-                    continue;
-                }
+            }
+            if without != before {
+                continue;
             }
             return Ok(Built::Failed { crate_name, answer, text });
         }

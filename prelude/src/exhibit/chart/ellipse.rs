@@ -46,7 +46,8 @@ impl Ellipse {
         let longer = middle + radius;
         let shorter = (xx * yy - xy * xy) / longer;
         // Points on a line leave only rounding error in the second root.
-        let flat = !(shorter > longer * 1e-12);
+        // A comparison that a NaN fails, too.
+        let flat = shorter.partial_cmp(&(longer * 1e-12)) != Some(std::cmp::Ordering::Greater);
         if flat || !longer.is_finite() {
             return None;
         }

@@ -75,12 +75,10 @@ pub(super) fn read(
 }
 
 fn checked_delimiter(delimiter: char, decimal_comma: bool) -> Result<u8> {
-    let in_numbers = match delimiter {
-        '.' | '-' | '+' => true,
-        ',' => decimal_comma,
-        _ => delimiter.is_ascii_alphanumeric(),
-    };
-    let usable = matches!(delimiter, '\t' | ' '..='~') && delimiter != '"' && !in_numbers;
+    let usable = matches!(delimiter, '\t' | ' '..='~')
+        && !delimiter.is_ascii_alphanumeric()
+        && !matches!(delimiter, '"' | '.' | '-' | '+')
+        && (!decimal_comma || delimiter != ',');
     if usable { Ok(delimiter as u8) } else { Err(Error::BadDelimiter { delimiter, decimal_comma }) }
 }
 
