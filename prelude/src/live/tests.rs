@@ -35,8 +35,9 @@ fn a_shelf_refuses_another_type_and_keeps_the_value() {
 
 #[test]
 fn relabelling_lets_a_twin_type_through_but_not_another_size() {
-    #[derive(Debug)]
-    struct First(#[expect(dead_code, reason = "only its type and size matter")] u32);
+    #[derive(Debug, PartialEq)]
+    struct First(u32);
+    assert_ne!(First(6), First(7));
     #[derive(Debug, PartialEq)]
     struct Twin(u32);
     let mut shelf = Shelf::default();

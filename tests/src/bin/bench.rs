@@ -44,7 +44,7 @@ async fn main() {
     line("cell compiled in an earlier session", &starts, None);
 
     heading("resident after the first decomposition (budget 150 MB)");
-    memory.sort_by_key(|one| one.total());
+    memory.sort_by_key(Resident::total);
     let Resident { kernel, worker } = &memory[memory.len() / 2];
     println!("  kernel {kernel} MB, worker {worker} MB, together {} MB", kernel + worker);
 
