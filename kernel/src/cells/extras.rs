@@ -41,11 +41,16 @@ struct Set {
     named: BTreeMap<String, PathBuf>,
     /// The folder with the files of new crates.
     folder: PathBuf,
+    /// A hash of what is new.
+    content: String,
     /// Stems of the files of new crates, so that later sets do not link them again.
     stems: BTreeSet<String>,
 }
 
 const ACCOUNT: &str = "extras.json";
+
+/// How often the features of shared crates may bring in further shared crates.
+const MOST_ROUNDS: usize = 6;
 
 impl Extras {
     /// Builds what is not there yet; the error is for the person, cargo's own words included.
@@ -124,7 +129,7 @@ impl Extras {
 
     /// What tells one set of extra crates from another.
     pub fn identity(&self) -> String {
-        self.sets.iter().map(|set| format!("{}\n", set.folder.display())).collect()
+        self.sets.iter().map(|set| format!("{} {}\n", set.folder.display(), set.content)).collect()
     }
 }
 
@@ -184,19 +189,31 @@ impl Project<'_> {
             return Ok(set);
         }
         std::fs::write(self.folder.join("lib.rs"), "").map_err(trouble)?;
+        std::fs::write(self.folder.join("build.rs"), "fn main() {}").map_err(trouble)?;
         let plain: String = lines_of(all);
         self.write_manifest(&plain).map_err(trouble)?;
-        let graph = self.cargo(&["metadata", "--format-version=1"], false).await?;
-        let graph: Value = serde_json::from_str(graph.last().map_or("", String::as_str))
-            .map_err(|error| format!("cargo's account of the crates cannot be read: {error}"))?;
-        let shared = self.sharing(all, &graph);
-        self.write_manifest(&shared).map_err(trouble)?;
+        let mut graph = self.graph().await?;
+        // Sharing a crate brings in what its features need, which must be shared in turn.
+        let mut shared = plain.clone();
+        for _ in 0..MOST_ROUNDS {
+            let more = self.sharing(all, &graph);
+            if more == shared {
+                break;
+            }
+            shared = more;
+            self.write_manifest(&shared).map_err(trouble)?;
+            match self.graph().await {
+                Ok(found) => graph = found,
+                Err(_) => break,
+            }
+        }
         // What the header asks for can make sharing impossible; the crates are then built apart from
         // the prelude's, and their types are not the prelude's.
         let lines = match self.cargo(&BUILD, true).await {
             Ok(lines) => lines,
             Err(_) if shared != plain => {
                 self.write_manifest(&plain).map_err(trouble)?;
+                graph = self.graph().await?;
                 self.cargo(&BUILD, true).await?
             }
             Err(words) => return Err(words),
@@ -213,7 +230,7 @@ impl Project<'_> {
 
     fn write_manifest(&self, dependencies: &str) -> std::io::Result<()> {
         let manifest = format!(
-            "[workspace]\n[package]\nname = \"cell-extras\"\nversion = \"0.0.0\"\nedition = \"2024\"\n\
+            "[workspace]\n[package]\nname = \"cell-extras\"\nversion = \"0.0.0\"\nedition = \"2024\"\nbuild = \"build.rs\"\n\
              [lib]\npath = \"lib.rs\"\n[dependencies]\n{dependencies}\n{}\n",
             self.kit.profile
         );
@@ -225,26 +242,15 @@ impl Project<'_> {
     /// for in the prelude's version, with the features that the prelude has it with and those that
     /// the header names, and no others; cargo then finds it compiled.
     fn sharing(&self, all: &BTreeMap<String, String>, graph: &Value) -> String {
-        let mut known: BTreeMap<(&str, &str), Vec<&KitPackage>> = BTreeMap::new();
-        for package in &self.kit.packages {
-            known.entry((&package.name, &package.version)).or_default().push(package);
-        }
-        // A crate that is there twice is there for build scripts or macros too, and which is which
-        // cannot be told.
-        let in_kit = |package: &Value| -> Option<&KitPackage> {
-            let key = (package["name"].as_str()?, package["version"].as_str()?);
-            match known.get(&key).map(Vec::as_slice) {
-                Some([one]) => Some(*one),
-                _ => None,
-            }
-        };
+        let in_kit = |package: &Value| only(&self.kit.packages, package);
         let packages = graph["packages"].as_array();
         let by_id: BTreeMap<&str, &Value> = packages
             .into_iter()
             .flatten()
             .filter_map(|package| Some((package["id"].as_str()?, package)))
             .collect();
-        let asked = direct(graph);
+        let mut asked = direct(graph);
+        asked.retain(|(asked, _)| all.keys().any(|name| name.replace('-', "_") == *asked));
         let mut lines = String::new();
         for (name, requirement) in all {
             let package = asked
@@ -254,18 +260,23 @@ impl Project<'_> {
             let line = package.and_then(|package| with_features_of(requirement, package));
             lines.push_str(&format!("{name} = {}\n", line.as_ref().unwrap_or(requirement)));
         }
-        for (idx, (id, package)) in by_id.iter().enumerate() {
-            if asked.iter().any(|(_, asked)| asked == id) {
-                continue;
-            }
-            if let Some(package) = in_kit(package) {
-                let requirement = format!("{{ package = {:?} }}", package.name);
-                if let Some(line) = with_features_of(&requirement, package) {
-                    lines.push_str(&format!("shared-{idx} = {line}\n"));
-                }
-            }
+        let others = by_id.iter().filter(|(id, _)| !asked.iter().any(|(_, asked)| asked == *id));
+        for package in others.filter_map(|(_, package)| in_kit(package)) {
+            lines.push_str(&shared_line(package));
+        }
+        // A macro with other features is another macro, and so is every crate that uses it.
+        lines.push_str("[build-dependencies]\n");
+        for package in by_id.values().filter_map(|package| only(&self.kit.host, package)) {
+            lines.push_str(&shared_line(package));
         }
         lines
+    }
+
+    /// Cargo's account of the project's crates.
+    async fn graph(&self) -> Result<Value, String> {
+        let lines = self.cargo(&["metadata", "--format-version=1"], false).await?;
+        serde_json::from_str(lines.last().map_or("", String::as_str))
+            .map_err(|error| format!("cargo's account of the crates cannot be read: {error}"))
     }
 
     /// Runs cargo in the project; gives the lines of its standard output.
@@ -371,7 +382,14 @@ impl Project<'_> {
                 named.insert(dependency, file);
             }
         }
-        let mut set = Set { crate_name: None, library: None, named, folder: files, stems };
+        let mut set = Set {
+            crate_name: None,
+            library: None,
+            named,
+            folder: files,
+            content: String::new(),
+            stems,
+        };
         if !set.stems.is_empty() {
             self.link(hash, &mut set).await?;
         }
@@ -420,14 +438,33 @@ impl Project<'_> {
                 String::from_utf8_lossy(&output.stderr)
             ));
         }
+        let bytes = std::fs::read(&library).map_err(|error| error.to_string())?;
+        set.content = blake3::hash(&bytes).to_hex().to_string();
         set.crate_name = Some(crate_name);
         set.library = Some(library);
         Ok(())
     }
 }
 
+/// A package of the kit, if the kit has it once; one that is there twice is there in two shapes, and
+/// which of them is wanted cannot be told.
+fn only<'a>(packages: &'a [KitPackage], package: &Value) -> Option<&'a KitPackage> {
+    let (name, version) = (package["name"].as_str()?, package["version"].as_str()?);
+    let mut found = packages.iter().filter(|known| known.name == name && known.version == version);
+    found.next().filter(|_| found.next().is_none())
+}
+
 fn lines_of(all: &BTreeMap<String, String>) -> String {
     all.iter().map(|(name, value)| format!("{name} = {value}\n")).collect()
+}
+
+/// A line that asks for the very crate that the kit has.
+fn shared_line(package: &KitPackage) -> String {
+    let requirement = format!("{{ package = {:?} }}", package.name);
+    let version = package.version.replace(['.', '+'], "-");
+    with_features_of(&requirement, package)
+        .map(|line| format!("shared-{}-{version} = {line}\n", package.name))
+        .unwrap_or_default()
 }
 
 /// A requirement for the very crate that the prelude has.

@@ -265,7 +265,10 @@ impl Engine {
         };
         named("semiaxis", &self.kit.prelude);
         for (name, path) in &self.kit.externs {
-            named(name, path);
+            // A header may have brought in the crate in another shape.
+            if !self.extras.has(name) {
+                named(name, path);
+            }
         }
         for name in crates {
             if let Some(found) = self.account.crates.get(name) {

@@ -115,6 +115,7 @@ fn fill(
         rustc_version: compiler.version.clone(),
         sysroot: compiler.sysroot.clone(),
         packages,
+        host: host_packages(&built.artifacts),
         lock: dir.join("Cargo.lock"),
         profile: sources.profile.clone(),
         target_dir: built.target_dir.clone(),
@@ -196,4 +197,26 @@ fn remove(dir: &Path) -> Result<(), SetupError> {
         }
         _ => Ok(()),
     }
+}
+
+/// The crates behind procedural macros and build scripts, and the macros themselves. Cargo's name of
+/// a package ends in `#name@version`.
+fn host_packages(artifacts: &[Artifact]) -> Vec<KitPackage> {
+    let packages = artifacts.iter().filter(|artifact| {
+        artifact.profile.opt_level == "0"
+            && !artifact.target.kind.iter().any(|kind| kind == "custom-build")
+    });
+    let mut packages: Vec<KitPackage> = packages
+        .filter_map(|artifact| {
+            let (name, version) = artifact.package_id.rsplit_once('#')?.1.rsplit_once('@')?;
+            Some(KitPackage {
+                name: name.to_owned(),
+                version: version.to_owned(),
+                features: artifact.features.clone(),
+                artifact: String::new(),
+            })
+        })
+        .collect();
+    packages.sort_by(|a, b| (&a.name, &a.version).cmp(&(&b.name, &b.version)));
+    packages
 }

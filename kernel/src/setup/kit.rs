@@ -44,6 +44,8 @@ pub struct Kit {
     pub sysroot: PathBuf,
     /// Every crate inside the prelude's library.
     pub packages: Vec<KitPackage>,
+    /// The crates that only procedural macros and build scripts needed.
+    pub host: Vec<KitPackage>,
     /// A copy of the `Cargo.lock` that the kit was built by.
     pub lock: PathBuf,
     /// The `[profile…]` sections of the workspace manifest.
