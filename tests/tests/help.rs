@@ -27,8 +27,8 @@ async fn matches(client: &mut Client, code: &str) -> Vec<String> {
     reply["matches"].as_array().unwrap().iter().map(|m| m.as_str().unwrap().to_owned()).collect()
 }
 
-#[tokio::test]
-async fn what_follows_a_dot_is_what_the_type_has_and_comes_at_once() {
+/// A session in which the cells have run and the index is there.
+async fn session() -> Client {
     let mut client = Client::start().await;
     for cell in CELLS {
         client.execute_well(cell).await;
@@ -38,6 +38,12 @@ async fn what_follows_a_dot_is_what_the_type_has_and_comes_at_once() {
     while !matches(&mut client, "read_ta").await.contains(&"read_table".to_owned()) {
         assert!(Instant::now() < deadline, "the index is never read");
     }
+    client
+}
+
+#[tokio::test]
+async fn what_follows_a_dot_is_what_the_type_has_and_comes_at_once() {
+    let mut client = session().await;
     for (code, expected) in [
         ("pca.", &["variances", "loadings", "scores", "project"][..]),
         ("tiles.", &["data_matrix", "data_matrix_of", "height", "select"]),
@@ -77,14 +83,7 @@ async fn what_follows_a_dot_is_what_the_type_has_and_comes_at_once() {
 
 #[tokio::test]
 async fn names_are_explained_with_their_documentation_and_their_cell() {
-    let mut client = Client::start().await;
-    for cell in CELLS {
-        client.execute_well(cell).await;
-    }
-    let deadline = Instant::now() + Duration::from_secs(30);
-    while !matches(&mut client, "read_ta").await.contains(&"read_table".to_owned()) {
-        assert!(Instant::now() < deadline, "the index is never read");
-    }
+    let mut client = session().await;
     for (code, cursor_pos, expected) in [
         (
             "principal_components(&x, )",

@@ -357,7 +357,7 @@ mod tests {
     #[test]
     fn names_carry_signature_documentation_and_owner() {
         let kiln = "/// A kiln.\n///\n/// It burns.\npub struct Kiln<T> { /// Degrees.\n pub heat: T, hidden: u8 }\n\
-            impl<T> Kiln<T> {\n /// Fires it.\n pub fn fire(\n  &mut self,\n  hours: f64,\n ) -> Result<T> { todo!() }\n\
+            impl<T> Kiln<T> {\n /// Fires it.\n pub fn fire(\n  &mut self,\n  hours: f64,\n ) -> Result<T> { self.burn(hours) }\n\
             fn private(&self) {}\n pub fn new() -> Self { loop {} } }\n\
             pub enum Colour { Red, Grey(u8) }\n\
             pub trait Weigh { /// In grams.\n fn weigh(&self) -> f64; }\n\
