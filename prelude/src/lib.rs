@@ -9,6 +9,10 @@ pub mod prelude;
 pub mod random;
 pub mod table;
 
+mod distributions;
+mod quantile;
+mod repeat;
+
 pub use error::{Error, Result};
 pub use nalgebra;
 pub use polars;

@@ -21,6 +21,7 @@ mod result;
 mod fit;
 
 mod cross;
+mod exhibit;
 mod scores;
 pub(crate) mod spectrum;
 pub(crate) mod views;

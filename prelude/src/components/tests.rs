@@ -1,5 +1,5 @@
 //! Properties, closed forms and faults. Values from outside programs and books are in the
-//! workspace's `tests/tests/references.rs`.
+//! workspace's `tests/tests/references`.
 
 use nalgebra::{DMatrix, DVector, dmatrix};
 use proptest::prelude::*;

@@ -133,17 +133,8 @@ impl Exhibit for MissingValues {
         let by_pattern = Table::new("Rows by what they miss")
             .column(TableColumn::texts("missing together", patterns).as_row_heads())
             .column(TableColumn::counts("rows", self.patterns().iter().map(|p| p.n_rows)));
-        both(&by_column, &by_pattern)
+        stacked(&[&by_column, &by_pattern])
     }
-}
-
-/// Two tables in one exhibit, one under the other.
-pub(super) fn both(first: &Table, second: &Table) -> Bundle {
-    Bundle::new().with_html(format!("{}{}", first.html(), second.html())).with_plain(format!(
-        "{}\n\n{}",
-        first.plain(),
-        second.plain()
-    ))
 }
 
 fn matrix_table(

@@ -14,7 +14,6 @@ mod tables;
 
 mod frames;
 mod matrices;
-mod results;
 mod values;
 
 mod numbers;
@@ -26,6 +25,9 @@ mod tests;
 pub use chart::{Chart, Names, Reference, biplot, loading_plot, score_plot, scree};
 pub use numbers::{fixed, significant, stored};
 pub use tables::{NumberFormat, Table, TableColumn};
+
+pub(crate) use numbers::{counted, grouped};
+pub(crate) use tables::{Abridged, stacked};
 
 /// The same content in several forms; a client shows the richest one it knows.
 #[derive(Debug, Clone, Default, PartialEq)]

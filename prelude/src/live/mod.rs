@@ -10,6 +10,7 @@
 pub mod message;
 
 mod cell;
+mod progress;
 mod seen;
 mod shelf;
 #[cfg(test)]
@@ -19,6 +20,7 @@ mod worker;
 use std::sync::atomic::{AtomicBool, AtomicU64, Ordering};
 
 pub use cell::{Cell, Failure, leaving, left};
+pub use progress::Progress;
 pub use seen::{ByDebug, ByDisplay, ByExhibit, ByName, Seen};
 
 use crate::exhibit::{Bundle, Content};

@@ -6,7 +6,6 @@ use faer::{Accum, Par};
 use nalgebra::{DMatrix, DVector};
 use rand::RngExt;
 use rand_distr::{ChiSquared, Distribution, StandardNormal};
-use rayon::prelude::*;
 
 use super::options::{Noise, ParallelOptions};
 use super::result::ParallelAnalysis;
@@ -14,8 +13,10 @@ use crate::components::spectrum::{roots_workspace, symmetric_roots};
 use crate::components::views::{view, view_mut};
 use crate::components::{Scaling, principal_components};
 use crate::error::{Error, Result};
-use crate::live::{checkpoint, interrupted, seed};
-use crate::random::{Generator, replicate_generator};
+use crate::live::seed;
+use crate::quantile::{ascending, deviation, mean, quantile};
+use crate::random::Generator;
+use crate::repeat::repeat;
 use crate::table::DataMatrix;
 
 /// How many components of the correlation matrix stand out from noise.
@@ -67,25 +68,24 @@ pub fn parallel_analysis(x: &DataMatrix, options: ParallelOptions) -> Result<Par
     let roots = match options.chosen_noise() {
         Noise::Normal => {
             let noise = NormalNoise::new(x.n_rows(), x.n_cols());
-            replicate(options.n_replicates(), seed, n_roots, &noise)?
+            roots_of(options.n_replicates(), seed, n_roots, &noise)?
         }
         Noise::Permuted => {
             let noise = PermutedNoise::new(x, observed.mean(), observed.scale());
-            replicate(options.n_replicates(), seed, n_roots, &noise)?
+            roots_of(options.n_replicates(), seed, n_roots, &noise)?
         }
     };
     let n_places = observed.n_components();
-    let mut summaries: Vec<Place> = Vec::with_capacity(n_places);
-    for place in 0..n_places {
-        let mut values: Vec<f64> = roots.iter().map(|roots| roots[place]).collect();
-        summaries.push(Place::of(&mut values, options.chosen_percentile()));
-    }
-    let take = |of: fn(&Place) -> f64| DVector::from_iterator(n_places, summaries.iter().map(of));
+    let at_place = |place| ascending(roots.iter().map(|roots| roots[place]).collect());
+    let places: Vec<Vec<f64>> = (0..n_places).map(at_place).collect();
+    let take = |of: &dyn Fn(&[f64]) -> f64| {
+        DVector::from_iterator(n_places, places.iter().map(|roots| of(roots)))
+    };
     Ok(ParallelAnalysis {
         observed: observed.variances().clone(),
-        noise_mean: take(|place| place.mean),
-        noise_percentile: take(|place| place.percentile),
-        noise_deviation: take(|place| place.deviation),
+        noise_mean: take(&mean),
+        noise_percentile: take(&|roots| quantile(roots, options.chosen_percentile() / 100.0)),
+        noise_deviation: take(&deviation),
         n_rows: x.n_rows(),
         n_variables: x.n_cols(),
         options,
@@ -112,7 +112,7 @@ struct Workspace {
 }
 
 /// The largest roots of each replicate, descending.
-fn replicate(
+fn roots_of(
     n_replicates: usize,
     seed: u64,
     n_roots: usize,
@@ -127,38 +127,29 @@ fn replicate(
         ascending: vec![0.0; order],
         scratch: roots_workspace(order),
     };
-    let roots: Result<Option<Vec<Vec<f64>>>> = (0..n_replicates)
-        .into_par_iter()
-        .map_init(workspace, |workspace, replicate| {
-            if interrupted() {
-                return Ok(None);
-            }
-            let Workspace { factor, cross, ascending, scratch } = workspace;
-            noise.draw(&mut replicate_generator(seed, replicate as u64), factor);
-            let factor = view(factor);
-            let (a, b) = if n_cols <= n_rows {
-                (factor.transpose(), factor)
-            } else {
-                (factor, factor.transpose())
-            };
-            triangular::matmul(
-                view_mut(cross),
-                BlockStructure::TriangularLower,
-                Accum::Replace,
-                a,
-                BlockStructure::Rectangular,
-                b,
-                BlockStructure::Rectangular,
-                1.0,
-                Par::Seq,
-            );
-            symmetric_roots(cross, ascending, scratch)?;
-            Ok(Some(ascending.iter().rev().take(n_roots).copied().collect()))
-        })
-        .collect();
-    // An interrupt ends the loop early on every thread; only this one may leave the cell.
-    checkpoint();
-    roots?.ok_or(Error::Interrupted)
+    repeat("parallel analysis", n_replicates, seed, workspace, |workspace, generator, _| {
+        let Workspace { factor, cross, ascending, scratch } = workspace;
+        noise.draw(generator, factor);
+        let factor = view(factor);
+        let (a, b) = if n_cols <= n_rows {
+            (factor.transpose(), factor)
+        } else {
+            (factor, factor.transpose())
+        };
+        triangular::matmul(
+            view_mut(cross),
+            BlockStructure::TriangularLower,
+            Accum::Replace,
+            a,
+            BlockStructure::Rectangular,
+            b,
+            BlockStructure::Rectangular,
+            1.0,
+            Par::Seq,
+        );
+        symmetric_roots(cross, ascending, scratch)?;
+        Ok(ascending.iter().rev().take(n_roots).copied().collect())
+    })
 }
 
 struct NormalNoise {
@@ -231,32 +222,6 @@ impl NoiseTable for PermutedNoise {
             for last in (1..column.len()).rev() {
                 column.swap_rows(last, generator.random_range(0..=last));
             }
-        }
-    }
-}
-
-/// What the tables without structure say about one place in the descending order.
-struct Place {
-    mean: f64,
-    deviation: f64,
-    percentile: f64,
-}
-
-impl Place {
-    fn of(values: &mut [f64], percentile: f64) -> Self {
-        let n = values.len() as f64;
-        let mean = values.iter().sum::<f64>() / n;
-        let squares: f64 = values.iter().map(|value| (value - mean).powi(2)).sum();
-        values.sort_unstable_by(f64::total_cmp);
-        // Definition 7 of Hyndman and Fan: the position h = (n − 1) q, counted from zero.
-        let position = (n - 1.0) * percentile / 100.0;
-        let below = position.floor() as usize;
-        let above = (below + 1).min(values.len() - 1);
-        let part = position - below as f64;
-        Place {
-            mean,
-            deviation: (squares / (n - 1.0)).sqrt(),
-            percentile: values[below] + part * (values[above] - values[below]),
         }
     }
 }

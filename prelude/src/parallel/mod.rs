@@ -20,6 +20,7 @@
 mod options;
 mod result;
 
+mod exhibit;
 mod fit;
 
 #[cfg(test)]

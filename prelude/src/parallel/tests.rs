@@ -1,5 +1,5 @@
 //! Properties and closed forms. A simulation by another program is in the workspace's
-//! `tests/tests/references.rs`.
+//! `tests/tests/references`.
 
 use nalgebra::DMatrix;
 use rand_distr::{Distribution, StandardNormal};

@@ -170,6 +170,13 @@ impl Exhibit for Table {
     }
 }
 
+/// Several tables in one exhibit, one under the other.
+pub(crate) fn stacked(tables: &[&Table]) -> Bundle {
+    let html: String = tables.iter().map(|table| table.html()).collect();
+    let plain: Vec<String> = tables.iter().map(|table| table.plain()).collect();
+    Bundle::new().with_html(html).with_plain(plain.join("\n\n"))
+}
+
 impl TableColumn {
     /// A column of text.
     pub fn texts<S: Into<String>>(

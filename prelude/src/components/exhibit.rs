@@ -1,11 +1,11 @@
-//! Results of analyses as tables, each with the conventions it was computed by.
+//! Components and reconstructions as tables, with the conventions they were computed by.
 
-use super::matrices::both;
-use super::numbers::{counted, grouped, significant, stored};
-use super::tables::{Abridged, NumberFormat, Table, TableColumn};
-use super::{Bundle, Exhibit};
-use crate::components::{PrincipalComponents, Reconstruction, Scaling};
-use crate::parallel::{Noise, ParallelAnalysis};
+use super::options::Scaling;
+use super::result::{PrincipalComponents, Reconstruction};
+use crate::exhibit::{
+    Abridged, Bundle, Exhibit, NumberFormat, Table, TableColumn, counted, grouped, significant,
+    stacked,
+};
 
 const VARIANCES: NumberFormat = NumberFormat::Significant(4);
 const LOADINGS: NumberFormat = NumberFormat::Decimals(3);
@@ -14,46 +14,7 @@ const MOST_COMPONENTS: usize = 8;
 /// Variances with their shares, and the loadings of the leading components.
 impl Exhibit for PrincipalComponents {
     fn exhibit(&self) -> Bundle {
-        both(&variances(self), &loadings(self))
-    }
-}
-
-/// Observed variances beside those of noise.
-impl Exhibit for ParallelAnalysis {
-    fn exhibit(&self) -> Bundle {
-        let places = 1..=self.observed().len();
-        let percentile = stored(self.percentile(), 4);
-        let verdicts = self.observed().iter().zip(self.noise_percentile().iter());
-        let verdicts =
-            verdicts.map(|(seen, limit)| if seen > limit { "above noise" } else { "within noise" });
-        let noise = match self.noise() {
-            Noise::Normal => "independent normal values",
-            Noise::Permuted => "the data's own columns, each shuffled by itself",
-        };
-        Table::new(format!(
-            "Components against noise: {} by the percentile, {} by the mean",
-            self.n_by_percentile(),
-            self.n_by_mean()
-        ))
-        .column(TableColumn::counts("component", places).as_row_heads())
-        .column(numbers("variance", self.observed().iter(), VARIANCES))
-        .column(numbers("noise, mean", self.noise_mean().iter(), VARIANCES))
-        .column(numbers(
-            &format!("noise, percentile {percentile}"),
-            self.noise_percentile().iter(),
-            VARIANCES,
-        ))
-        .column(TableColumn::texts("verdict", verdicts))
-        .note(format!(
-            "{} of {noise}, {} × {}, seed {}. Leading components above the mean (Horn 1965) or above \
-             percentile {percentile} (Glorfeld 1995) are counted until the first that is not.",
-            counted(self.n_replicates(), "table"),
-            counted(self.n_rows(), "row"),
-            counted(self.n_variables(), "column"),
-            self.seed()
-        ))
-        .note("Variances of the correlation matrix, to 4 significant digits.")
-        .exhibit()
+        stacked(&[&variances(self), &loadings(self)])
     }
 }
 
@@ -96,9 +57,17 @@ impl Exhibit for Reconstruction {
 fn variances(pca: &PrincipalComponents) -> Table {
     Table::new("Variance of each component")
         .column(TableColumn::counts("component", 1..=pca.n_components()).as_row_heads())
-        .column(numbers("variance", pca.variances().iter(), VARIANCES))
-        .column(numbers("share", pca.proportions().iter(), NumberFormat::Percent))
-        .column(numbers("together", pca.cumulative().iter(), NumberFormat::Percent))
+        .column(TableColumn::numbers("variance", pca.variances().iter().copied(), VARIANCES))
+        .column(TableColumn::numbers(
+            "share",
+            pca.proportions().iter().copied(),
+            NumberFormat::Percent,
+        ))
+        .column(TableColumn::numbers(
+            "together",
+            pca.cumulative().iter().copied(),
+            NumberFormat::Percent,
+        ))
         .note(format!(
             "{} and {} {}; total variance {}; divisor n − 1 = {}; variances to 4 significant \
              digits.",
@@ -124,7 +93,7 @@ fn loadings(pca: &PrincipalComponents) -> Table {
     for component in 0..n_shown {
         let column = values.column(component);
         table = table.column(
-            numbers(&(component + 1).to_string(), column.iter(), LOADINGS)
+            TableColumn::numbers((component + 1).to_string(), column.iter().copied(), LOADINGS)
                 .dimmed_below(threshold)
                 .shaded_up_to(1.0),
         );
@@ -139,12 +108,4 @@ fn loadings(pca: &PrincipalComponents) -> Table {
          {} in absolute value, the size when all variables share equally.",
         LOADINGS.format(threshold)
     ))
-}
-
-fn numbers<'a>(
-    heading: &str,
-    values: impl Iterator<Item = &'a f64>,
-    format: NumberFormat,
-) -> TableColumn {
-    TableColumn::numbers(heading, values.copied(), format)
 }

@@ -1,49 +1,14 @@
-//! Numbers from outside: books, and other programs on open data. `references/README.md` says how
-//! the files were made.
+//! Components of open data, of ill-conditioned data in many digits, and of a handbook's example.
 
-use nalgebra::{DMatrix, dmatrix};
+use nalgebra::dmatrix;
 use semiaxis::components::{Scaling, principal_components};
-use semiaxis::parallel::{ParallelOptions, parallel_analysis};
-use semiaxis::polars::prelude::{Column, DataFrame, NamedFrom, Series};
-use semiaxis::table::{DataMatrix, describe_columns};
+use semiaxis::table::DataMatrix;
 use semiaxis_tests::compare::{
     assert_all_relative, assert_columns_up_to_sign, assert_relative, assert_zero,
 };
 use serde_json::Value;
 
-fn load(name: &str) -> Value {
-    let path = format!("{}/references/{name}", env!("CARGO_MANIFEST_DIR"));
-    serde_json::from_str(&std::fs::read_to_string(path).unwrap()).unwrap()
-}
-
-fn cases(file: &Value) -> impl Iterator<Item = &Value> {
-    file["cases"].as_array().unwrap().iter()
-}
-
-fn numbers(value: &Value) -> Vec<f64> {
-    value.as_array().unwrap().iter().map(|number| number.as_f64().unwrap()).collect()
-}
-
-fn matrix(value: &Value) -> DMatrix<f64> {
-    let rows: Vec<Vec<f64>> = value.as_array().unwrap().iter().map(numbers).collect();
-    DMatrix::from_fn(rows.len(), rows[0].len(), |i, j| rows[i][j])
-}
-
-fn data(case: &Value) -> DataMatrix {
-    let values = matrix(&case["data"]);
-    let names: Vec<&str> =
-        case["variables"].as_array().unwrap().iter().map(|name| name.as_str().unwrap()).collect();
-    let labels: Vec<String> = (1..=values.nrows()).map(|row| row.to_string()).collect();
-    DataMatrix::from_values(values, names, labels).unwrap()
-}
-
-fn scaling(case: &Value) -> Scaling {
-    match case["scaling"].as_str().unwrap() {
-        "correlation" => Scaling::Correlation,
-        "covariance" => Scaling::Covariance,
-        other => panic!("{other}"),
-    }
-}
+use crate::files::{cases, data, load, matrix, numbers, scaling};
 
 /// Compares everything a case holds; `vectors` is the tolerance for loadings and scores.
 fn check_components(case: &Value, roots: f64, vectors: f64) {
@@ -147,56 +112,4 @@ fn ill_conditioned_data_in_sixty_digits() {
         n_cases += 1;
     }
     assert_eq!(n_cases, 4);
-}
-
-/// The simulation of the other program draws whole tables; here the cross-product is drawn. Means
-/// of 20 000 and of as many tables may differ by five standard errors of their difference; the
-/// percentile's error is taken as three times the mean's (its own, for normal roots, is 2.1 times).
-#[test]
-fn noise_has_the_roots_of_an_independent_simulation() {
-    for case in cases(&load("parallel.json")) {
-        let n = case["n_rows"].as_u64().unwrap() as usize;
-        let p = case["n_variables"].as_u64().unwrap() as usize;
-        let replicates = case["replicates"].as_u64().unwrap() as usize;
-        // Any data of this shape that vary and have full rank will do.
-        let x = DMatrix::from_fn(n, p, |i, j| ((i * i + 3 * i * j + 7 * j) as f64 * 0.37).sin());
-        let x = DataMatrix::from_unnamed(x).unwrap();
-        let options = ParallelOptions::new().replicates(replicates).seed(20);
-        let result = parallel_analysis(&x, options).unwrap();
-        let (mean, deviation) = (numbers(&case["mean"]), numbers(&case["deviation"]));
-        let percentile = numbers(&case["percentile_95"]);
-        assert_eq!(result.noise_mean().len(), mean.len(), "{n} x {p}");
-        for k in 0..mean.len() {
-            let error = deviation[k] * (2.0 / replicates as f64).sqrt();
-            let what = format!("{n} x {p}, root {}", k + 1);
-            assert_zero(result.noise_mean()[k] - mean[k], 5.0 * error, &what);
-            assert_zero(result.noise_percentile()[k] - percentile[k], 15.0 * error, &what);
-            // A standard deviation of N values has a relative error of about 1/√(2N).
-            assert_relative(result.noise_deviation()[k], deviation[k], 0.05, &what);
-        }
-    }
-}
-
-#[test]
-fn column_summaries_by_the_statistics_language() {
-    let file = load("arrests.json");
-    let case = cases(&file).next().unwrap();
-    let x = data(case);
-    let columns: Vec<Column> = x
-        .variables()
-        .iter()
-        .map(|name| Series::new(name.as_str().into(), x.variable(name).unwrap()).into())
-        .collect();
-    let described = describe_columns(&DataFrame::new(x.n_rows(), columns).unwrap()).unwrap();
-    for summary in file["summaries"].as_array().unwrap() {
-        let name = summary["column"].as_str().unwrap();
-        let actual = described.column(name).unwrap().numbers.unwrap();
-        assert_relative(actual.mean, summary["mean"].as_f64().unwrap(), 1e-14, name);
-        let deviation = summary["standard_deviation"].as_f64().unwrap();
-        assert_relative(actual.standard_deviation, deviation, 1e-14, name);
-        let quartiles = numbers(&summary["quartiles"]);
-        let ours =
-            [actual.min, actual.lower_quartile, actual.median, actual.upper_quartile, actual.max];
-        assert_all_relative(&ours, &quartiles, 1e-14, name);
-    }
 }

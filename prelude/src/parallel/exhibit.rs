@@ -1,0 +1,46 @@
+//! A parallel analysis as a table.
+
+use super::options::Noise;
+use super::result::ParallelAnalysis;
+use crate::exhibit::{Bundle, Exhibit, NumberFormat, Table, TableColumn, counted, stored};
+
+const VARIANCES: NumberFormat = NumberFormat::Significant(4);
+
+/// Observed variances beside those of noise.
+impl Exhibit for ParallelAnalysis {
+    fn exhibit(&self) -> Bundle {
+        let places = 1..=self.observed().len();
+        let percentile = stored(self.percentile(), 4);
+        let verdicts = self.observed().iter().zip(self.noise_percentile().iter());
+        let verdicts =
+            verdicts.map(|(seen, limit)| if seen > limit { "above noise" } else { "within noise" });
+        let noise = match self.noise() {
+            Noise::Normal => "independent normal values",
+            Noise::Permuted => "the data's own columns, each shuffled by itself",
+        };
+        Table::new(format!(
+            "Components against noise: {} by the percentile, {} by the mean",
+            self.n_by_percentile(),
+            self.n_by_mean()
+        ))
+        .column(TableColumn::counts("component", places).as_row_heads())
+        .column(TableColumn::numbers("variance", self.observed().iter().copied(), VARIANCES))
+        .column(TableColumn::numbers("noise, mean", self.noise_mean().iter().copied(), VARIANCES))
+        .column(TableColumn::numbers(
+            format!("noise, percentile {percentile}"),
+            self.noise_percentile().iter().copied(),
+            VARIANCES,
+        ))
+        .column(TableColumn::texts("verdict", verdicts))
+        .note(format!(
+            "{} of {noise}, {} × {}, seed {}. Leading components above the mean (Horn 1965) or above \
+             percentile {percentile} (Glorfeld 1995) are counted until the first that is not.",
+            counted(self.n_replicates(), "table"),
+            counted(self.n_rows(), "row"),
+            counted(self.n_variables(), "column"),
+            self.seed()
+        ))
+        .note("Variances of the correlation matrix, to 4 significant digits.")
+        .exhibit()
+    }
+}
