@@ -275,6 +275,15 @@ pub enum Error {
         /// The first two rows that carry it.
         rows: (usize, usize),
     },
+    /// The weight of a row is not a positive finite number.
+    BadWeight {
+        /// The first such row, counted from 1.
+        row: usize,
+        /// Its label.
+        label: String,
+        /// The weight that was given.
+        value: f64,
+    },
     /// Counts that should agree do not.
     ShapeMismatch {
         /// What was counted.

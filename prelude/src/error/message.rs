@@ -196,6 +196,17 @@ impl fmt::Display for Error {
                 }
                 write!(f, "rows {} and {} are both labelled {}", rows.0, rows.1, Name(label))
             }
+            Error::BadWeight { row, label, value } => {
+                write!(f, "the weight of row {row}")?;
+                if *label != row.to_string() {
+                    write!(f, " ({})", Name(label))?;
+                }
+                write!(
+                    f,
+                    " is {value}; accepted: positive finite numbers; leave a row that must "
+                )?;
+                write!(f, "not count out with `.rows_where(…)`")
+            }
             Error::ShapeMismatch { what, expected, found } => {
                 write!(f, "{what}: {expected} needed, {found} given")
             }

@@ -16,6 +16,7 @@ mod matrix;
 mod named;
 mod notes;
 mod options;
+mod weights;
 
 mod describe;
 mod nearest;
