@@ -24,6 +24,9 @@ pub use crate::table::{
 // Showing something in the middle of a cell.
 pub use crate::show;
 
+// Saying how far a long loop has come.
+pub use crate::live::{Progress, counted};
+
 // Matrices and vectors.
 pub use nalgebra::{self, DMatrix, DVector, dmatrix, dvector};
 
