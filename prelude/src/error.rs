@@ -367,8 +367,8 @@ pub enum Error {
         setting: &'static str,
         /// The kind of chart.
         chart: &'static str,
-        /// The kinds of chart that have it.
-        charts: &'static str,
+        /// The settings that it has.
+        available: Vec<&'static str>,
     },
     /// An iteration ended without a usable answer.
     NoConvergence {

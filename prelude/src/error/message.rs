@@ -262,8 +262,8 @@ impl fmt::Display for Error {
                 write!(f, "the option `{option}` is {value}; accepted: {accepted}")
             }
             Error::Interrupted => write!(f, "the computation was asked to stop"),
-            Error::SettingNotForChart { setting, chart, charts } => {
-                write!(f, "a {chart} has no {setting}; charts that do: {charts}")
+            Error::SettingNotForChart { setting, chart, available } => {
+                write!(f, "a {chart} has no {setting}; it has {}", available.join(", "))
             }
             Error::NoConvergence { method } => {
                 write!(f, "{method} did not converge; please report this with the data")

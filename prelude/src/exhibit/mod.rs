@@ -22,7 +22,7 @@ mod text;
 #[cfg(test)]
 mod tests;
 
-pub use chart::{Chart, Names, Reference, biplot, loading_plot, score_plot, scree};
+pub use chart::{Chart, NUMBERS, Names, Reference, biplot, loading_plot, score_plot, scree};
 pub use numbers::{fixed, significant, stored};
 pub use tables::{NumberFormat, Table, TableColumn};
 

@@ -1,7 +1,10 @@
 //! Variables as arrows from the origin, shared by loading plot and biplot.
 
+use serde_json::{Value, json};
+
 use super::labels::{LabelSpace, Wish};
 use super::palette::FAINT;
+use super::picture::numbers;
 use super::plane::Plane;
 use super::settings::Settings;
 use super::source::Source;
@@ -49,6 +52,16 @@ impl Arrows {
 
     pub fn longest(&self) -> f64 {
         self.tips.iter().map(|tip| tip.0.hypot(tip.1)).fold(0.0, f64::max)
+    }
+
+    /// The numbers behind the arrows.
+    pub fn behind(&self) -> Value {
+        json!({
+            "components": self.components,
+            "variables": self.names,
+            "sideways": numbers(self.tips.iter().map(|tip| tip.0)),
+            "upwards": numbers(self.tips.iter().map(|tip| tip.1)),
+        })
     }
 
     /// Draws the arrows, stretched by a factor.

@@ -1,5 +1,7 @@
 //! Units in a plane: marks, hover texts and names, shared by score plot and biplot.
 
+use serde_json::{Value, json};
+
 use super::card::LegendEntry;
 use super::groups::{Group, Groups};
 use super::labels::{LabelSpace, Wish};
@@ -7,6 +9,7 @@ use super::marks::{
     MOST_MARKS, Spot, hover_fits, mark_radius, push_counts, push_dense, push_hovering, push_mark,
 };
 use super::palette::{Cue, INK, Shape};
+use super::picture::numbers;
 use super::plane::{Extent, Plane};
 use super::settings::Settings;
 use super::source::Source;
@@ -145,6 +148,18 @@ impl<'a> Units<'a> {
                 counted(self.count(), "unit")
             )),
         }
+    }
+
+    /// The numbers behind the marks.
+    pub fn behind(&self) -> Value {
+        let groups = self.groups.are_set().then(|| self.groups.of_units(self.count()));
+        json!({
+            "components": self.components,
+            "units": self.names,
+            "groups": groups.map(|groups| groups.iter().map(|g| g.name.clone()).collect::<Vec<_>>()),
+            "sideways": numbers(self.points.iter().map(|point| point.0)),
+            "upwards": numbers(self.points.iter().map(|point| point.1)),
+        })
     }
 
     /// The groups and the farthest units, in words.
