@@ -4,7 +4,7 @@ use std::sync::{Arc, OnceLock};
 
 use nalgebra::{DMatrix, DVector};
 
-use super::cross::{self, CrossProduct, Moments};
+use super::cross::{self, CrossProduct, Moments, RowWeights};
 use super::options::{Route, Scaling};
 use super::result::PrincipalComponents;
 use super::spectrum::{self, Spectrum};
@@ -28,7 +28,8 @@ const MOST_SQUARES: f64 = 1e290;
 ///
 /// Rows are observations, columns are variables; the divisor is n − 1. The cost is that of one
 /// symmetric product (n p min(n, p) operations) in the usual case. Neither rows nor variables
-/// need outnumber the other. Results do not depend on the number of threads.
+/// need outnumber the other. Results do not depend on the number of threads. Row weights count as
+/// [`DataMatrix::with_weights`] says.
 ///
 /// ```
 /// use semiaxis::components::{Scaling, principal_components};
@@ -57,9 +58,13 @@ pub fn principal_components(x: &DataMatrix, scaling: Scaling) -> Result<Principa
             found: x.n_rows(),
         });
     }
-    let fitted =
-        if x.n_cols() < x.n_rows() { by_variables(x, scaling) } else { by_rows(x, scaling) }?;
-    Ok(fitted.into_result(x, scaling))
+    let weights = RowWeights::of(x);
+    let fitted = if x.n_cols() < x.n_rows() {
+        by_variables(x, scaling, weights.as_ref())
+    } else {
+        by_rows(x, scaling, weights.as_ref())
+    }?;
+    Ok(fitted.into_result(x, scaling, weights))
 }
 
 /// What every way of decomposing hands over.
@@ -123,9 +128,9 @@ impl Columns {
     }
 }
 
-fn by_variables(x: &DataMatrix, scaling: Scaling) -> Result<Fitted> {
+fn by_variables(x: &DataMatrix, scaling: Scaling, weights: Option<&RowWeights>) -> Result<Fitted> {
     let n = x.n_rows();
-    let CrossProduct { mean, mut lower } = cross::of_columns(x.values());
+    let CrossProduct { mean, mut lower } = cross::of_columns(x.values(), weights);
     checkpoint();
     let sum_squares = lower.diagonal();
     let columns = Columns::checked(x, Moments { mean, sum_squares: sum_squares.clone() }, scaling)?;
@@ -161,12 +166,12 @@ fn by_variables(x: &DataMatrix, scaling: Scaling) -> Result<Fitted> {
             });
         }
     }
-    by_singular_values(x, columns)
+    by_singular_values(x, columns, weights)
 }
 
-fn by_rows(x: &DataMatrix, scaling: Scaling) -> Result<Fitted> {
+fn by_rows(x: &DataMatrix, scaling: Scaling, weights: Option<&RowWeights>) -> Result<Fitted> {
     let n = x.n_rows();
-    let (moments, mut lower) = cross::of_rows(x.values(), scaling == Scaling::Correlation);
+    let (moments, mut lower) = cross::of_rows(x.values(), scaling == Scaling::Correlation, weights);
     checkpoint();
     let columns = Columns::checked(x, moments, scaling)?;
     let size = lower.diagonal().max();
@@ -176,27 +181,43 @@ fn by_rows(x: &DataMatrix, scaling: Scaling) -> Result<Fitted> {
     // Centring takes one dimension away: the last root is zero by construction.
     let rank = n - 1;
     if roots[rank - 1] < TRUSTED * roots[0] {
-        return by_singular_values(x, columns);
+        return by_singular_values(x, columns, weights);
     }
     let singular = roots.rows(0, rank).map(|root| (root * size).sqrt());
     let mut left = vectors.columns(0, rank).into_owned();
-    let mut weights = left.clone();
+    let mut combination = left.clone();
     for (k, sigma) in singular.iter().enumerate() {
         left.column_mut(k).scale_mut(*sigma);
-        weights.column_mut(k).scale_mut(1.0 / sigma);
+        combination.column_mut(k).scale_mut(1.0 / sigma);
     }
-    let loadings = super::scores::combine_rows(x.values(), &columns.mean, &columns.scale, &weights);
+    if let Some(weights) = weights {
+        weigh_rows(&mut combination, weights);
+    }
+    let loadings =
+        super::scores::combine_rows(x.values(), &columns.mean, &columns.scale, &combination);
     Ok(Fitted {
         tolerance: tolerance(x, &columns, singular[0]),
         variances: singular.map(|sigma| sigma * sigma / rank as f64),
         columns,
         route: Route::RowCrossProduct,
         loadings,
-        scores: Some(left),
+        // Those of weighted rows carry the roots of the weights, which may be too small to divide by.
+        scores: weights.is_none().then_some(left),
     })
 }
 
-fn by_singular_values(x: &DataMatrix, columns: Columns) -> Result<Fitted> {
+/// Multiplies each row by the root of its weight.
+fn weigh_rows(matrix: &mut DMatrix<f64>, weights: &RowWeights) {
+    for mut column in matrix.column_iter_mut() {
+        column.iter_mut().zip(weights.roots()).for_each(|(value, root)| *value *= root);
+    }
+}
+
+fn by_singular_values(
+    x: &DataMatrix,
+    columns: Columns,
+    weights: Option<&RowWeights>,
+) -> Result<Fitted> {
     let n = x.n_rows();
     let mut scaled = x.values().clone();
     for (j, mut column) in scaled.column_iter_mut().enumerate() {
@@ -206,6 +227,9 @@ fn by_singular_values(x: &DataMatrix, columns: Columns) -> Result<Fitted> {
         } else {
             column.fill(0.0);
         }
+    }
+    if let Some(weights) = weights {
+        weigh_rows(&mut scaled, weights);
     }
     let (singular, mut loadings) = spectrum::singular(&scaled)?;
     checkpoint();
@@ -243,7 +267,12 @@ fn tolerance(x: &DataMatrix, columns: &Columns, largest_singular: f64) -> f64 {
 }
 
 impl Fitted {
-    fn into_result(mut self, x: &DataMatrix, scaling: Scaling) -> PrincipalComponents {
+    fn into_result(
+        mut self,
+        x: &DataMatrix,
+        scaling: Scaling,
+        weights: Option<RowWeights>,
+    ) -> PrincipalComponents {
         for k in 0..self.loadings.ncols() {
             if spectrum::sign(self.loadings.column(k).as_slice()) < 0.0 {
                 self.loadings.column_mut(k).neg_mut();
@@ -262,6 +291,7 @@ impl Fitted {
         };
         PrincipalComponents {
             data: x.clone(),
+            weights: weights.map(|weights| weights.weights().into()),
             scaling,
             route: self.route,
             tolerance: self.tolerance,

@@ -1,7 +1,7 @@
 //! What a decomposition says, and what can be done with it.
 
 use std::fmt;
-use std::sync::OnceLock;
+use std::sync::{Arc, OnceLock};
 
 use nalgebra::{DMatrix, DVector};
 
@@ -19,6 +19,8 @@ use crate::table::{DataMatrix, NamedMatrix};
 #[derive(Clone)]
 pub struct PrincipalComponents {
     pub(super) data: DataMatrix,
+    // Of sum n; none when they make no difference.
+    pub(super) weights: Option<Arc<[f64]>>,
     pub(super) scaling: Scaling,
     pub(super) route: Route,
     pub(super) tolerance: f64,
@@ -68,8 +70,8 @@ impl PrincipalComponents {
     /// z_ik = Σ_j v_jk (x_ij − x̄_j) / s_j
     /// ```
     ///
-    /// Each column has mean zero and variance λ (divisor n − 1), and no two are correlated. They
-    /// are in the units of the variables under covariance and without unit under correlation.
+    /// Each column has mean zero and variance λ (divisor n − 1), and no two are correlated: with
+    /// row weights, by the weighted formulas of [`DataMatrix::with_weights`]. They are in the units of the variables under covariance and without unit under correlation.
     /// Computed on first use.
     pub fn scores(&self) -> &NamedMatrix {
         self.scores.get_or_init(|| self.scores_of(&self.data))
@@ -140,7 +142,21 @@ impl PrincipalComponents {
             self.variables().iter().cloned(),
             self.labels().iter().cloned(),
         )?;
-        Ok(Reconstruction { values, n_components, proportion, row_residuals })
+        let values = match self.data.weights() {
+            Some(weights) => values.with_weights(weights.iter().copied())?,
+            None => values,
+        };
+        let residual_sum_of_squares = match self.row_weights() {
+            Some(weights) => row_residuals.iter().zip(weights).map(|(r, w)| r * w).sum(),
+            None => row_residuals.sum(),
+        };
+        Ok(Reconstruction {
+            values,
+            n_components,
+            proportion,
+            row_residuals,
+            residual_sum_of_squares,
+        })
     }
 
     /// The names of the variables, in order.
@@ -185,7 +201,7 @@ impl PrincipalComponents {
     }
 
     /// The standard deviation of each variable, in its units, with divisor n − 1.
-    pub fn standard_deviations(&self) -> &DVector<f64> {
+    pub fn variable_deviations(&self) -> &DVector<f64> {
         &self.deviation
     }
 
@@ -223,6 +239,17 @@ impl PrincipalComponents {
     /// What sums of squares were divided by: n − 1.
     pub fn divisor(&self) -> usize {
         self.n_rows() - 1
+    }
+
+    /// The weights of the rows, brought to the sum n; `None` when there are none or all are equal,
+    /// which makes no difference.
+    pub fn row_weights(&self) -> Option<&[f64]> {
+        self.weights.as_deref()
+    }
+
+    /// Whether row weights made a difference; see [`DataMatrix::with_weights`].
+    pub fn is_weighted(&self) -> bool {
+        self.weights.is_some()
     }
 
     /// The way the decomposition was computed.
@@ -285,6 +312,7 @@ pub struct Reconstruction {
     n_components: usize,
     proportion: f64,
     row_residuals: DVector<f64>,
+    residual_sum_of_squares: f64,
 }
 
 impl Reconstruction {
@@ -327,8 +355,9 @@ impl Reconstruction {
         &self.row_residuals
     }
 
-    /// The sum of [`row_residuals`](Self::row_residuals): (n − 1) times the variances left out.
+    /// The sum of [`row_residuals`](Self::row_residuals), each times the weight of its row (of sum
+    /// n) when rows are weighted: (n − 1) times the variances left out.
     pub fn residual_sum_of_squares(&self) -> f64 {
-        self.row_residuals.sum()
+        self.residual_sum_of_squares
     }
 }
