@@ -22,7 +22,10 @@ mod text;
 #[cfg(test)]
 mod tests;
 
-pub use chart::{Chart, NUMBERS, Names, Reference, biplot, loading_plot, score_plot, scree};
+pub use chart::{
+    Chart, NUMBERS, Names, Reference, biplot, correlation_map, loading_plot, score_plot, scree,
+    structure_circle,
+};
 pub use numbers::{fixed, significant, stored};
 pub use tables::{NumberFormat, Table, TableColumn};
 

@@ -17,6 +17,8 @@ mod settings;
 mod source;
 
 mod biplot;
+mod circle;
+mod correlations;
 mod loadings;
 mod scores;
 mod scree;
@@ -28,6 +30,7 @@ mod units;
 
 mod card;
 mod ellipse;
+mod frame;
 mod labels;
 mod marks;
 mod measure;
@@ -44,6 +47,8 @@ use std::path::Path;
 use std::sync::Arc;
 
 pub use biplot::biplot;
+pub use circle::structure_circle;
+pub use correlations::correlation_map;
 pub use loadings::loading_plot;
 pub use names::Names;
 pub use scores::score_plot;
@@ -167,7 +172,7 @@ impl Chart {
 
     fn draw(&self) -> Result<Drawing> {
         self.check()?;
-        Ok(self.picture.draw(&self.settings))
+        self.picture.draw(&self.settings)
     }
 }
 

@@ -37,6 +37,36 @@ pub(super) const COUNTS: [&str; 5] = ["#e6e2d9", "#d0cbc0", "#b5afa3", "#989287"
 pub(super) const SEGMENTS: [(&str, &str); 4] =
     [("#2d2582", CARD), ("#463f9d", CARD), ("#97a9d4", INK), ("#c9d3e6", INK)];
 
+/// The full colours of what is positive and what is negative, for shades that grow from the card's
+/// ground. They differ in lightness, and a sign or a stroke is always the second cue.
+pub(super) const POSITIVE: &str = "#2d2582";
+/// See [`POSITIVE`].
+pub(super) const NEGATIVE: &str = "#a8791a";
+
+/// The shade of a value between −1 and 1, from the ground of the card to a full colour, and the
+/// ink that can be read on it.
+pub(super) fn shade(value: f64) -> (String, &'static str) {
+    let full = if value < 0.0 { NEGATIVE } else { POSITIVE };
+    let weight = value.abs().clamp(0.0, 1.0);
+    let mixed = mix(CARD, full, weight);
+    // Ink turns light where the ground is nearer to the full colour than to the card.
+    let dark_ground = if value < 0.0 { weight > 0.86 } else { weight > 0.5 };
+    (mixed, if dark_ground { "#ffffff" } else { INK })
+}
+
+/// A colour between two, each channel in proportion.
+fn mix(from: &str, to: &str, weight: f64) -> String {
+    let channel = |hex: &str, at: usize| {
+        hex.get(at..at + 2).and_then(|digits| u8::from_str_radix(digits, 16).ok()).unwrap_or(0)
+    };
+    let mut out = String::from("#");
+    for at in [1, 3, 5] {
+        let (a, b) = (f64::from(channel(from, at)), f64::from(channel(to, at)));
+        out.push_str(&format!("{:02x}", (a + (b - a) * weight).round() as u8));
+    }
+    out
+}
+
 /// The shape of a mark.
 #[derive(Debug, Clone, Copy, PartialEq, Eq)]
 pub(super) enum Shape {
@@ -232,6 +262,23 @@ mod tests {
         }
         // Checked against the definition: black on white is 21 to 1.
         assert!((contrast("#000000", "#ffffff") - 21.0).abs() < 1e-9);
+    }
+
+    #[test]
+    fn numbers_can_be_read_on_every_shade() {
+        for step in -100..=100 {
+            let value = f64::from(step) / 100.0;
+            let (ground, ink) = shade(value);
+            assert!(contrast(&ground, ink) >= 4.5, "{value}: {ink} on {ground}");
+        }
+    }
+
+    #[test]
+    fn shades_of_opposite_sign_differ_in_every_sight() {
+        for sight in [&NORMAL, &PROTANOPIA, &DEUTERANOPIA, &TRITANOPIA] {
+            let colors = [shade(0.8).0, shade(-0.8).0, shade(0.0).0];
+            assert!(smallest_distance(&colors.each_ref().map(String::as_str), sight) > 30.0);
+        }
     }
 
     #[test]

@@ -65,8 +65,8 @@ impl Picture for Scores {
         settings.check_units(self.source.scores.nrows())
     }
 
-    fn draw(&self, settings: &Settings) -> Drawing {
-        draw(&self.source, settings)
+    fn draw(&self, settings: &Settings) -> Result<Drawing> {
+        Ok(draw(&self.source, settings))
     }
 }
 
