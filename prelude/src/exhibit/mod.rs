@@ -23,8 +23,9 @@ mod text;
 mod tests;
 
 pub use chart::{
-    Chart, NUMBERS, Names, Reference, biplot, correlation_map, loading_plot, score_plot, scree,
-    structure_circle,
+    Chart, Intervals, NUMBERS, Names, Reference, biplot, correlation_map, loading_bars,
+    loading_plot, pairs, profiles, score_matrix, score_plot, scree, structure_circle,
+    variance_shares,
 };
 pub use numbers::{fixed, significant, stored};
 pub use tables::{NumberFormat, Table, TableColumn};

@@ -60,7 +60,7 @@ impl Picture for Biplot {
     }
 
     fn takes(&self) -> &'static [Setting] {
-        &[Setting::Components, Setting::Groups, Setting::Labels, Setting::Coverage]
+        &[Setting::Components, Setting::Groups, Setting::Labels, Setting::Coverage, Setting::Hulls]
     }
 
     fn check(&self, settings: &Settings) -> Result<()> {

@@ -11,10 +11,12 @@ use super::svg::Svg;
 use super::ticks::Ticks;
 
 pub(super) const TICK_SIZE: f64 = 11.0;
+/// How far a tick's text may reach beyond its frame where another frame follows.
+pub(super) const OVERHANG: f64 = 1.0;
 const BELOW: f64 = 40.0;
 const ABOVE: f64 = 24.0;
 /// Room that a tick's text needs across and down.
-const LEAST_ACROSS: f64 = 64.0;
+const LEAST_ACROSS: f64 = 46.0;
 const LEAST_DOWN: f64 = 40.0;
 
 /// What one axis shows.
@@ -87,21 +89,47 @@ impl Frame {
 
     /// Grid and tick texts alone.
     pub fn draw_grid(&self, svg: &mut Svg) {
-        let Area { left, top, right, bottom } = self.area;
+        self.draw_rules(svg);
         let axes = svg.element("g").with("class", "axes");
         axes.at("font-size", TICK_SIZE).with("fill", INK_SOFT).around(|svg| {
-            for value in self.x_ticks.values() {
-                let x = self.across(value);
-                push_rule(svg, (x, top), (x, bottom), value == 0.0);
-                let text = self.x_ticks.text(value);
-                push_text(svg, (x, bottom + 15.0), "middle", &text);
-            }
-            for value in self.y_ticks.values() {
-                let y = self.up(value);
-                push_rule(svg, (left, y), (right, y), value == 0.0);
-                push_text(svg, (left - 6.0, y + 4.0), "end", &self.y_ticks.text(value));
-            }
+            self.text_ticks_below(svg, f64::INFINITY);
+            self.text_ticks_left(svg);
         });
+    }
+
+    /// The lines of the grid.
+    pub fn draw_rules(&self, svg: &mut Svg) {
+        let Area { left, top, right, bottom } = self.area;
+        for value in self.x_ticks.values() {
+            let x = self.across(value);
+            push_rule(svg, (x, top), (x, bottom), value == 0.0);
+        }
+        for value in self.y_ticks.values() {
+            let y = self.up(value);
+            push_rule(svg, (left, y), (right, y), value == 0.0);
+        }
+    }
+
+    /// The texts of the horizontal axis that reach at most so far beyond its ends: those of
+    /// neighbouring frames must not meet.
+    pub fn text_ticks_below(&self, svg: &mut Svg, overhang: f64) {
+        for value in self.x_ticks.values() {
+            let (x, text) = (self.across(value), self.x_ticks.text(value));
+            let half = width(&text, TICK_SIZE, Weight::Regular) / 2.0;
+            let inside =
+                x - half >= self.area.left - overhang && x + half <= self.area.right + overhang;
+            if inside {
+                push_text(svg, (x, self.area.bottom + 15.0), "middle", &text);
+            }
+        }
+    }
+
+    /// The texts of the vertical axis.
+    pub fn text_ticks_left(&self, svg: &mut Svg) {
+        for value in self.y_ticks.values() {
+            let at = (self.area.left - 6.0, self.up(value) + 4.0);
+            push_text(svg, at, "end", &self.y_ticks.text(value));
+        }
     }
 
     /// A text under each place of the horizontal axis, level where all have room, else aslant.
@@ -165,7 +193,7 @@ pub(super) fn push_rule(svg: &mut Svg, from: (f64, f64), to: (f64, f64), is_zero
 fn ticks(axis: &Axis, length: f64, least_apart: f64) -> Ticks {
     match axis {
         Axis::Numbers(low, high) => {
-            Ticks::within(*low, *high, (length / least_apart).clamp(1.0, 8.0) as usize)
+            Ticks::within(*low, *high, (length / least_apart).ceil().clamp(2.0, 8.0) as usize)
         }
         Axis::Places(_) => Ticks::within(0.0, 0.0, 1),
     }

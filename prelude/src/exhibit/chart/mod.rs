@@ -16,12 +16,17 @@ mod picture;
 mod settings;
 mod source;
 
+mod bars;
 mod biplot;
 mod circle;
 mod correlations;
 mod loadings;
+mod matrix;
+mod pairs;
+mod profiles;
 mod scores;
 mod scree;
+mod shares;
 
 mod arrows;
 mod groups;
@@ -31,6 +36,7 @@ mod units;
 mod card;
 mod ellipse;
 mod frame;
+mod hull;
 mod labels;
 mod marks;
 mod measure;
@@ -46,14 +52,19 @@ mod tests;
 use std::path::Path;
 use std::sync::Arc;
 
+pub use bars::loading_bars;
 pub use biplot::biplot;
 pub use circle::structure_circle;
 pub use correlations::correlation_map;
 pub use loadings::loading_plot;
+pub use matrix::score_matrix;
 pub use names::Names;
+pub use pairs::pairs;
+pub use profiles::profiles;
 pub use scores::score_plot;
 pub use scree::scree;
-pub use settings::Reference;
+pub use settings::{Intervals, Reference};
+pub use shares::variance_shares;
 
 use self::card::Card;
 use self::picture::{Drawing, Picture};
@@ -134,6 +145,24 @@ impl Chart {
     /// Adds a line to a scree: variances to compare the components with.
     pub fn reference(mut self, reference: impl Into<Reference>) -> Self {
         self.settings.references.push(reference.into());
+        self
+    }
+
+    /// How many leading components to draw, in charts that draw several side by side.
+    pub fn first(mut self, n_components: usize) -> Self {
+        self.settings.first = Some(n_components);
+        self
+    }
+
+    /// Adds a whisker to each loading.
+    pub fn intervals(mut self, intervals: impl Into<Intervals>) -> Self {
+        self.settings.intervals = Some(intervals.into());
+        self
+    }
+
+    /// Draws the convex hull around the units of each group, or around all units.
+    pub fn hulls(mut self) -> Self {
+        self.settings.hulls = true;
         self
     }
 

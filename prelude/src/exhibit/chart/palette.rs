@@ -37,11 +37,14 @@ pub(super) const COUNTS: [&str; 5] = ["#e6e2d9", "#d0cbc0", "#b5afa3", "#989287"
 pub(super) const SEGMENTS: [(&str, &str); 4] =
     [("#2d2582", CARD), ("#463f9d", CARD), ("#97a9d4", INK), ("#c9d3e6", INK)];
 
+/// Components that add up in one bar, first to fourth.
+pub(super) const LAYERS: [&str; 4] = ["#2d2582", "#7d78bd", "#b3bfe0", "#d9d3c3"];
+
 /// The full colours of what is positive and what is negative, for shades that grow from the card's
 /// ground. They differ in lightness, and a sign or a stroke is always the second cue.
 pub(super) const POSITIVE: &str = "#2d2582";
 /// See [`POSITIVE`].
-pub(super) const NEGATIVE: &str = "#a8791a";
+pub(super) const NEGATIVE: &str = "#b98a2b";
 
 /// The shade of a value between −1 and 1, from the ground of the card to a full colour, and the
 /// ink that can be read on it.
@@ -49,8 +52,8 @@ pub(super) fn shade(value: f64) -> (String, &'static str) {
     let full = if value < 0.0 { NEGATIVE } else { POSITIVE };
     let weight = value.abs().clamp(0.0, 1.0);
     let mixed = mix(CARD, full, weight);
-    // Ink turns light where the ground is nearer to the full colour than to the card.
-    let dark_ground = if value < 0.0 { weight > 0.86 } else { weight > 0.5 };
+    // Ink turns light where the ground is nearer to the dark full colour than to the card.
+    let dark_ground = value > 0.5;
     (mixed, if dark_ground { "#ffffff" } else { INK })
 }
 
@@ -278,6 +281,16 @@ mod tests {
         for sight in [&NORMAL, &PROTANOPIA, &DEUTERANOPIA, &TRITANOPIA] {
             let colors = [shade(0.8).0, shade(-0.8).0, shade(0.0).0];
             assert!(smallest_distance(&colors.each_ref().map(String::as_str), sight) > 30.0);
+        }
+    }
+
+    #[test]
+    fn layers_that_touch_differ_in_every_sight() {
+        for sight in [&NORMAL, &PROTANOPIA, &DEUTERANOPIA, &TRITANOPIA] {
+            for pair in LAYERS.windows(2) {
+                let found = smallest_distance(pair, sight);
+                assert!(found > 15.0, "{pair:?}: {found:.1}");
+            }
         }
     }
 
