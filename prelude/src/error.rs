@@ -359,6 +359,13 @@ pub enum Error {
         /// What is accepted, in words.
         accepted: &'static str,
     },
+    /// A choice needs an option that was not given.
+    OptionNeeded {
+        /// The option.
+        option: &'static str,
+        /// What needs it.
+        needed_by: &'static str,
+    },
     /// The computation was asked to stop.
     Interrupted,
     /// A chart was given a setting that its kind does not have.

@@ -6,7 +6,8 @@
 
 // From tables to statistics.
 pub use crate::components::{
-    PrincipalComponents, Reconstruction, Route, Scaling, principal_components,
+    ComponentOptions, Decomposition, FittedComponents, PrincipalComponents, RandomisedOptions,
+    Reconstruction, Route, Scaling, principal_components, principal_components_with,
 };
 pub use crate::error::{Error, Result};
 pub use crate::exhibit::{

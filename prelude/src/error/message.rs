@@ -261,6 +261,9 @@ impl fmt::Display for Error {
             Error::OptionOutOfRange { option, value, accepted } => {
                 write!(f, "the option `{option}` is {value}; accepted: {accepted}")
             }
+            Error::OptionNeeded { option, needed_by } => {
+                write!(f, "{needed_by} needs the option `{option}`")
+            }
             Error::Interrupted => write!(f, "the computation was asked to stop"),
             Error::SettingNotForChart { setting, chart, available } => {
                 write!(f, "a {chart} has no {setting}; it has {}", available.join(", "))
