@@ -233,6 +233,11 @@ pub enum Error {
         /// The columns.
         columns: Vec<String>,
     },
+    /// Rows hold no value at all.
+    EmptyRows {
+        /// Their labels.
+        labels: Vec<String>,
+    },
     /// Dropping rows with missing values would leave none.
     NoCompleteRow {
         /// Columns with missing values, and how many each.
@@ -358,6 +363,13 @@ pub enum Error {
         value: f64,
         /// What is accepted, in words.
         accepted: &'static str,
+    },
+    /// A choice needs an option that was not given.
+    OptionNeeded {
+        /// The option.
+        option: &'static str,
+        /// What needs it.
+        needed_by: &'static str,
     },
     /// The computation was asked to stop.
     Interrupted,

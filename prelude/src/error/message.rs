@@ -168,6 +168,15 @@ impl fmt::Display for Error {
                     Names(columns)
                 )
             }
+            Error::EmptyRows { labels } => {
+                let (noun, verb) =
+                    if labels.len() == 1 { ("row", "holds") } else { ("rows", "hold") };
+                write!(
+                    f,
+                    "{noun} {} {verb} no value at all; leave out what is empty",
+                    Names(labels)
+                )
+            }
             Error::NoCompleteRow { columns, n_rows } => {
                 write!(f, "none of {n_rows} rows is complete; missing values: ")?;
                 list(f, columns, |f, c| write!(f, "{} in {}", c.count, Name(&c.column)))
@@ -260,6 +269,9 @@ impl fmt::Display for Error {
             }
             Error::OptionOutOfRange { option, value, accepted } => {
                 write!(f, "the option `{option}` is {value}; accepted: {accepted}")
+            }
+            Error::OptionNeeded { option, needed_by } => {
+                write!(f, "{needed_by} needs the option `{option}`")
             }
             Error::Interrupted => write!(f, "the computation was asked to stop"),
             Error::SettingNotForChart { setting, chart, available } => {
