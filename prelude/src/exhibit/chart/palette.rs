@@ -52,19 +52,30 @@ pub(super) fn shade(value: f64) -> (String, &'static str) {
     let full = if value < 0.0 { NEGATIVE } else { POSITIVE };
     let weight = value.abs().clamp(0.0, 1.0);
     let mixed = mix(CARD, full, weight);
-    // Ink turns light where the ground is nearer to the dark full colour than to the card.
-    let dark_ground = value > 0.5;
-    (mixed, if dark_ground { "#ffffff" } else { INK })
+    // At this luminance black and white ink have the same contrast, 4.58 (WCAG 2.2).
+    let ink = if luminance(&mixed) > 0.179 { "#000000" } else { "#ffffff" };
+    (mixed, ink)
+}
+
+/// The relative luminance of a colour (WCAG 2.2, after IEC 61966-2-1).
+fn luminance(hex: &str) -> f64 {
+    let linear = |at: usize| {
+        let s = channel(hex, at) / 255.0;
+        if s <= 0.04045 { s / 12.92 } else { ((s + 0.055) / 1.055).powf(2.4) }
+    };
+    0.2126 * linear(1) + 0.7152 * linear(3) + 0.0722 * linear(5)
+}
+
+fn channel(hex: &str, at: usize) -> f64 {
+    let digits = hex.get(at..at + 2).and_then(|digits| u8::from_str_radix(digits, 16).ok());
+    f64::from(digits.unwrap_or(0))
 }
 
 /// A colour between two, each channel in proportion.
 fn mix(from: &str, to: &str, weight: f64) -> String {
-    let channel = |hex: &str, at: usize| {
-        hex.get(at..at + 2).and_then(|digits| u8::from_str_radix(digits, 16).ok()).unwrap_or(0)
-    };
     let mut out = String::from("#");
     for at in [1, 3, 5] {
-        let (a, b) = (f64::from(channel(from, at)), f64::from(channel(to, at)));
+        let (a, b) = (channel(from, at), channel(to, at));
         out.push_str(&format!("{:02x}", (a + (b - a) * weight).round() as u8));
     }
     out
