@@ -233,6 +233,11 @@ pub enum Error {
         /// The columns.
         columns: Vec<String>,
     },
+    /// Rows hold no value at all.
+    EmptyRows {
+        /// Their labels.
+        labels: Vec<String>,
+    },
     /// Dropping rows with missing values would leave none.
     NoCompleteRow {
         /// Columns with missing values, and how many each.
@@ -274,6 +279,15 @@ pub enum Error {
         label: String,
         /// The first two rows that carry it.
         rows: (usize, usize),
+    },
+    /// The weight of a row is not a positive finite number.
+    BadWeight {
+        /// The first such row, counted from 1.
+        row: usize,
+        /// Its label.
+        label: String,
+        /// The weight that was given.
+        value: f64,
     },
     /// Counts that should agree do not.
     ShapeMismatch {
@@ -350,6 +364,13 @@ pub enum Error {
         /// What is accepted, in words.
         accepted: &'static str,
     },
+    /// A choice needs an option that was not given.
+    OptionNeeded {
+        /// The option.
+        option: &'static str,
+        /// What needs it.
+        needed_by: &'static str,
+    },
     /// The computation was asked to stop.
     Interrupted,
     /// A chart was given a setting that its kind does not have.
@@ -358,8 +379,8 @@ pub enum Error {
         setting: &'static str,
         /// The kind of chart.
         chart: &'static str,
-        /// The kinds of chart that have it.
-        charts: &'static str,
+        /// The settings that it has.
+        available: Vec<&'static str>,
     },
     /// An iteration ended without a usable answer.
     NoConvergence {

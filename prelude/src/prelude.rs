@@ -6,23 +6,28 @@
 
 // From tables to statistics.
 pub use crate::components::{
-    PrincipalComponents, Reconstruction, Route, Scaling, principal_components,
+    ComponentOptions, Decomposition, FittedComponents, PrincipalComponents, RandomisedOptions,
+    Reconstruction, Route, Scaling, principal_components, principal_components_with,
 };
 pub use crate::error::{Error, Result};
 pub use crate::exhibit::{
     Bundle, Chart, Content, Exhibit, NumberFormat, Reference, Table, TableColumn, biplot,
-    loading_plot, score_plot, scree, significant,
+    correlation_map, loading_plot, pairs, profiles, score_matrix, score_plot, scree, significant,
+    structure_circle, variance_shares,
 };
 pub use crate::parallel::{Noise, ParallelAnalysis, ParallelOptions, parallel_analysis};
 pub use crate::random::{Generator, random_generator, random_normal};
 pub use crate::table::{
-    ColumnDescription, ColumnDescriptions, DataMatrix, FrameToMatrix, Label, MatrixOptions,
-    Missing, MissingPattern, MissingValues, NamedMatrix, TableOptions, describe_columns,
-    missing_values, read_table, read_table_with,
+    ColumnDescription, ColumnDescriptions, DataMatrix, FrameToMatrix, GappedMatrix, Label,
+    MatrixOptions, Missing, MissingPattern, MissingValues, NamedMatrix, TableOptions,
+    describe_columns, missing_values, read_table, read_table_with,
 };
 
 // Showing something in the middle of a cell.
 pub use crate::show;
+
+// Saying how far a long loop has come.
+pub use crate::live::{Progress, counted};
 
 // Matrices and vectors.
 pub use nalgebra::{self, DMatrix, DVector, dmatrix, dvector};

@@ -7,6 +7,8 @@
 use std::path::PathBuf;
 use std::time::Duration;
 
+use crate::worker::message::Line;
+
 /// The forms of one exhibit, as the notebook format and the messaging protocol write `data`.
 pub type MimeBundle = serde_json::Map<String, serde_json::Value>;
 
@@ -63,6 +65,8 @@ pub enum CellEvent {
     Display(MimeBundle),
     /// The exhibit of the cell's final expression.
     Result(MimeBundle),
+    /// How far long work has come; nothing when it is over.
+    Progress(Option<Line>),
 }
 
 /// How a cell ended and how long it took.

@@ -42,6 +42,8 @@ impl Outputs {
                 }));
                 self.bundles.push(bundle);
             }
+            // For whoever waits, not for whoever reads the notebook later.
+            CellEvent::Progress(_) => {}
         }
     }
 

@@ -18,6 +18,7 @@ use super::target::Target;
 use crate::cells::Engine;
 use crate::cells::types::{CellEvent, CellReply, CellRequest, Outcome, Timings};
 use crate::setup::progress::clock;
+use crate::worker::headway;
 
 /// How many events of a cell may wait to be taken.
 const WAITING: usize = 256;
@@ -142,7 +143,12 @@ async fn run_cell(
     let reply = loop {
         tokio::select! {
             biased;
-            Some(event) = events.recv() => outputs.add(event, count),
+            Some(event) = events.recv() => {
+                if let CellEvent::Progress(line) = &event {
+                    screen.headway(line.as_ref().map(headway::words).as_deref());
+                }
+                outputs.add(event, count);
+            }
             reply = &mut execution => break reply,
             () = pressed(keyboard) => interrupt(),
             _ = ticks.tick() => screen.tick(),

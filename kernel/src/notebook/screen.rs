@@ -40,6 +40,18 @@ impl Screen {
         }
     }
 
+    /// Long work of the cell has come this far, or is over.
+    pub fn headway(&self, line: Option<&str>) {
+        if let Some(bar) = &self.bar {
+            let message = bar.message();
+            let cell = message.split("  ").next().unwrap_or_default().to_owned();
+            bar.set_message(match line {
+                Some(line) => format!("{cell}  {line}"),
+                None => cell,
+            });
+        }
+    }
+
     /// Time goes by.
     pub fn tick(&self) {
         if let Some(bar) = &self.bar {

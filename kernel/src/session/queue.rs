@@ -47,12 +47,36 @@ pub struct Running {
     pub turn: Turn,
     /// The plain text of its result, for the history.
     pub output: Option<String>,
+    /// The line about its long work that clients have been shown.
+    pub headway: Headway,
+}
+
+/// What became of the line that says how far a cell has come.
+#[derive(Debug, Clone, Copy, PartialEq, Eq)]
+pub enum Headway {
+    /// There was none yet.
+    Never,
+    /// It says something.
+    Shown,
+    /// It was emptied; its place is used again.
+    Emptied,
 }
 
 impl Running {
     /// Whether clients see what it shows.
     pub fn is_heard(&self) -> bool {
         !self.order.execute.silent
+    }
+
+    /// Whether somebody waits for it who wants to know how far it has come. A client that can ask
+    /// a person for input has one; one that runs notebooks by itself keeps all that is shown.
+    pub fn is_watched(&self) -> bool {
+        self.is_heard() && self.order.execute.allow_stdin
+    }
+
+    /// The name under which the line about its long work is shown and changed.
+    pub fn headway_id(&self) -> String {
+        format!("semiaxis-headway-{}", self.order.message.header.msg_id)
     }
 
     /// Whether it is counted and remembered. A silent cell never is, whatever else it asks.
@@ -114,6 +138,7 @@ impl Queue {
             since: Utc::now(),
             turn: Turn::Waiting,
             output: None,
+            headway: Headway::Never,
         };
         if running.is_stored() {
             self.counted += 1;

@@ -24,7 +24,7 @@ use super::queue::{Order, Queue, Running};
 use super::stream::{Pacer, StreamBuffer};
 use super::turns::plain_failure;
 use super::watch::Signal;
-use crate::cells::types::{Scope, StreamName};
+use crate::cells::types::Scope;
 use crate::help::Index;
 use crate::wire::{Inlet, Intake, Refusal, Request, note};
 
@@ -257,7 +257,7 @@ impl<O: Outlet> Service<O> {
         match news {
             Some(News::Progress(line)) => {
                 if self.queue.running.as_ref().is_some_and(Running::waits) {
-                    self.show_text(StreamName::Stdout, format!("{line}\n")).await;
+                    self.show_preparation(line.clone()).await;
                 }
                 if let EngineState::Starting(latest) = &mut self.state {
                     *latest = Some(line);
@@ -265,6 +265,7 @@ impl<O: Outlet> Service<O> {
             }
             Some(News::Index(index)) => self.index = index,
             Some(News::Ready(readiness)) => {
+                self.show_headway(None).await;
                 self.state = EngineState::Ready(readiness.interrupt);
                 self.scope = readiness.scope;
                 self.pump().await;

@@ -28,6 +28,7 @@ use crate::cells::types::{
     Timings, VariableInfo,
 };
 use crate::wire::{Inlet, Request};
+use crate::worker::message::Line;
 
 /// Longer than anything here takes, short enough to be waited for when something hangs.
 const DEADLINE: Duration = Duration::from_secs(20);
@@ -59,6 +60,7 @@ impl Script {
             "err" => events.send(stream(StreamName::Stderr)).await.unwrap(),
             "show" => events.send(CellEvent::Display(plain(rest))).await.unwrap(),
             "result" => events.send(CellEvent::Result(plain(rest))).await.unwrap(),
+            "work" => events.send(CellEvent::Progress(work(rest.parse().ok()))).await.unwrap(),
             "let" => self.defined.push(rest.to_owned()),
             "fail" => return Some(Outcome::Failed(failure("Oops", rest))),
             "panic" => panic!("on purpose"),
@@ -120,6 +122,11 @@ impl Evaluator for Script {
 
 fn plain(text: &str) -> MimeBundle {
     json!({"text/plain": text}).as_object().unwrap().clone()
+}
+
+/// A line that says so many of ten steps are done, or none.
+fn work(done: Option<usize>) -> Option<Line> {
+    done.map(|done| Line { what: "fits".to_owned(), done, total: Some(10), seconds: 2.0 })
 }
 
 fn failure(name: &str, message: &str) -> CellFailure {
@@ -277,6 +284,7 @@ fn line(inlet: Option<Inlet>, message: &JupyterMessage) -> String {
             )
         }
         "display_data" => format!("display {}", text(&content["data"]["text/plain"])),
+        "update_display_data" => format!("update {}", text(&content["data"]["text/plain"])),
         "error" => format!("error {}: {}", text(&content["ename"]), text(&content["evalue"])),
         other => other.to_owned(),
     }
@@ -301,6 +309,34 @@ async fn a_cell_shows_everything_in_order_between_busy_and_idle() {
         ]
     );
     assert_eq!(session.run_to_end("result g").await[1], "input [2]");
+}
+
+#[tokio::test]
+async fn long_work_is_one_line_that_changes_and_goes() {
+    let mut session = Harness::ready().await;
+    let watched =
+        |code: &str| ExecuteRequest { allow_stdin: true, ..ExecuteRequest::new(code.into()) };
+    let id = session.ask(watched("work 4\nwork 8\nwork over\nout a\nwork 2\nfail broken")).await;
+    session.until_idle(&id).await;
+    assert_eq!(
+        session.lines(&id)[2..],
+        [
+            "display fits: 4 of 10, 2 a second, about 3 s left",
+            "update fits: 8 of 10, 4 a second, about 1 s left",
+            "update ",
+            "stdout a",
+            "update fits: 2 of 10, 1 a second, about 8 s left",
+            "update ",
+            "error Oops: broken",
+            "-> execute_reply error",
+            "idle"
+        ]
+    );
+    // A client that runs a notebook by itself would keep the line in the file.
+    let unwatched = ExecuteRequest { allow_stdin: false, ..watched("work 4\nresult f") };
+    let id = session.ask(unwatched).await;
+    session.until_idle(&id).await;
+    assert_eq!(session.lines(&id)[2..], ["result [2] f", "-> execute_reply ok", "idle"]);
 }
 
 #[tokio::test]

@@ -9,18 +9,19 @@ use std::time::Instant;
 use jupyter_protocol::{
     DisplayData, ErrorOutput, ExecuteInput, ExecuteReply, ExecuteResult, ExecutionCount,
     ExpressionResult, JupyterMessageContent, ReplyError, ReplyStatus, Status, Stdio, StreamContent,
-    Transient,
+    Transient, UpdateDisplayData,
 };
 use serde_json::{Value, json};
 
 use super::answers::media;
 use super::publish::{Outlet, reply_to};
-use super::queue::{Order, Running, Turn};
+use super::queue::{Headway, Order, Running, Turn};
 use super::service::{EngineState, Service};
 use super::stream::Gathered;
 use crate::cells::types::{
     CellEvent, CellFailure, CellReply, MimeBundle, Outcome, StreamName, Timings,
 };
+use crate::worker::headway;
 
 impl<O: Outlet> Service<O> {
     /// Gives the next cell its turn, and the engine the cell whose turn it is.
@@ -40,8 +41,8 @@ impl<O: Outlet> Service<O> {
                     self.history.push(execution_count.value(), &code);
                 }
                 if let EngineState::Starting(Some(line)) = &self.state {
-                    let line = format!("{line}\n");
-                    self.show_text(StreamName::Stdout, line).await;
+                    let line = line.clone();
+                    self.show_preparation(line).await;
                 }
             }
             let Some(running) = &mut self.queue.running else { return };
@@ -116,7 +117,39 @@ impl<O: Outlet> Service<O> {
                 };
                 self.show_content(content.into()).await;
             }
+            CellEvent::Progress(line) => {
+                let line = line.as_ref().map(headway::words);
+                self.show_headway(line.as_deref()).await;
+            }
         }
+    }
+
+    /// Says what is being prepared while a cell waits for it: in the line that goes again where
+    /// somebody watches, else as text.
+    pub(super) async fn show_preparation(&mut self, line: String) {
+        match &self.queue.running {
+            Some(running) if running.is_watched() => self.show_headway(Some(&line)).await,
+            _ => self.show_text(StreamName::Stdout, format!("{line}\n")).await,
+        }
+    }
+
+    /// Shows, changes or empties the line that says how far the running cell has come.
+    pub(super) async fn show_headway(&mut self, line: Option<&str>) {
+        let Some(running) = &mut self.queue.running else { return };
+        if !running.is_watched() || (line.is_none() && running.headway != Headway::Shown) {
+            return;
+        }
+        let now = if line.is_some() { Headway::Shown } else { Headway::Emptied };
+        let before = std::mem::replace(&mut running.headway, now);
+        let data = media(plain_bundle(line.unwrap_or_default()));
+        let display_id = running.headway_id();
+        let content = if before != Headway::Never {
+            UpdateDisplayData::new(data, &display_id).into()
+        } else {
+            let transient = Some(Transient { display_id: Some(display_id) });
+            DisplayData { transient, ..DisplayData::new(data) }.into()
+        };
+        self.show_content(content).await;
     }
 
     pub(super) async fn show_text(&mut self, name: StreamName, text: String) {
@@ -161,6 +194,7 @@ impl<O: Outlet> Service<O> {
         reply: CellReply,
         expressions: Vec<(String, Result<MimeBundle, CellFailure>)>,
     ) {
+        self.show_headway(None).await;
         self.flush().await;
         let failure = match reply.outcome {
             Outcome::Done => None,
@@ -219,6 +253,10 @@ impl<O: Outlet> Service<O> {
         }
         self.abort_waiting().await;
     }
+}
+
+fn plain_bundle(text: &str) -> MimeBundle {
+    MimeBundle::from_iter([("text/plain".to_owned(), text.into())])
 }
 
 /// A failure with nothing to tell but one line.

@@ -4,6 +4,7 @@
 //! another way: a thin host that loads the prelude and hands over to it. A cell that aborts,
 //! overflows its stack or is killed costs the worker and the variables in it, never the kernel.
 
+pub mod headway;
 pub mod host;
 pub mod process;
 

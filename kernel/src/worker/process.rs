@@ -163,6 +163,9 @@ impl Worker {
                     let _ = events.send(CellEvent::Display(bundle(forms))).await;
                     let _ = self.send(&Command::Proceed);
                 }
+                News::Report(Some(Report::Progress { line })) => {
+                    let _ = events.send(CellEvent::Progress(line)).await;
+                }
                 News::Report(Some(Report::Ended(ended))) => {
                     self.pass_on_the_rest(events).await;
                     return Ending::Reported(ended);

@@ -26,6 +26,39 @@ use rayon::prelude::*;
 
 use super::views::{PIECES, WORTH_CUTTING, view, view_mut};
 use crate::live::interrupted;
+use crate::table::DataMatrix;
+
+/// How much each row counts, for sums over rows.
+///
+/// Products take each row times the root of its weight, so that a product of two rows carries the
+/// weight itself; means are weighted ones.
+#[derive(Clone)]
+pub(crate) struct RowWeights {
+    // One per row, positive, of sum n.
+    weights: Vec<f64>,
+    roots: Vec<f64>,
+}
+
+impl RowWeights {
+    /// Those of a matrix that make a difference.
+    pub(crate) fn of(x: &DataMatrix) -> Option<Self> {
+        let weights = x.relative_weights()?;
+        let roots = weights.iter().map(|weight| weight.sqrt()).collect();
+        Some(RowWeights { weights, roots })
+    }
+
+    /// The weights, of sum n.
+    pub(crate) fn weights(&self) -> &[f64] {
+        &self.weights
+    }
+
+    /// Multiplies each row by the root of its weight.
+    pub(crate) fn weigh_rows(&self, matrix: &mut DMatrix<f64>) {
+        for mut column in matrix.column_iter_mut() {
+            column.iter_mut().zip(&self.roots).for_each(|(value, root)| *value *= root);
+        }
+    }
+}
 
 /// Column means and the cross-product of deviations from them.
 pub(crate) struct CrossProduct {
@@ -50,8 +83,37 @@ const MOST_PARTS: usize = 16;
 /// Doubles in a block, so that it stays in the second-level cache with its products.
 const BLOCK: usize = 48 << 10;
 
+/// The centre and spread of each column alone.
+pub(crate) fn moments(x: &DMatrix<f64>, weights: Option<&RowWeights>) -> Moments {
+    let (n, p) = x.shape();
+    let columns: Vec<(f64, f64)> = x
+        .as_slice()
+        .par_chunks(n)
+        .map_init(
+            || vec![0.0; n],
+            |centred, column| {
+                if interrupted() {
+                    return (0.0, 0.0);
+                }
+                let centre = match weights {
+                    None => centre_into(column, centred),
+                    Some(weights) => weights.centre_into(column, centred, 0),
+                };
+                // The squares about the rounded mean exceed those about the mean by n times the
+                // square of what is left of it.
+                let squares: f64 = squares(centred) - n as f64 * centre.left * centre.left;
+                (centre.rounded + centre.left, squares.max(0.0))
+            },
+        )
+        .collect();
+    Moments {
+        mean: DVector::from_iterator(p, columns.iter().map(|(mean, _)| *mean)),
+        sum_squares: DVector::from_iterator(p, columns.iter().map(|(_, squares)| *squares)),
+    }
+}
+
 /// The cross-product of the columns, p × p.
-pub(crate) fn of_columns(x: &DMatrix<f64>) -> CrossProduct {
+pub(crate) fn of_columns(x: &DMatrix<f64>, weights: Option<&RowWeights>) -> CrossProduct {
     let (n, p) = x.shape();
     let block = (BLOCK / p).clamp(96, 4096).min(n);
     let n_blocks = n.div_ceil(block);
@@ -79,7 +141,10 @@ pub(crate) fn of_columns(x: &DMatrix<f64>) -> CrossProduct {
                 let buffer = &mut buffer[..n_rows * p];
                 for (j, centred) in buffer.chunks_mut(n_rows).enumerate() {
                     let column = &x.as_slice()[j * n + first..][..n_rows];
-                    let centre = centre_into(column, centred);
+                    let centre = match weights {
+                        None => centre_into(column, centred),
+                        Some(weights) => weights.centre_into(column, centred, first),
+                    };
                     (rounded[j], left[j]) = (centre.rounded, centre.left);
                 }
                 let block = MatRef::from_column_major_slice(buffer, n_rows, p);
@@ -89,14 +154,23 @@ pub(crate) fn of_columns(x: &DMatrix<f64>) -> CrossProduct {
         })
         .collect();
     let mut lower = add_in_order(sums);
-    let weight = |place: usize| block.min(n - place * block) as f64;
+    let weight = |place: usize| {
+        let (first, n_rows) = (place * block, block.min(n - place * block));
+        weights.map_or(n_rows as f64, |weights| sum(&weights.weights[first..first + n_rows]))
+    };
     let mean = gather(&mut lower, rounded, left, weight);
     CrossProduct { mean, lower }
 }
 
 /// The cross-product of the rows, n × n, of columns that are centred and, where `unit` says so,
 /// brought to unit standard deviation (divisor n − 1). Columns that do not vary stay zero.
-pub(crate) fn of_rows(x: &DMatrix<f64>, unit: bool) -> (Moments, DMatrix<f64>) {
+///
+/// With weights, entry (i, k) carries the roots of the weights of both rows.
+pub(crate) fn of_rows(
+    x: &DMatrix<f64>,
+    unit: bool,
+    weights: Option<&RowWeights>,
+) -> (Moments, DMatrix<f64>) {
     let (n, p) = x.shape();
     let block = (BLOCK / n).clamp(96, 4096).min(p);
     let n_blocks = p.div_ceil(block);
@@ -122,9 +196,20 @@ pub(crate) fn of_rows(x: &DMatrix<f64>, unit: bool) -> (Moments, DMatrix<f64>) {
                 let first = part * per_part + place * block;
                 let buffer = &mut buffer[..n * means.len()];
                 for (k, scaled) in buffer.chunks_mut(n).enumerate() {
-                    let centre = centre_into(&x.as_slice()[(first + k) * n..][..n], scaled);
+                    let column = &x.as_slice()[(first + k) * n..][..n];
+                    let centre = match weights {
+                        None => centre_into(column, scaled),
+                        Some(weights) => weights.centre_into(column, scaled, 0),
+                    };
                     means[k] = centre.rounded + centre.left;
-                    scaled.iter_mut().for_each(|deviation| *deviation -= centre.left);
+                    match weights {
+                        None => scaled.iter_mut().for_each(|deviation| *deviation -= centre.left),
+                        Some(weights) => {
+                            for (deviation, root) in scaled.iter_mut().zip(&weights.roots) {
+                                *deviation -= centre.left * root;
+                            }
+                        }
+                    }
                     squares[k] = scaled.iter().map(|d| d * d).sum();
                     if unit && squares[k] > 0.0 {
                         let variance: f64 = squares[k] / (n - 1) as f64;
@@ -170,6 +255,27 @@ fn centre_into(column: &[f64], centred: &mut [f64]) -> Centre {
     Centre { rounded, left: left / n }
 }
 
+impl RowWeights {
+    /// As [`centre_into`] for rows from `first` on, with deviations times the roots of the weights.
+    fn centre_into(&self, column: &[f64], centred: &mut [f64], first: usize) -> Centre {
+        let rows = first..first + column.len();
+        let (weights, roots) = (&self.weights[rows.clone()], &self.roots[rows]);
+        for ((product, value), weight) in centred.iter_mut().zip(column).zip(weights) {
+            *product = value * weight;
+        }
+        let total = sum(weights);
+        let rounded = sum(centred) / total;
+        for ((product, value), weight) in centred.iter_mut().zip(column).zip(weights) {
+            *product = (value - rounded) * weight;
+        }
+        let left = sum(centred) / total;
+        for ((deviation, value), root) in centred.iter_mut().zip(column).zip(roots) {
+            *deviation = (value - rounded) * root;
+        }
+        Centre { rounded, left }
+    }
+}
+
 /// Running sums kept side by side, so that they vectorise and lose fewer digits than one.
 const LANES: usize = 16;
 
@@ -182,6 +288,17 @@ fn sum(values: &[f64]) -> f64 {
         }
     }
     fold(lanes) + rest.iter().sum::<f64>()
+}
+
+fn squares(values: &[f64]) -> f64 {
+    let mut lanes = [0.0; LANES];
+    let (chunks, rest) = values.as_chunks::<LANES>();
+    for chunk in chunks {
+        for (lane, value) in lanes.iter_mut().zip(chunk) {
+            *lane += value * value;
+        }
+    }
+    fold(lanes) + rest.iter().map(|value| value * value).sum::<f64>()
 }
 
 fn fold(lanes: [f64; LANES]) -> f64 {

@@ -1,6 +1,10 @@
 //! Properties, closed forms and faults. Values from outside programs and books are in the
 //! workspace's `tests/tests/references`.
 
+mod exhibits;
+mod routes;
+mod weights;
+
 use nalgebra::{DMatrix, DVector, dmatrix};
 use proptest::prelude::*;
 use rand_distr::{Distribution, StandardNormal};
@@ -228,7 +232,7 @@ fn a_constant_column_is_named_under_correlation_and_carried_under_covariance() {
     }
     let pca = fit(x, Scaling::Covariance);
     assert_eq!(pca.rank(), 2);
-    assert_eq!(pca.standard_deviations()[1], 0.0);
+    assert_eq!(pca.variable_deviations()[1], 0.0);
     assert!(pca.structure().row(1).iter().all(|value| value.is_nan()));
     assert!(pca.loadings().row(1).iter().all(|value| value.abs() < 1e-15));
     // Values that differ in their last digit only are a constant that was computed twice.

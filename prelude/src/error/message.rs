@@ -168,6 +168,15 @@ impl fmt::Display for Error {
                     Names(columns)
                 )
             }
+            Error::EmptyRows { labels } => {
+                let (noun, verb) =
+                    if labels.len() == 1 { ("row", "holds") } else { ("rows", "hold") };
+                write!(
+                    f,
+                    "{noun} {} {verb} no value at all; leave out what is empty",
+                    Names(labels)
+                )
+            }
             Error::NoCompleteRow { columns, n_rows } => {
                 write!(f, "none of {n_rows} rows is complete; missing values: ")?;
                 list(f, columns, |f, c| write!(f, "{} in {}", c.count, Name(&c.column)))
@@ -195,6 +204,17 @@ impl fmt::Display for Error {
                     write!(f, "the label column {} does not tell rows apart: ", Name(column))?;
                 }
                 write!(f, "rows {} and {} are both labelled {}", rows.0, rows.1, Name(label))
+            }
+            Error::BadWeight { row, label, value } => {
+                write!(f, "the weight of row {row}")?;
+                if *label != row.to_string() {
+                    write!(f, " ({})", Name(label))?;
+                }
+                write!(
+                    f,
+                    " is {value}; accepted: positive finite numbers; leave a row that must "
+                )?;
+                write!(f, "not count out with `.rows_where(…)`")
             }
             Error::ShapeMismatch { what, expected, found } => {
                 write!(f, "{what}: {expected} needed, {found} given")
@@ -250,9 +270,12 @@ impl fmt::Display for Error {
             Error::OptionOutOfRange { option, value, accepted } => {
                 write!(f, "the option `{option}` is {value}; accepted: {accepted}")
             }
+            Error::OptionNeeded { option, needed_by } => {
+                write!(f, "{needed_by} needs the option `{option}`")
+            }
             Error::Interrupted => write!(f, "the computation was asked to stop"),
-            Error::SettingNotForChart { setting, chart, charts } => {
-                write!(f, "a {chart} has no {setting}; charts that do: {charts}")
+            Error::SettingNotForChart { setting, chart, available } => {
+                write!(f, "a {chart} has no {setting}; it has {}", available.join(", "))
             }
             Error::NoConvergence { method } => {
                 write!(f, "{method} did not converge; please report this with the data")

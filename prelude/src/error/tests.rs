@@ -47,6 +47,7 @@ fn examples() -> Vec<Error> {
         },
         Error::MissingValues { columns: counts(), n_rows: 9, n_complete: 6 },
         Error::AllMissing { columns: names(&["x", "y"]) },
+        Error::EmptyRows { labels: names(&["a"]) },
         Error::NoCompleteRow { columns: counts(), n_rows: 9 },
         Error::NonFinite {
             column: "x".into(),
@@ -57,6 +58,8 @@ fn examples() -> Vec<Error> {
         },
         Error::NoRows,
         Error::NoColumns,
+        Error::OptionNeeded { option: "keep", needed_by: "a randomised decomposition" },
+        Error::BadWeight { row: 2, label: "b".into(), value: -1.0 },
         Error::MissingLabels { column: "x".into(), row: 2, count: 1 },
         Error::RepeatedLabel { column: Some("x".into()), label: "a".into(), rows: (1, 2) },
         Error::ShapeMismatch { what: "labels of rows", expected: 2, found: 1 },

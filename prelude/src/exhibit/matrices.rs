@@ -3,7 +3,7 @@
 use nalgebra::{DMatrix, DVector};
 
 use super::numbers::{counted, grouped};
-use super::tables::{Abridged, NumberFormat, Table, TableColumn};
+use super::tables::{Abridged, NumberFormat, Table, TableColumn, stacked};
 use super::{Bundle, Exhibit};
 use crate::table::{
     ColumnDescription, ColumnDescriptions, DataMatrix, MissingValues, NamedMatrix,

@@ -11,7 +11,7 @@ use std::path::PathBuf;
 use serde::{Deserialize, Serialize};
 
 /// The number of this set of messages.
-pub const INTERFACE: u32 = 1;
+pub const INTERFACE: u32 = 2;
 
 /// The name of the one function that a worker process calls in the prelude.
 pub const ENTRY: &str = "semiaxis_worker";
@@ -65,6 +65,11 @@ pub enum Report {
         /// The forms of the exhibit.
         forms: Vec<Form>,
     },
+    /// How far long work of the cell has come; nothing when it is over.
+    Progress {
+        /// The work under way.
+        line: Option<Line>,
+    },
     /// The cell has ended.
     Ended(Ended),
     /// The variables are dropped.
@@ -72,6 +77,19 @@ pub enum Report {
         /// What went wrong in a destructor, if anything did.
         trouble: Option<String>,
     },
+}
+
+/// How far work has come.
+#[derive(Debug, Clone, PartialEq, Serialize, Deserialize)]
+pub struct Line {
+    /// What is being done, in a word or two.
+    pub what: String,
+    /// Steps done.
+    pub done: usize,
+    /// Steps in all, where that is known.
+    pub total: Option<usize>,
+    /// Seconds since the work began.
+    pub seconds: f64,
 }
 
 /// One form of an exhibit: its MIME type and its content as the messaging protocol wants it.

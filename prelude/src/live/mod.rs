@@ -20,7 +20,7 @@ mod worker;
 use std::sync::atomic::{AtomicBool, AtomicU64, Ordering};
 
 pub use cell::{Cell, Failure, leaving, left};
-pub use progress::Progress;
+pub use progress::{Counted, Progress, counted};
 pub use seen::{ByDebug, ByDisplay, ByExhibit, ByName, Seen};
 
 use crate::exhibit::{Bundle, Content};

@@ -13,20 +13,21 @@ use std::panic::{AssertUnwindSafe, catch_unwind};
 use std::path::PathBuf;
 use std::sync::mpsc::{self, Receiver, Sender};
 use std::sync::{Condvar, Mutex, OnceLock, PoisonError};
-use std::time::Duration;
+use std::time::{Duration, Instant};
 
 use super::cell::{Cell, note_panics};
 use super::message::{
     Command, Ended, Form, How, INTERFACE, Report, Run, Trouble, linker_words, read_frame,
     write_frame,
 };
+use super::progress::{Change, Reporter};
 use super::shelf::Shelf;
 
 /// Deep recursion in a cell is ordinary; only touched pages of the stack cost memory.
 const CELL_STACK: usize = 256 << 20;
 
 /// How long printed text without a line's end may wait in the buffer of standard output.
-const FLUSH_EVERY: Duration = Duration::from_millis(25);
+const ATTEND_EVERY: Duration = Duration::from_millis(25);
 
 /// The two ends that threads of the worker share.
 struct Lines {
@@ -65,7 +66,7 @@ pub unsafe extern "C" fn semiaxis_worker(commands: i32, reports: i32) -> i32 {
         eprintln!("the worker could not start its thread for cells: {error}");
         return 2;
     }
-    std::thread::spawn(keep_flushing);
+    std::thread::spawn(keep_attending);
     report(&Report::Ready { interface: INTERFACE });
     listen(&mut BufReader::new(commands), &tasks, &proceed);
     // The kernel has gone, or has let go of this worker; a running cell has no one to run for.
@@ -99,9 +100,9 @@ fn serve_cells(inbox: &Receiver<Task>) {
         let answer = match task {
             Task::Run(run) => {
                 super::begin(run.seed);
-                flushing(true);
+                attend(true);
                 let ended = run_cell(&mut shelf, &mut libraries, &run);
-                flushing(false);
+                attend(false);
                 Report::Ended(ended)
             }
             Task::Forget(names) => {
@@ -207,21 +208,45 @@ pub(super) fn show(forms: Vec<Form>) -> bool {
     true
 }
 
-static FLUSHING: (Mutex<bool>, Condvar) = (Mutex::new(false), Condvar::new());
-
-fn flushing(on: bool) {
-    *FLUSHING.0.lock().unwrap_or_else(PoisonError::into_inner) = on;
-    FLUSHING.1.notify_one();
+/// Whether a cell runs, and what is known of the line about its long work.
+struct Attendance {
+    on: bool,
+    reporter: Reporter,
 }
 
-/// Flushes standard output now and then while a cell runs, so that a `print!` without a line's end
-/// is seen, whichever module of the cell wrote it.
-fn keep_flushing() {
+static ATTENDANCE: (Mutex<Attendance>, Condvar) =
+    (Mutex::new(Attendance { on: false, reporter: Reporter::new() }), Condvar::new());
+
+fn attend(on: bool) {
+    let mut attendance = ATTENDANCE.0.lock().unwrap_or_else(PoisonError::into_inner);
+    attendance.on = on;
+    if !on {
+        // Under the lock, so that no line about the cell can follow its end.
+        tell(attendance.reporter.end());
+    }
+    ATTENDANCE.1.notify_one();
+}
+
+/// While a cell runs, flushes standard output now and then, so that a `print!` without a line's end
+/// is seen whichever module of the cell wrote it, and tells how far long work has come.
+fn keep_attending() {
     loop {
-        let on = FLUSHING.0.lock().unwrap_or_else(PoisonError::into_inner);
-        let on = FLUSHING.1.wait_while(on, |on| !*on).unwrap_or_else(PoisonError::into_inner);
-        drop(on);
+        let attendance = ATTENDANCE.0.lock().unwrap_or_else(PoisonError::into_inner);
+        let mut attendance = ATTENDANCE
+            .1
+            .wait_while(attendance, |attendance| !attendance.on)
+            .unwrap_or_else(PoisonError::into_inner);
+        tell(attendance.reporter.look(Instant::now()));
+        drop(attendance);
         let _ = std::io::stdout().flush();
-        std::thread::sleep(FLUSH_EVERY);
+        std::thread::sleep(ATTEND_EVERY);
+    }
+}
+
+fn tell(change: Change) {
+    match change {
+        Change::Nothing => {}
+        Change::Show(line) => report(&Report::Progress { line: Some(line) }),
+        Change::Remove => report(&Report::Progress { line: None }),
     }
 }

@@ -23,6 +23,8 @@ pub struct DataMatrix {
     // Unique, one per row.
     labels: Arc<[String]>,
     label_source: LabelSource,
+    // Positive and finite, one per row; see `weights.rs`.
+    weights: Option<Arc<[f64]>>,
     notes: Arc<MatrixNotes>,
 }
 
@@ -96,6 +98,7 @@ impl DataMatrix {
             variables: variables.into(),
             labels: labels.into(),
             label_source,
+            weights: None,
             notes: Arc::new(notes),
         };
         matrix.check_finite()?;
@@ -252,6 +255,14 @@ impl DataMatrix {
         self.labels.clone()
     }
 
+    pub(super) fn row_weights(&self) -> &Option<Arc<[f64]>> {
+        &self.weights
+    }
+
+    pub(super) fn weighted_by(&self, weights: Option<Arc<[f64]>>) -> DataMatrix {
+        DataMatrix { weights, ..self.clone() }
+    }
+
     fn take_rows(&self, rows: &[usize]) -> Result<DataMatrix> {
         if rows.is_empty() {
             return Err(Error::NoRows);
@@ -259,6 +270,7 @@ impl DataMatrix {
         Ok(DataMatrix {
             values: Arc::new(self.values.select_rows(rows)),
             labels: rows.iter().map(|&row| self.labels[row].clone()).collect(),
+            weights: self.weights().map(|weights| rows.iter().map(|&row| weights[row]).collect()),
             ..self.clone()
         })
     }
@@ -312,7 +324,7 @@ impl fmt::Debug for DataMatrix {
     }
 }
 
-fn check_count(what: &'static str, expected: usize, found: usize) -> Result<()> {
+pub(super) fn check_count(what: &'static str, expected: usize, found: usize) -> Result<()> {
     if expected == found { Ok(()) } else { Err(Error::ShapeMismatch { what, expected, found }) }
 }
 
@@ -335,7 +347,7 @@ pub(super) fn check_names(names: &[String]) -> Result<()> {
     Err(Error::DuplicateColumns { columns })
 }
 
-fn check_labels(labels: &[String], source: &LabelSource) -> Result<()> {
+pub(super) fn check_labels(labels: &[String], source: &LabelSource) -> Result<()> {
     if matches!(source, LabelSource::RowNumbers) {
         return Ok(());
     }

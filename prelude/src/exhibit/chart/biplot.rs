@@ -7,21 +7,73 @@
 //! graphic display of matrices with application to principal component analysis", Biometrika 58
 //! (from memory). Arrows are stretched by one factor to be readable beside the units.
 
-use super::Drawing;
+use serde_json::json;
+
+use super::Chart;
 use super::arrows::Arrows;
 use super::card::Card;
 use super::labels::{LabelSpace, push_labels};
 use super::palette::{INK, INK_SOFT};
+use super::picture::{Drawing, Picture};
 use super::plane::{Extent, Plane};
 use super::scores::{LABEL_MOST, LABEL_SIZE, draw_settled, opening, plane_title};
-use super::settings::Settings;
+use super::settings::{Setting, Settings};
 use super::source::Source;
 use super::units::Units;
+use crate::components::PrincipalComponents;
+use crate::error::Result;
 use crate::exhibit::numbers::{counted, stored};
 
 const MOST_NAMED_OF_MANY: usize = 5;
 
-pub(super) fn draw(source: &Source, settings: &Settings) -> Drawing {
+/// Units and variables together in the plane of two components.
+///
+/// Units are drawn at their scores, so that distances between them are kept, and the arrows of
+/// the variables are their loadings, stretched by a factor that the chart states.
+///
+/// ```
+/// # use semiaxis::nalgebra::dmatrix;
+/// # use semiaxis::components::{Scaling, principal_components};
+/// # use semiaxis::table::DataMatrix;
+/// # let x = DataMatrix::from_unnamed(dmatrix![
+/// #     1.0, 2.0, 0.5; 2.0, 1.0, 0.0; 3.0, 5.0, 1.5; 4.0, 4.0, 1.0; 2.5, 3.0, 2.0])?;
+/// # let pca = principal_components(&x, Scaling::Correlation)?;
+/// use semiaxis::exhibit::biplot;
+///
+/// let svg = biplot(&pca).title("Five tiles, three measurements").svg();
+/// assert!(svg.contains("arrows are loadings stretched"));
+/// # Ok::<(), semiaxis::Error>(())
+/// ```
+pub fn biplot(pca: &PrincipalComponents) -> Chart {
+    Chart::new(Biplot { source: Source::with_units(pca) })
+}
+
+/// Units and variables of an analysis.
+#[derive(Debug)]
+struct Biplot {
+    source: Source,
+}
+
+impl Picture for Biplot {
+    fn kind(&self) -> &'static str {
+        "biplot"
+    }
+
+    fn takes(&self) -> &'static [Setting] {
+        &[Setting::Components, Setting::Groups, Setting::Labels, Setting::Coverage, Setting::Hulls]
+    }
+
+    fn check(&self, settings: &Settings) -> Result<()> {
+        settings.check_components(self.source.n_components())?;
+        settings.check_units(self.source.scores.nrows())
+    }
+
+    fn draw(&self, settings: &Settings) -> Result<Drawing> {
+        Ok(draw(&self.source, settings))
+    }
+}
+
+fn draw(source: &Source, settings: &Settings) -> Drawing {
     let units = Units::new(source, settings).receding();
     let arrows = Arrows::new(source, settings, None);
     let components = settings.plane(source);
@@ -43,8 +95,8 @@ pub(super) fn draw(source: &Source, settings: &Settings) -> Drawing {
         arrows.words()
     );
     let card = |notes: Vec<String>| Card {
-        width: settings.size.map_or(720.0, |size| size.0 as f64),
-        height: settings.size.map_or(560.0, |size| size.1 as f64),
+        width: settings.size_or(720.0, 560.0).0,
+        height: settings.size_or(720.0, 560.0).1,
         least_drawing: 220.0,
         title: settings.title_or(plane_title("Units and variables", components)),
         subtitle: format!(
@@ -82,7 +134,11 @@ pub(super) fn draw(source: &Source, settings: &Settings) -> Drawing {
         notes.extend(units.ellipse_notes());
         notes
     });
-    Drawing { svg, words }
+    Drawing {
+        svg,
+        words,
+        numbers: json!({ "units": units.behind(), "variables": arrows.behind(), "stretch": stretch }),
+    }
 }
 
 // The longest arrow reaches about as far as the units do; the factor is a round number.

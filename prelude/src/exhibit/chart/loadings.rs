@@ -1,17 +1,67 @@
 //! The loading plot: what two components are made of.
 
-use super::Drawing;
+use super::Chart;
 use super::arrows::{Arrows, push_ring};
 use super::card::Card;
 use super::labels::{LabelSpace, push_labels};
 use super::palette::{FAINT, GROUPS};
+use super::picture::{Drawing, Picture};
 use super::plane::{Extent, Plane};
 use super::scores::{LABEL_MOST, LABEL_SIZE, draw_settled, opening, plane_title};
-use super::settings::Settings;
+use super::settings::{Setting, Settings};
 use super::source::Source;
+use crate::components::PrincipalComponents;
+use crate::error::Result;
 use crate::exhibit::numbers::{counted, fixed};
 
-pub(super) fn draw(source: &Source, settings: &Settings) -> Drawing {
+/// The variables in the plane of two components: each one's two loadings as an arrow.
+///
+/// Loadings are the unit-length coefficients, not correlations. Arrows shorter than √(2/p), the
+/// length that each of p variables has when all share both components equally, are drawn thin and grey.
+///
+/// ```
+/// # use semiaxis::nalgebra::dmatrix;
+/// # use semiaxis::components::{Scaling, principal_components};
+/// # use semiaxis::table::DataMatrix;
+/// # let x = DataMatrix::from_unnamed(dmatrix![
+/// #     1.0, 2.0, 0.5; 2.0, 1.0, 0.0; 3.0, 5.0, 1.5; 4.0, 4.0, 1.0; 2.5, 3.0, 2.0])?;
+/// # let pca = principal_components(&x, Scaling::Correlation)?;
+/// use semiaxis::exhibit::loading_plot;
+///
+/// let svg = loading_plot(&pca).labels(["length", "width", "warp"]).svg();
+/// assert!(svg.contains(">width</text>"));
+/// # Ok::<(), semiaxis::Error>(())
+/// ```
+pub fn loading_plot(pca: &PrincipalComponents) -> Chart {
+    Chart::new(Loadings { source: Source::without_units(pca) })
+}
+
+/// The variables of an analysis.
+#[derive(Debug)]
+struct Loadings {
+    source: Source,
+}
+
+impl Picture for Loadings {
+    fn kind(&self) -> &'static str {
+        "loading plot"
+    }
+
+    fn takes(&self) -> &'static [Setting] {
+        &[Setting::Components, Setting::Labels]
+    }
+
+    fn check(&self, settings: &Settings) -> Result<()> {
+        settings.check_components(self.source.n_components())?;
+        settings.check_variables(self.source.variables.len())
+    }
+
+    fn draw(&self, settings: &Settings) -> Result<Drawing> {
+        Ok(draw(&self.source, settings))
+    }
+}
+
+fn draw(source: &Source, settings: &Settings) -> Drawing {
     let arrows = Arrows::new(source, settings, settings.labels.as_deref());
     let components = settings.plane(source);
     let mut extent = Extent::origin();
@@ -24,8 +74,8 @@ pub(super) fn draw(source: &Source, settings: &Settings) -> Drawing {
     }
     let words = format!("{}{}", opening("Loading plot", source, components), arrows.words());
     let card = |notes: Vec<String>| Card {
-        width: settings.size.map_or(720.0, |size| size.0 as f64),
-        height: settings.size.map_or(560.0, |size| size.1 as f64),
+        width: settings.size_or(720.0, 560.0).0,
+        height: settings.size_or(720.0, 560.0).1,
         least_drawing: 220.0,
         title: settings.title_or(plane_title("Loadings", components)),
         subtitle: format!(
@@ -57,5 +107,5 @@ pub(super) fn draw(source: &Source, settings: &Settings) -> Drawing {
         notes.extend(arrows.notes(placed.len()));
         notes
     });
-    Drawing { svg, words }
+    Drawing { svg, words, numbers: arrows.behind() }
 }

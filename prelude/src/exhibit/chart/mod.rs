@@ -12,13 +12,21 @@
 //! each mark, names that do not collide on a page, and text that was measured.
 
 mod names;
+mod picture;
 mod settings;
 mod source;
 
+mod bars;
 mod biplot;
+mod circle;
+mod correlations;
 mod loadings;
+mod matrix;
+mod pairs;
+mod profiles;
 mod scores;
 mod scree;
+mod shares;
 
 mod arrows;
 mod groups;
@@ -27,6 +35,8 @@ mod units;
 
 mod card;
 mod ellipse;
+mod frame;
+mod hull;
 mod labels;
 mod marks;
 mod measure;
@@ -40,16 +50,27 @@ mod ticks;
 mod tests;
 
 use std::path::Path;
+use std::sync::Arc;
 
+pub use bars::loading_bars;
+pub use biplot::biplot;
+pub use circle::structure_circle;
+pub use correlations::correlation_map;
+pub use loadings::loading_plot;
+pub use matrix::score_matrix;
 pub use names::Names;
-pub use settings::Reference;
+pub use pairs::pairs;
+pub use profiles::profiles;
+pub use scores::score_plot;
+pub use scree::scree;
+pub use settings::{Intervals, Reference};
+pub use shares::variance_shares;
 
 use self::card::Card;
+use self::picture::{Drawing, Picture};
 use self::settings::Settings;
-use self::source::Source;
 use super::text::visible;
 use super::{Bundle, Content, Exhibit};
-use crate::components::PrincipalComponents;
 use crate::error::Result;
 
 /// A chart of an analysis, with its settings.
@@ -57,125 +78,24 @@ use crate::error::Result;
 /// Marks carry their unit's name and values as hover texts. A client that inlines the SVG, such
 /// as a notebook converted to HTML, shows them; one that shows it as a picture does not.
 ///
-/// Made by [`scree`], [`score_plot`], [`loading_plot`] and [`biplot`]. A setting that does not
-/// fit (a component that does not exist, as many groups as there are not units) is reported by
-/// [`check`](Chart::check) and [`save`](Chart::save), and shown in place of the drawing.
-#[derive(Debug, Clone, PartialEq)]
+/// A setting that does not fit (a component that does not exist, as many groups as there are not
+/// units) is reported by [`check`](Chart::check) and [`save`](Chart::save), and shown in place of
+/// the drawing.
+#[derive(Debug, Clone)]
 pub struct Chart {
-    kind: Kind,
-    source: Source,
+    picture: Arc<dyn Picture>,
     settings: Settings,
-}
-
-#[derive(Debug, Clone, Copy, PartialEq, Eq)]
-enum Kind {
-    Scree,
-    Scores,
-    Loadings,
-    Biplot,
 }
 
 // Bytes of SVG from which on a PNG takes too long to be made unasked.
 const LARGE: usize = 100_000;
 
-/// A finished drawing and what it says in words.
-struct Drawing {
-    svg: String,
-    words: String,
-}
-
-/// The variances of the components, largest first, with each one's share of the total.
-///
-/// A dashed line marks the mean variance unless [`reference`](Chart::reference) asks for others.
-/// Below the variances, a strip divides the total variance among the components.
-///
-/// ```
-/// # use semiaxis::nalgebra::dmatrix;
-/// # use semiaxis::components::{Scaling, principal_components};
-/// # use semiaxis::table::DataMatrix;
-/// # let x = DataMatrix::from_unnamed(dmatrix![
-/// #     1.0, 2.0, 0.5; 2.0, 1.0, 0.0; 3.0, 5.0, 1.5; 4.0, 4.0, 1.0; 2.5, 3.0, 2.0])?;
-/// # let pca = principal_components(&x, Scaling::Correlation)?;
-/// use semiaxis::exhibit::{Reference, scree};
-///
-/// let svg = scree(&pca).reference(Reference::BrokenStick).svg();
-/// // One mark with a hover text for each component.
-/// assert_eq!(svg.matches("· variance ").count(), pca.n_components());
-/// # Ok::<(), semiaxis::Error>(())
-/// ```
-pub fn scree(pca: &PrincipalComponents) -> Chart {
-    Chart::new(Kind::Scree, Source::without_units(pca))
-}
-
-/// The units in the plane of two components.
-///
-/// ```
-/// # use semiaxis::nalgebra::dmatrix;
-/// # use semiaxis::components::{Scaling, principal_components};
-/// # use semiaxis::table::DataMatrix;
-/// # let x = DataMatrix::from_unnamed(dmatrix![
-/// #     1.0, 2.0, 0.5; 2.0, 1.0, 0.0; 3.0, 5.0, 1.5; 4.0, 4.0, 1.0; 2.5, 3.0, 2.0])?;
-/// # let pca = principal_components(&x, Scaling::Correlation)?;
-/// use semiaxis::exhibit::score_plot;
-///
-/// let chart = score_plot(&pca).components(2, 1).groups(["a", "a", "a", "b", "b"]);
-/// assert!(chart.check().is_ok());
-/// assert!(chart.svg().contains("Scores on components 2 and 1"));
-/// // As many groups as there are units are needed.
-/// assert!(score_plot(&pca).groups(["a", "b"]).check().is_err());
-/// # Ok::<(), semiaxis::Error>(())
-/// ```
-pub fn score_plot(pca: &PrincipalComponents) -> Chart {
-    Chart::new(Kind::Scores, Source::with_units(pca))
-}
-
-/// The variables in the plane of two components: each one's two loadings as an arrow.
-///
-/// Loadings are the unit-length coefficients, not correlations. Arrows shorter than √(2/p), the
-/// length that each of p variables has when all share both components equally, are drawn thin and grey.
-///
-/// ```
-/// # use semiaxis::nalgebra::dmatrix;
-/// # use semiaxis::components::{Scaling, principal_components};
-/// # use semiaxis::table::DataMatrix;
-/// # let x = DataMatrix::from_unnamed(dmatrix![
-/// #     1.0, 2.0, 0.5; 2.0, 1.0, 0.0; 3.0, 5.0, 1.5; 4.0, 4.0, 1.0; 2.5, 3.0, 2.0])?;
-/// # let pca = principal_components(&x, Scaling::Correlation)?;
-/// use semiaxis::exhibit::loading_plot;
-///
-/// let svg = loading_plot(&pca).labels(["length", "width", "warp"]).svg();
-/// assert!(svg.contains(">width</text>"));
-/// # Ok::<(), semiaxis::Error>(())
-/// ```
-pub fn loading_plot(pca: &PrincipalComponents) -> Chart {
-    Chart::new(Kind::Loadings, Source::without_units(pca))
-}
-
-/// Units and variables together in the plane of two components.
-///
-/// Units are drawn at their scores, so that distances between them are kept, and the arrows of
-/// the variables are their loadings, stretched by a factor that the chart states.
-///
-/// ```
-/// # use semiaxis::nalgebra::dmatrix;
-/// # use semiaxis::components::{Scaling, principal_components};
-/// # use semiaxis::table::DataMatrix;
-/// # let x = DataMatrix::from_unnamed(dmatrix![
-/// #     1.0, 2.0, 0.5; 2.0, 1.0, 0.0; 3.0, 5.0, 1.5; 4.0, 4.0, 1.0; 2.5, 3.0, 2.0])?;
-/// # let pca = principal_components(&x, Scaling::Correlation)?;
-/// use semiaxis::exhibit::biplot;
-///
-/// let svg = biplot(&pca).title("Five tiles, three measurements").svg();
-/// assert!(svg.contains("arrows are loadings stretched"));
-/// # Ok::<(), semiaxis::Error>(())
-/// ```
-pub fn biplot(pca: &PrincipalComponents) -> Chart {
-    Chart::new(Kind::Biplot, Source::with_units(pca))
-}
+/// The MIME type of the numbers that a chart draws, as JSON: for whoever checks or reuses them.
+pub const NUMBERS: &str = "application/vnd.semiaxis.numbers+json";
 
 impl Chart {
-    fn new(kind: Kind, source: Source) -> Self {
-        Chart { kind, source, settings: Settings::default() }
+    fn new(picture: impl Picture + 'static) -> Self {
+        Chart { picture: Arc::new(picture), settings: Settings::default() }
     }
 
     /// The two components to draw, counted from 1: first the one that runs sideways.
@@ -228,6 +148,24 @@ impl Chart {
         self
     }
 
+    /// How many leading components to draw, in charts that draw several side by side.
+    pub fn first(mut self, n_components: usize) -> Self {
+        self.settings.first = Some(n_components);
+        self
+    }
+
+    /// Adds a whisker to each loading.
+    pub fn intervals(mut self, intervals: impl Into<Intervals>) -> Self {
+        self.settings.intervals = Some(intervals.into());
+        self
+    }
+
+    /// Draws the convex hull around the units of each group, or around all units.
+    pub fn hulls(mut self) -> Self {
+        self.settings.hulls = true;
+        self
+    }
+
     /// Whether the settings fit the analysis.
     ///
     /// # Errors
@@ -239,7 +177,8 @@ impl Chart {
     /// [`SettingNotForChart`](crate::Error::SettingNotForChart) for a setting that this kind of
     /// chart does not have.
     pub fn check(&self) -> Result<()> {
-        self.settings.check(self.kind, &self.source)
+        self.settings.check(&*self.picture)?;
+        self.picture.check(&self.settings)
     }
 
     /// The chart as an SVG document; an error in the settings is drawn in its place.
@@ -262,16 +201,11 @@ impl Chart {
 
     fn draw(&self) -> Result<Drawing> {
         self.check()?;
-        Ok(match self.kind {
-            Kind::Scree => scree::draw(&self.source, &self.settings),
-            Kind::Scores => scores::draw(&self.source, &self.settings),
-            Kind::Loadings => loadings::draw(&self.source, &self.settings),
-            Kind::Biplot => biplot::draw(&self.source, &self.settings),
-        })
+        self.picture.draw(&self.settings)
     }
 }
 
-/// An SVG, what it says in words for consoles, and a PNG.
+/// An SVG, what it says in words for consoles, the numbers behind it, and a PNG.
 ///
 /// The PNG is for clients that show no SVG, among them notebook clients that open a notebook they
 /// do not trust. It takes some hundredths of a second, so charts of many units go without.
@@ -284,7 +218,10 @@ impl Exhibit for Chart {
                     false => None,
                 };
                 let words = visible(&drawing.words);
-                let bundle = Bundle::new().with_svg(drawing.svg).with_plain(words);
+                let bundle = Bundle::new()
+                    .with_svg(drawing.svg)
+                    .with_plain(words)
+                    .with(NUMBERS, Content::Json(drawing.numbers));
                 match picture {
                     Some(bytes) => bundle.with("image/png", Content::Bytes(bytes)),
                     None => bundle,

@@ -1,28 +1,84 @@
 //! The score plot: where the units lie in the plane of two components.
 
-use super::Drawing;
+use super::Chart;
 use super::card::{Area, Card};
 use super::labels::{LabelSpace, push_labels};
+use super::picture::{Drawing, Picture};
 use super::plane::{Extent, Plane};
-use super::settings::Settings;
+use super::settings::{Setting, Settings};
 use super::source::Source;
 use super::svg::Svg;
 use super::units::Units;
+use crate::components::PrincipalComponents;
+use crate::error::Result;
 use crate::exhibit::numbers::{counted, percent};
 
 pub(super) const LABEL_SIZE: f64 = 11.0;
 pub(super) const LABEL_MOST: f64 = 150.0;
 const MOST_NAMED_OF_MANY: usize = 10;
 
-pub(super) fn draw(source: &Source, settings: &Settings) -> Drawing {
+/// The units in the plane of two components.
+///
+/// ```
+/// # use semiaxis::nalgebra::dmatrix;
+/// # use semiaxis::components::{Scaling, principal_components};
+/// # use semiaxis::table::DataMatrix;
+/// # let x = DataMatrix::from_unnamed(dmatrix![
+/// #     1.0, 2.0, 0.5; 2.0, 1.0, 0.0; 3.0, 5.0, 1.5; 4.0, 4.0, 1.0; 2.5, 3.0, 2.0])?;
+/// # let pca = principal_components(&x, Scaling::Correlation)?;
+/// use semiaxis::exhibit::score_plot;
+///
+/// let chart = score_plot(&pca).components(2, 1).groups(["a", "a", "a", "b", "b"]);
+/// assert!(chart.check().is_ok());
+/// assert!(chart.svg().contains("Scores on components 2 and 1"));
+/// // As many groups as there are units are needed.
+/// assert!(score_plot(&pca).groups(["a", "b"]).check().is_err());
+/// # Ok::<(), semiaxis::Error>(())
+/// ```
+pub fn score_plot(pca: &PrincipalComponents) -> Chart {
+    Chart::new(Scores { source: Source::with_units(pca) })
+}
+
+/// A score plot of what was taken from an analysis.
+#[cfg(test)]
+pub(super) fn of(source: Source) -> Chart {
+    Chart::new(Scores { source })
+}
+
+/// The units of an analysis.
+#[derive(Debug)]
+struct Scores {
+    source: Source,
+}
+
+impl Picture for Scores {
+    fn kind(&self) -> &'static str {
+        "score plot"
+    }
+
+    fn takes(&self) -> &'static [Setting] {
+        &[Setting::Components, Setting::Groups, Setting::Labels, Setting::Coverage, Setting::Hulls]
+    }
+
+    fn check(&self, settings: &Settings) -> Result<()> {
+        settings.check_components(self.source.n_components())?;
+        settings.check_units(self.source.scores.nrows())
+    }
+
+    fn draw(&self, settings: &Settings) -> Result<Drawing> {
+        Ok(draw(&self.source, settings))
+    }
+}
+
+fn draw(source: &Source, settings: &Settings) -> Drawing {
     let units = Units::new(source, settings);
     let components = settings.plane(source);
     let mut extent = Extent::origin();
     units.widen(&mut extent);
     let words = format!("{}{}", opening("Score plot", source, components), units.words());
     let card = |notes: Vec<String>| Card {
-        width: settings.size.map_or(720.0, |size| size.0 as f64),
-        height: settings.size.map_or(560.0, |size| size.1 as f64),
+        width: settings.size_or(720.0, 560.0).0,
+        height: settings.size_or(720.0, 560.0).1,
         least_drawing: 220.0,
         title: settings.title_or(plane_title("Scores", components)),
         subtitle: format!(
@@ -51,7 +107,7 @@ pub(super) fn draw(source: &Source, settings: &Settings) -> Drawing {
         notes.extend(units.ellipse_notes());
         notes
     });
-    Drawing { svg, words }
+    Drawing { svg, words, numbers: units.behind() }
 }
 
 /// Draws a card whose notes depend on what found room in it.

@@ -3,17 +3,22 @@
 //! Above, each component's variance as a stem with its share of the total; below, a strip as long
 //! as the total variance, divided among the components, under which the shares add up.
 
-use super::Drawing;
+use serde_json::{Value, json};
+
+use super::Chart;
 use super::card::{Area, Card, LegendEntry, LegendSign};
 use super::measure::{Weight, width};
 use super::palette::{CARD, FAINT, GRID, GROUPS, INK, INK_SOFT, SEGMENTS};
+use super::picture::{Drawing, Picture, number, numbers};
 use super::plane::axis_title;
 use super::references::{Line, lines};
-use super::settings::Settings;
+use super::settings::{Setting, Settings};
 use super::source::Source;
 use super::svg::{Svg, tenth};
 use super::ticks::Ticks;
 use super::units::listed;
+use crate::components::PrincipalComponents;
+use crate::error::Result;
 use crate::exhibit::numbers::{counted, percent, significant, typographic};
 
 const MOST_SHOWN: usize = 40;
@@ -24,7 +29,54 @@ const LEAST_NAMED_SHARE: f64 = 0.02;
 const STRIP_HEIGHT: f64 = 18.0;
 const BELOW_STEMS: f64 = 112.0;
 
-pub(super) fn draw(source: &Source, settings: &Settings) -> Drawing {
+/// The variances of the components, largest first, with each one's share of the total.
+///
+/// A dashed line marks the mean variance unless [`reference`](Chart::reference) asks for others.
+/// Below the variances, a strip divides the total variance among the components.
+///
+/// ```
+/// # use semiaxis::nalgebra::dmatrix;
+/// # use semiaxis::components::{Scaling, principal_components};
+/// # use semiaxis::table::DataMatrix;
+/// # let x = DataMatrix::from_unnamed(dmatrix![
+/// #     1.0, 2.0, 0.5; 2.0, 1.0, 0.0; 3.0, 5.0, 1.5; 4.0, 4.0, 1.0; 2.5, 3.0, 2.0])?;
+/// # let pca = principal_components(&x, Scaling::Correlation)?;
+/// use semiaxis::exhibit::{Reference, scree};
+///
+/// let svg = scree(&pca).reference(Reference::BrokenStick).svg();
+/// // One mark with a hover text for each component.
+/// assert_eq!(svg.matches("· variance ").count(), pca.n_components());
+/// # Ok::<(), semiaxis::Error>(())
+/// ```
+pub fn scree(pca: &PrincipalComponents) -> Chart {
+    Chart::new(Scree { source: Source::without_units(pca) })
+}
+
+/// The variances of an analysis.
+#[derive(Debug)]
+struct Scree {
+    source: Source,
+}
+
+impl Picture for Scree {
+    fn kind(&self) -> &'static str {
+        "scree"
+    }
+
+    fn takes(&self) -> &'static [Setting] {
+        &[Setting::Reference]
+    }
+
+    fn check(&self, settings: &Settings) -> Result<()> {
+        settings.check_references(&self.source)
+    }
+
+    fn draw(&self, settings: &Settings) -> Result<Drawing> {
+        Ok(draw(&self.source, settings))
+    }
+}
+
+fn draw(source: &Source, settings: &Settings) -> Drawing {
     let lines = lines(source, settings);
     let n_shown = source.n_components().min(MOST_SHOWN);
     let words = words(source, &lines);
@@ -38,8 +90,8 @@ pub(super) fn draw(source: &Source, settings: &Settings) -> Drawing {
         ));
     }
     let card = Card {
-        width: settings.size.map_or(720.0, |size| size.0 as f64),
-        height: settings.size.map_or(480.0, |size| size.1 as f64),
+        width: settings.size_or(720.0, 480.0).0,
+        height: settings.size_or(720.0, 480.0).1,
         least_drawing: 220.0,
         title: settings.title_or("Variance of each component".to_owned()),
         subtitle: format!(
@@ -72,7 +124,7 @@ pub(super) fn draw(source: &Source, settings: &Settings) -> Drawing {
             Area { top: room.bottom - STRIP_HEIGHT - 22.0, bottom: room.bottom - 22.0, ..area };
         draw_strip(svg, strip, source);
     });
-    Drawing { svg, words }
+    Drawing { svg, words, numbers: behind(source, &lines) }
 }
 
 fn draw_stems(svg: &mut Svg, area: Area, source: &Source, lines: &[Line], n_shown: usize) {
@@ -284,6 +336,18 @@ fn push_path(svg: &mut Svg, points: &[(f64, f64)], color: &str, thickness: &str,
         .with("stroke", color)
         .with("stroke-width", thickness);
     if dashes.is_empty() { line.done() } else { line.with("stroke-dasharray", dashes).done() }
+}
+
+fn behind(source: &Source, lines: &[Line]) -> Value {
+    let references: Vec<Value> = lines
+        .iter()
+        .map(|line| json!({ "name": line.name, "values": numbers(line.values.iter().copied()) }))
+        .collect();
+    json!({
+        "variances": numbers(source.variances.iter().copied()),
+        "total variance": number(source.total_variance),
+        "references": references,
+    })
 }
 
 fn words(source: &Source, lines: &[Line]) -> String {

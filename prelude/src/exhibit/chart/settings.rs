@@ -2,7 +2,9 @@
 
 use std::collections::HashSet;
 
-use super::Kind;
+use nalgebra::DMatrix;
+
+use super::picture::Picture;
 use super::source::Source;
 use crate::components::Scaling;
 use crate::error::{Error, Result};
@@ -43,6 +45,35 @@ impl From<ParallelAnalysis> for Reference {
     }
 }
 
+/// A setting that some kinds of chart have and others have not.
+#[derive(Debug, Clone, Copy, PartialEq, Eq)]
+pub(super) enum Setting {
+    Components,
+    Groups,
+    Labels,
+    Coverage,
+    Reference,
+    First,
+    Intervals,
+    Hulls,
+}
+
+impl Setting {
+    /// The name of the builder's method.
+    pub fn name(self) -> &'static str {
+        match self {
+            Setting::Components => "components",
+            Setting::Groups => "groups",
+            Setting::Labels => "labels",
+            Setting::Coverage => "coverage",
+            Setting::Reference => "reference",
+            Setting::First => "first",
+            Setting::Intervals => "intervals",
+            Setting::Hulls => "hulls",
+        }
+    }
+}
+
 /// What a user set; checked before anything is drawn.
 #[derive(Debug, Clone, Default, PartialEq)]
 pub(super) struct Settings {
@@ -53,6 +84,43 @@ pub(super) struct Settings {
     pub size: Option<(usize, usize)>,
     pub coverage: Option<f64>,
     pub references: Vec<Reference>,
+    pub first: Option<usize>,
+    pub intervals: Option<Intervals>,
+    pub hulls: bool,
+}
+
+/// The ends of an interval for each loading.
+///
+/// Made from two matrices of the shape of the loadings, or from a result that has intervals.
+#[derive(Debug, Clone, PartialEq)]
+pub struct Intervals {
+    pub(super) low: DMatrix<f64>,
+    pub(super) high: DMatrix<f64>,
+    pub(super) words: String,
+}
+
+impl Intervals {
+    /// Joins the lower and the upper ends, variables by components, and says in words what the
+    /// intervals are ("whiskers: 95 % of 2000 bootstrap samples").
+    ///
+    /// # Errors
+    ///
+    /// [`Error::ShapeMismatch`] when the two matrices differ in shape.
+    pub fn new(low: &DMatrix<f64>, high: &DMatrix<f64>, words: impl Into<String>) -> Result<Self> {
+        check_count("rows of upper ends", low.nrows(), high.nrows())?;
+        check_count("columns of upper ends", low.ncols(), high.ncols())?;
+        Ok(Intervals { low: low.clone(), high: high.clone(), words: words.into() })
+    }
+
+    /// Whether there is an interval for each loading that is drawn.
+    pub(super) fn check(&self, n_variables: usize, n_components: usize) -> Result<()> {
+        check_count("rows of intervals", n_variables, self.low.nrows())?;
+        if self.low.ncols() < n_components {
+            let available = self.low.ncols();
+            return Err(Error::ComponentOutOfRange { asked: n_components, available });
+        }
+        Ok(())
+    }
 }
 
 impl Settings {
@@ -68,22 +136,14 @@ impl Settings {
         self.title.clone().unwrap_or(usual)
     }
 
-    pub fn check(&self, kind: Kind, source: &Source) -> Result<()> {
-        self.check_place(kind)?;
-        if let Some((sideways, upwards)) = self.components {
-            let available = source.n_components();
-            for asked in [sideways, upwards] {
-                if !(1..=available).contains(&asked) {
-                    return Err(Error::ComponentOutOfRange { asked, available });
-                }
-            }
-            if sideways == upwards {
-                return Err(Error::OptionOutOfRange {
-                    option: "components",
-                    value: upwards as f64,
-                    accepted: "two different components",
-                });
-            }
+    /// Whether a kind of chart has what was set, and whether title-free settings are in range.
+    pub fn check(&self, picture: &dyn Picture) -> Result<()> {
+        let takes = picture.takes();
+        if let Some(foreign) = self.set().find(|setting| !takes.contains(setting)) {
+            let available =
+                takes.iter().map(|setting| setting.name()).chain(["title", "size"]).collect();
+            let (setting, chart) = (foreign.name(), picture.kind());
+            return Err(Error::SettingNotForChart { setting, chart, available });
         }
         for side in self.size.iter().flat_map(|size| [size.0, size.1]) {
             if !SIDES.contains(&side) {
@@ -103,39 +163,45 @@ impl Settings {
                 accepted: "above 0 and below 1",
             });
         }
-        self.check_names(kind, source)?;
-        self.references.iter().try_for_each(|reference| check_reference(reference, source))
+        Ok(())
     }
 
-    fn check_place(&self, kind: Kind) -> Result<()> {
-        let (chart, has_units) = match kind {
-            Kind::Scree => ("scree", false),
-            Kind::Scores => ("score plot", true),
-            Kind::Loadings => ("loading plot", false),
-            Kind::Biplot => ("biplot", true),
-        };
-        let is_scree = kind == Kind::Scree;
-        for (setting, is_set, fits, charts) in [
-            (
-                "components",
-                self.components.is_some(),
-                !is_scree,
-                "score plot, loading plot, biplot",
-            ),
-            ("groups", self.groups.is_some(), has_units, "score plot, biplot"),
-            ("labels", self.labels.is_some(), !is_scree, "score plot, loading plot, biplot"),
-            ("coverage", self.coverage.is_some(), has_units, "score plot, biplot"),
-            ("reference", !self.references.is_empty(), is_scree, "scree"),
-        ] {
-            if is_set && !fits {
-                return Err(Error::SettingNotForChart { setting, chart, charts });
+    /// What was set, besides title and size.
+    fn set(&self) -> impl Iterator<Item = Setting> {
+        [
+            (Setting::Components, self.components.is_some()),
+            (Setting::Groups, self.groups.is_some()),
+            (Setting::Labels, self.labels.is_some()),
+            (Setting::Coverage, self.coverage.is_some()),
+            (Setting::Reference, !self.references.is_empty()),
+            (Setting::First, self.first.is_some()),
+            (Setting::Intervals, self.intervals.is_some()),
+            (Setting::Hulls, self.hulls),
+        ]
+        .into_iter()
+        .filter_map(|(setting, is_set)| is_set.then_some(setting))
+    }
+
+    /// Whether the components that were chosen are there and differ.
+    pub fn check_components(&self, available: usize) -> Result<()> {
+        let Some((sideways, upwards)) = self.components else { return Ok(()) };
+        for asked in [sideways, upwards] {
+            if !(1..=available).contains(&asked) {
+                return Err(Error::ComponentOutOfRange { asked, available });
             }
+        }
+        if sideways == upwards {
+            return Err(Error::OptionOutOfRange {
+                option: "components",
+                value: upwards as f64,
+                accepted: "two different components",
+            });
         }
         Ok(())
     }
 
-    fn check_names(&self, kind: Kind, source: &Source) -> Result<()> {
-        let n_units = source.scores.nrows();
+    /// Whether there is a group and a label for each unit.
+    pub fn check_units(&self, n_units: usize) -> Result<()> {
         if let Some(groups) = &self.groups {
             check_count("groups", n_units, groups.len())?;
             let different: HashSet<&Option<String>> = groups.iter().collect();
@@ -147,13 +213,36 @@ impl Settings {
                 });
             }
         }
-        match (&self.labels, kind) {
-            (Some(labels), Kind::Loadings) => {
-                check_count("labels of variables", source.variables.len(), labels.len())
-            }
-            (Some(labels), _) => check_count("labels of units", n_units, labels.len()),
-            (None, _) => Ok(()),
+        match &self.labels {
+            Some(labels) => check_count("labels of units", n_units, labels.len()),
+            None => Ok(()),
         }
+    }
+
+    /// Whether there is a label for each variable.
+    pub fn check_variables(&self, n_variables: usize) -> Result<()> {
+        match &self.labels {
+            Some(labels) => check_count("labels of variables", n_variables, labels.len()),
+            None => Ok(()),
+        }
+    }
+
+    /// Whether the references of a scree fit its components.
+    pub fn check_references(&self, source: &Source) -> Result<()> {
+        self.references.iter().try_for_each(|reference| check_reference(reference, source))
+    }
+
+    /// The names of the variables: those that were set, or their own.
+    pub fn variable_names(&self, own: &[String]) -> Vec<String> {
+        match &self.labels {
+            Some(labels) => labels.iter().map(|label| label.clone().unwrap_or_default()).collect(),
+            None => own.to_vec(),
+        }
+    }
+
+    /// Width and height of the card, or the usual ones.
+    pub fn size_or(&self, width: f64, height: f64) -> (f64, f64) {
+        self.size.map_or((width, height), |size| (size.0 as f64, size.1 as f64))
     }
 }
 
@@ -164,7 +253,7 @@ fn check_reference(reference: &Reference, source: &Source) -> Result<()> {
         return Err(Error::SettingNotForChart {
             setting: "reference to a parallel analysis",
             chart: "scree of a covariance matrix",
-            charts: "scree of a correlation matrix",
+            available: vec!["mean variance", "broken stick"],
         });
     }
     check_count("rows behind the parallel analysis", source.n_rows, analysis.n_rows())?;

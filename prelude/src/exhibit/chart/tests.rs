@@ -4,8 +4,9 @@ use nalgebra::DMatrix;
 use polars::prelude::{NamedFrom, Series};
 use resvg::usvg::roxmltree;
 
+use super::source::Source;
 use super::*;
-use crate::components::{Scaling, principal_components};
+use crate::components::{PrincipalComponents, Scaling, principal_components};
 use crate::error::Error;
 use crate::parallel::{ParallelOptions, parallel_analysis};
 use crate::table::DataMatrix;
@@ -505,7 +506,31 @@ fn a_small_chart_is_drawn_as_before() {
         loadings: DMatrix::identity(2, 2),
         scores: DMatrix::from_row_slice(4, 2, &[3.0, 1.0, -3.0, 1.0, -1.0, -2.0, 1.0, 0.0]),
     };
-    let svg = Chart::new(Kind::Scores, source).groups(["x", "y", "y", "y"]).svg();
+    let svg = scores::of(source).groups(["x", "y", "y", "y"]).svg();
     let expected = include_str!("snapshot.svg");
     assert!(svg == expected, "the chart is now drawn so:\n{svg}");
+}
+
+#[test]
+fn the_numbers_behind_a_chart_go_with_it() {
+    let pca = analysis(30, 5);
+    let behind = |chart: Chart| {
+        let bundle = chart.exhibit();
+        let found = bundle.entries().iter().find(|(mime, _)| mime == NUMBERS).map(|(_, c)| c);
+        match found {
+            Some(Content::Json(numbers)) => numbers.clone(),
+            other => panic!("{other:?}"),
+        }
+    };
+    let scores = behind(score_plot(&pca).components(2, 1).groups(kilns(30)));
+    assert_eq!(scores["groups"][1], "middle");
+    assert_eq!(scores["units"][29], "tile 30");
+    let (x, expected) = (scores["sideways"][7].as_f64().unwrap(), pca.scores()[(7, 1)]);
+    assert!((x - expected).abs() < 1e-10, "{x} {expected}");
+    let scree = behind(scree(&pca));
+    assert_eq!(scree["variances"].as_array().unwrap().len(), 5);
+    assert_eq!(scree["references"][0]["values"][4], 1.0);
+    let biplot = behind(biplot(&pca));
+    let length = biplot["variables"]["upwards"][2].as_f64().unwrap();
+    assert!((length - pca.loadings()[(2, 1)]).abs() < 1e-10);
 }

@@ -1,5 +1,7 @@
 //! Units in a plane: marks, hover texts and names, shared by score plot and biplot.
 
+use serde_json::{Value, json};
+
 use super::card::LegendEntry;
 use super::groups::{Group, Groups};
 use super::labels::{LabelSpace, Wish};
@@ -7,6 +9,7 @@ use super::marks::{
     MOST_MARKS, Spot, hover_fits, mark_radius, push_counts, push_dense, push_hovering, push_mark,
 };
 use super::palette::{Cue, INK, Shape};
+use super::picture::numbers;
 use super::plane::{Extent, Plane};
 use super::settings::Settings;
 use super::source::Source;
@@ -26,6 +29,7 @@ pub(super) struct Units<'a> {
     names: Vec<Option<&'a str>>,
     names_are_chosen: bool,
     groups: Groups,
+    hulls: bool,
     recede: bool,
 }
 
@@ -38,9 +42,12 @@ impl<'a> Units<'a> {
             Some(labels) => labels.iter().map(Option::as_deref).collect(),
             None => source.labels.iter().map(|label| Some(label.as_str())).collect(),
         };
-        let groups = Groups::new(settings.groups.as_deref(), &points, settings.coverage);
+        let usual = (settings.groups.is_some() && !settings.hulls).then_some(0.95);
+        let coverage = settings.coverage.or(usual);
+        let groups = Groups::new(settings.groups.as_deref(), &points, coverage);
         let names_are_chosen = settings.labels.is_some();
-        Units { source, components, points, names, names_are_chosen, groups, recede: false }
+        let hulls = settings.hulls;
+        Units { source, components, points, names, names_are_chosen, groups, hulls, recede: false }
     }
 
     /// Draws units lightly, as ground for something else.
@@ -73,6 +80,9 @@ impl<'a> Units<'a> {
     pub fn draw(&self, svg: &mut Svg, plane: &Plane) -> Vec<String> {
         let fill_opacity = if self.recede { "0" } else { ".07" };
         let mut notes = Vec::new();
+        if self.hulls {
+            self.groups.draw_hulls(svg, plane, &self.points);
+        }
         if self.count() > MOST_MARKS {
             notes.push(self.draw_counts(svg, plane));
             self.groups.draw_ellipses(svg, plane, "0");
@@ -145,6 +155,18 @@ impl<'a> Units<'a> {
                 counted(self.count(), "unit")
             )),
         }
+    }
+
+    /// The numbers behind the marks.
+    pub fn behind(&self) -> Value {
+        let groups = self.groups.are_set().then(|| self.groups.of_units(self.count()));
+        json!({
+            "components": self.components,
+            "units": self.names,
+            "groups": groups.map(|groups| groups.iter().map(|g| g.name.clone()).collect::<Vec<_>>()),
+            "sideways": numbers(self.points.iter().map(|point| point.0)),
+            "upwards": numbers(self.points.iter().map(|point| point.1)),
+        })
     }
 
     /// The groups and the farthest units, in words.
