@@ -3,6 +3,7 @@
 mod cells;
 mod help;
 mod notebook;
+mod record;
 mod session;
 mod setup;
 mod wire;
@@ -44,6 +45,50 @@ enum Command {
         /// Where to write the executed notebook [default: NOTEBOOK with .executed before its ending]
         #[arg(long, value_name = "FILE")]
         output: Option<PathBuf>,
+        /// A value for a variable that a cell tagged `parameters` declares; may be given again
+        #[arg(long, value_name = "NAME=VALUE")]
+        set: Vec<String>,
+    },
+    /// Run a notebook from top to bottom and write a record: one HTML file that needs nothing else.
+    ///
+    /// The status is 0 if the record was written, 1 if a cell failed, 2 if the notebook could not be
+    /// run or the record not be written.
+    Record {
+        /// The notebook; it is not changed. Cells run in its folder.
+        notebook: PathBuf,
+        /// Where to write the record [default: NOTEBOOK with .record.html for its ending]
+        #[arg(long, value_name = "FILE")]
+        output: Option<PathBuf>,
+        /// Write a record even if cells fail; it says so on its first page
+        #[arg(long)]
+        with_errors: bool,
+        /// Print it through Chromium, too
+        #[arg(long)]
+        pdf: bool,
+        /// A value for a variable that a cell tagged `parameters` declares; may be given again
+        #[arg(long, value_name = "NAME=VALUE")]
+        set: Vec<String>,
+    },
+    /// Run a record again and compare every output. This runs the cells of the record, as you.
+    ///
+    /// The status is 0 if all cells show the same, 1 if one shows something else, 2 if the record is
+    /// altered or cannot be used, or if a cell could not run.
+    Verify {
+        /// The record.
+        record: PathBuf,
+        /// Where the data may be, searched by digest; may be given again [default: the record's folder]
+        #[arg(long, value_name = "DIR")]
+        data: Vec<PathBuf>,
+        /// The relative difference up to which numbers count as the same
+        #[arg(long, value_name = "NUMBER", default_value_t = record::compare::TOLERANCE)]
+        tolerance: f64,
+    },
+    /// Say, without running anything, whether the saved outputs can come from a run from top to bottom.
+    ///
+    /// The status is 0 if they can, 1 if they cannot, 2 if the notebook cannot be read.
+    Check {
+        /// The notebook.
+        notebook: PathBuf,
     },
     /// Serve a notebook client; clients start this themselves, with a connection file.
     ///
@@ -78,7 +123,13 @@ enum Command {
 
 fn main() -> ExitCode {
     match Arguments::parse().command {
-        Command::Run { notebook, output } => run(&notebook, output.as_deref()),
+        Command::Run { notebook, output, set } => run(&notebook, output.as_deref(), &set),
+        Command::Record { notebook, output, with_errors, pdf, set } => {
+            let seed = EngineOptions::default().seed;
+            record(&record::command::Request { notebook, output, with_errors, pdf, set, seed })
+        }
+        Command::Verify { record, data, tolerance } => verify(&record, &data, tolerance),
+        Command::Check { notebook } => check(&notebook),
         Command::Kernel { connection_file } => {
             session::serve(&connection_file, EngineOptions::default())
         }
@@ -117,7 +168,7 @@ fn prepare() -> ExitCode {
     }
 }
 
-fn run(notebook: &Path, output: Option<&Path>) -> ExitCode {
+fn run(notebook: &Path, output: Option<&Path>, set: &[String]) -> ExitCode {
     let runtime = match tokio::runtime::Builder::new_current_thread().enable_all().build() {
         Ok(runtime) => runtime,
         Err(error) => return could_not(&error),
@@ -131,11 +182,84 @@ fn run(notebook: &Path, output: Option<&Path>) -> ExitCode {
         let options = EngineOptions { working_dir, ..EngineOptions::default() };
         Engine::start(kit, options).await.map_err(|error| error.to_string())
     };
-    match runtime.block_on(notebook::run::run_file(notebook, output, RUST, start)) {
+    match runtime.block_on(notebook::run::run_file(notebook, output, set, RUST, start)) {
         Ok(summary) if summary.failed => ExitCode::from(FAILED),
         Ok(_) => ExitCode::from(OK),
         Err(error) => could_not(&error),
     }
+}
+
+fn runtime() -> std::io::Result<tokio::runtime::Runtime> {
+    tokio::runtime::Builder::new_current_thread().enable_all().build()
+}
+
+/// An engine whose cells run in a folder.
+async fn engine_in(folder: PathBuf, seed: u64) -> Result<Engine, String> {
+    let kit = kit().map_err(|error| error.to_string())?;
+    let options = EngineOptions { working_dir: Some(folder), seed };
+    Engine::start(kit, options).await.map_err(|error| error.to_string())
+}
+
+fn record(request: &record::command::Request) -> ExitCode {
+    let runtime = match runtime() {
+        Ok(runtime) => runtime,
+        Err(error) => return could_not(&error),
+    };
+    let folder = record::command::folder_of(&request.notebook);
+    let start = async || engine_in(folder, request.seed).await;
+    match runtime.block_on(record::command::record(request, start)) {
+        Ok(made) if made.failed => ExitCode::from(FAILED),
+        Ok(_) => ExitCode::from(OK),
+        Err(error) => {
+            let status = match error {
+                record::error::RecordError::CellFailed { .. } => FAILED,
+                _ => COULD_NOT,
+            };
+            eprintln!("semiaxis: {error}");
+            ExitCode::from(status)
+        }
+    }
+}
+
+fn verify(record: &Path, data: &[PathBuf], tolerance: f64) -> ExitCode {
+    if !(0.0..=1.0).contains(&tolerance) {
+        let given = tolerance.to_string();
+        return could_not(&record::error::RecordError::BadTolerance { given });
+    }
+    let runtime = match runtime() {
+        Ok(runtime) => runtime,
+        Err(error) => return could_not(&error),
+    };
+    match runtime.block_on(record::verify::verify(record, data, tolerance, engine_in)) {
+        Ok(verified) if verified.is_incomplete() => ExitCode::from(COULD_NOT),
+        Ok(verified) if verified.differs() => ExitCode::from(FAILED),
+        Ok(_) => ExitCode::from(OK),
+        Err(error) => could_not(&error),
+    }
+}
+
+fn check(notebook: &Path) -> ExitCode {
+    let document = match notebook::document::Document::read(notebook) {
+        Ok(document) => document,
+        Err(error) => return could_not(&error),
+    };
+    let check = notebook::check::check(&document);
+    for finding in &check.findings {
+        println!("{finding}");
+    }
+    if !check.findings.is_empty() {
+        println!(
+            "the saved outputs cannot all come from a run from top to bottom in a fresh session"
+        );
+        return ExitCode::from(FAILED);
+    }
+    match check.n_counted {
+        0 => println!(
+            "no cell was run; nothing in the text keeps the notebook from running from top to bottom"
+        ),
+        n => println!("the outputs of all {n} cells can come from one run from top to bottom"),
+    }
+    ExitCode::from(OK)
 }
 
 /// The Rust release that cells can count on.

@@ -98,6 +98,7 @@ impl Engine {
     /// Notes that the variables are gone; gives each with the cell that had made it.
     pub(super) fn lose_variables(&mut self) -> Vec<(String, u32)> {
         let lost = std::mem::take(&mut self.account.variables);
+        self.lineage.lose(lost.keys());
         lost.into_iter()
             .map(|(name, variable)| {
                 self.account.absent.insert(name.clone(), Absent::Lost { cell: variable.cell });

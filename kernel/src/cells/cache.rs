@@ -46,6 +46,11 @@ impl Cache {
         Self { root: user_folder().join("semiaxis").join("cells").join(stamp) }
     }
 
+    /// Where compiled cells are kept.
+    pub fn cells_folder(&self) -> PathBuf {
+        self.root.clone()
+    }
+
     /// Where extra crates are kept, for the same build of the prelude.
     pub fn extras_folder(&self) -> PathBuf {
         let stamp = self.root.file_name().unwrap_or_default();

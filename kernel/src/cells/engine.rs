@@ -12,11 +12,12 @@ use super::cache::Cache;
 use super::diagnose;
 use super::extras::Extras;
 use super::generate;
+use super::lineage::{Lineage, Traffic};
 use super::prepare::Ready;
 use super::source::CellText;
 use super::types::{
-    CellEvent, CellFailure, CellReply, CellRequest, EngineOptions, MimeBundle, Outcome, StreamName,
-    Timings,
+    CellEvent, CellFailure, CellReply, CellRequest, EngineOptions, Facts, MimeBundle, Origin,
+    Outcome, StreamName, Timings,
 };
 use crate::setup::Kit;
 use crate::worker::message::{How, Run};
@@ -38,6 +39,7 @@ pub struct Engine {
     launch: Launch,
     pub(super) worker: Option<Worker>,
     pub(super) account: Account,
+    pub(super) lineage: Lineage,
     pub(super) extras: Extras,
     interrupts: watch::Sender<u64>,
 }
@@ -70,11 +72,22 @@ impl Engine {
             launch,
             worker: Some(worker),
             account: Account::default(),
+            lineage: Lineage::default(),
             extras: Extras::default(),
             interrupts: watch::Sender::new(0),
             kit,
             options,
         })
+    }
+
+    /// What its cells are compiled against.
+    pub fn kit(&self) -> &Kit {
+        &self.kit
+    }
+
+    /// Folders that hold nothing but what was compiled for cells.
+    pub fn cache_folders(&self) -> [PathBuf; 2] {
+        [self.cache.cells_folder(), self.cache.extras_folder()]
     }
 
     /// A handle that stops what the engine is doing.
@@ -96,6 +109,7 @@ impl Engine {
         events: mpsc::Sender<CellEvent>,
     ) -> CellReply {
         let started = Instant::now();
+        self.lineage.forget_cells(&request.origin);
         let mut timings = Timings::default();
         let mut interrupts = self.interrupts.subscribe();
         let cell = Arc::new(CellText { number: request.count, text: request.code });
@@ -105,20 +119,46 @@ impl Engine {
                 let words = "interrupted before it ran; nothing has changed";
                 let failure = diagnose::failure_at("Interrupted", words.to_owned(), None, words, &[]);
                 timings.compile = started.elapsed();
-                return CellReply { outcome: Outcome::Interrupted(failure), timings };
+                let facts = Facts::default();
+                return CellReply { outcome: Outcome::Interrupted(failure), timings, facts };
             }
             prepared = self.prepare(&cell, &events) => prepared,
         };
         timings.compile = started.elapsed();
         let ready = match prepared {
             Ok(ready) => ready,
-            Err(failure) => return CellReply { outcome: Outcome::Failed(failure), timings },
+            Err(failure) => {
+                self.lineage.attempted(request.count, &cell.text, &request.origin, false);
+                let facts = Facts::default();
+                return CellReply { outcome: Outcome::Failed(failure), timings, facts };
+            }
         };
         timings.compiled = ready.compiled;
         let running = Instant::now();
-        let outcome = self.run(ready, request.silent, &events, &mut interrupts).await;
+        let traffic = Traffic::of(&ready);
+        let mut facts = Facts {
+            seed: Some(ready.seed),
+            uses: traffic.uses.iter().cloned().collect(),
+            // An expression that a client evaluates beside its cells is no cell of anybody.
+            outdated: match request.count {
+                0 => Vec::new(),
+                _ => self.lineage.outdated(&traffic.uses, &request.origin),
+            },
+            ..Facts::default()
+        };
+        let outcome = self.run(ready, request.silent, &events, &mut interrupts, &mut facts).await;
         timings.run = running.elapsed();
-        CellReply { outcome, timings }
+        let done = matches!(outcome, Outcome::Done);
+        facts.makes = traffic.makes(done);
+        if request.count == 0 {
+            // An expression that a client evaluates is no run of any cell.
+        } else if done || !traffic.changes.is_empty() || !traffic.items.is_empty() {
+            let (count, origin) = (request.count, &request.origin);
+            self.lineage.enter(count, &cell.text, origin, &traffic, &facts, done);
+        } else {
+            self.lineage.attempted(request.count, &cell.text, &request.origin, false);
+        }
+        CellReply { outcome, timings, facts }
     }
 
     /// Evaluates an expression for its exhibit.
@@ -127,7 +167,12 @@ impl Engine {
     /// As for a cell.
     pub async fn evaluate(&mut self, expression: &str) -> Result<MimeBundle, CellFailure> {
         let (sender, mut received) = mpsc::channel(64);
-        let request = CellRequest { code: expression.to_owned(), count: 0, silent: false };
+        let request = CellRequest {
+            code: expression.to_owned(),
+            count: 0,
+            silent: false,
+            origin: Origin::default(),
+        };
         let gather = async {
             let mut result = MimeBundle::new();
             while let Some(event) = received.recv().await {
@@ -151,6 +196,7 @@ impl Engine {
         silent: bool,
         events: &mpsc::Sender<CellEvent>,
         interrupts: &mut watch::Receiver<u64>,
+        facts: &mut Facts,
     ) -> Outcome {
         let mut libraries: Vec<PathBuf> = self.extras.libraries().cloned().collect();
         for name in self.account.closure(&ready.plan.crates) {
@@ -177,7 +223,9 @@ impl Engine {
                 ));
             }
         };
-        let ended = match worker.run(run, events, interrupts).await {
+        let ending = worker.run(run, events, interrupts).await;
+        facts.tables = worker.take_tables();
+        let ended = match ending {
             Ending::Reported(ended) => ended,
             Ending::Replaced => {
                 self.enter_items(&ready);
@@ -196,8 +244,9 @@ impl Engine {
                 return Outcome::Failed(self.worker_lost("WorkerLost", &words, &[]));
             }
         };
+        facts.opened = ended.opened.clone();
         let notes = self.apply(&ready, &ended).await;
-        let mut notes = [ready.notes.clone(), notes].concat();
+        let mut notes = [ready.notes.clone(), facts.outdated.clone(), notes].concat();
         if !silent && !ended.result.is_empty() {
             let _ = events.send(CellEvent::Result(bundle(ended.result))).await;
         }

@@ -6,11 +6,13 @@
 //! it, `cache` keeps it, `naming` says how later cells can write a type, `diagnose` puts the
 //! compiler's words on the cell's lines, `extras` builds crates that a header names, `prepare` walks a
 //! cell along all of these to a library, `aftermath` brings the account up to date when it has run, and
-//! `scope` tells help what there is.
+//! `scope` tells help what there is; `lineage` knows what each value was made from (`changes` reads it
+//! off the text), and `names` reads a cell without a session.
 
 mod account;
 mod aftermath;
 mod cache;
+mod changes;
 mod diagnose;
 mod edits;
 mod engine;
@@ -18,6 +20,8 @@ mod extras;
 mod generate;
 mod header;
 mod homes;
+mod lineage;
+pub mod names;
 mod naming;
 mod parse;
 mod prepare;

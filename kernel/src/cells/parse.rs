@@ -11,6 +11,7 @@ use proc_macro2::{TokenStream, TokenTree};
 use quote::ToTokens;
 use syn::visit::{self, Visit};
 
+use super::changes::changed;
 use super::edits::Edits;
 use super::source::Edit;
 
@@ -133,6 +134,8 @@ pub struct Statement {
     pub declares: Vec<Declared>,
     /// Every identifier that it uses, those of its pattern apart.
     pub mentions: BTreeSet<String>,
+    /// Names of places that its text changes, as far as a text shows it.
+    pub changes: BTreeSet<String>,
 }
 
 /// A variable that a cell declares.
@@ -200,7 +203,13 @@ fn read_statement(statement: &syn::Stmt, base: usize) -> Statement {
     }
     let mut edits = Edits::new(base, true);
     edits.visit_stmt(statement);
-    Statement { range: range_of(statement, base), edits: edits.sorted(), declares, mentions }
+    Statement {
+        range: range_of(statement, base),
+        edits: edits.sorted(),
+        declares,
+        mentions,
+        changes: changed(statement),
+    }
 }
 
 fn read_item(item: &syn::Item, base: usize) -> Item {

@@ -56,6 +56,10 @@ pub struct OwnedPlan {
     pub takes: Vec<String>,
     /// Those whose type goes by a new name.
     pub relabelled: Vec<String>,
+    /// Names of all items in its text, those that are as they were included, with their text.
+    pub defines: Vec<(String, String)>,
+    /// Variables that it takes and changes, as far as its text shows it.
+    pub changes: Vec<String>,
     /// Variables that it declares.
     pub declares: Vec<Declared>,
     /// Parts of earlier cells that were compiled again with it.
@@ -302,8 +306,16 @@ fn owned(plan: Plan<'_>) -> OwnedPlan {
     let crates = plan.crates();
     let relabelled =
         plan.takes.iter().filter(|(_, v)| v.relabelled).map(|(name, _)| name.clone()).collect();
+    let changed: BTreeSet<&String> =
+        plan.parsed.statements.iter().chain(&plan.parsed.tail).flat_map(|s| &s.changes).collect();
+    let changes = plan.takes.iter().filter(|(name, v)| v.mutable && changed.contains(name));
+    let items = plan.parsed.items.iter();
+    let defines = items
+        .flat_map(|item| item.defines.iter().map(|(_, name)| (name.clone(), item.tokens.clone())));
     OwnedPlan {
         crates,
+        defines: defines.collect(),
+        changes: changes.map(|(name, _)| name.clone()).collect(),
         takes: plan.takes.into_iter().map(|(name, _)| name).collect(),
         relabelled,
         declares: plan.declares,
@@ -326,6 +338,7 @@ fn unparsed(cell: &str, body_start: usize) -> Parsed {
         edits: Vec::new(),
         declares: Vec::new(),
         mentions,
+        changes: BTreeSet::new(),
     };
     Parsed { statements: vec![statement], ..Parsed::default() }
 }

@@ -7,7 +7,7 @@
 use std::path::PathBuf;
 use std::time::Duration;
 
-use crate::worker::message::Line;
+use crate::worker::message::{Line, OpenedFile, TableFile};
 
 /// The forms of one exhibit, as the notebook format and the messaging protocol write `data`.
 pub type MimeBundle = serde_json::Map<String, serde_json::Value>;
@@ -30,6 +30,17 @@ pub struct CellRequest {
     pub count: u32,
     /// A silent cell shows nothing and is not counted.
     pub silent: bool,
+    /// Which cell of a notebook it is, where that is known.
+    pub origin: Origin,
+}
+
+/// Which cell of a notebook a text came from, as far as a client says.
+#[derive(Debug, Clone, Default, PartialEq, Eq)]
+pub struct Origin {
+    /// The identifier of the cell.
+    pub cell_id: Option<String>,
+    /// Identifiers of cells that were deleted since the last request.
+    pub deleted: Vec<String>,
 }
 
 /// Which of the two streams a text was written to.
@@ -76,6 +87,32 @@ pub struct CellReply {
     pub outcome: Outcome,
     /// How long it took.
     pub timings: Timings,
+    /// What it stood on and what it left behind.
+    pub facts: Facts,
+}
+
+impl CellReply {
+    /// The end of a cell that took no time because it did not come to run.
+    pub fn at_once(outcome: Outcome) -> Self {
+        Self { outcome, timings: Timings::default(), facts: Facts::default() }
+    }
+}
+
+/// What a run stood on and what it left behind, beside its outputs.
+#[derive(Debug, Clone, Default, PartialEq, Eq)]
+pub struct Facts {
+    /// The seed of its random numbers; none if it did not come to run.
+    pub seed: Option<u64>,
+    /// Files that were read as tables.
+    pub tables: Vec<TableFile>,
+    /// All files that were opened.
+    pub opened: Vec<OpenedFile>,
+    /// Variables and items of earlier cells that it used.
+    pub uses: Vec<String>,
+    /// Variables and items that it defined or changed.
+    pub makes: Vec<String>,
+    /// What it used that is not what its defining cell would make now, in words.
+    pub outdated: Vec<String>,
 }
 
 /// How a cell ended.

@@ -94,17 +94,66 @@ impl Document {
         (!text.trim().is_empty()).then_some(text)
     }
 
+    /// The text of a cell of any kind, empty if it has none.
+    pub fn source(&self, cell_idx: usize) -> String {
+        let source = self.cells.get(cell_idx).and_then(|cell| cell.get("source"));
+        source.and_then(joined).unwrap_or_default()
+    }
+
+    /// `code`, `markdown` or `raw`.
+    pub fn kind(&self, cell_idx: usize) -> &str {
+        let kind = self.cells.get(cell_idx).and_then(|cell| cell.get("cell_type"));
+        kind.and_then(Value::as_str).unwrap_or_default()
+    }
+
+    /// What a cell holds under a key, for those who only look.
+    pub fn part(&self, cell_idx: usize, key: &str) -> Option<&Value> {
+        self.cells.get(cell_idx)?.get(key)
+    }
+
+    /// What the notebook's own metadata hold under a key.
+    pub fn metadata(&self, key: &str) -> Option<&Value> {
+        self.root.get("metadata")?.get(key)
+    }
+
+    /// Whether a cell has a tag.
+    pub fn has_tag(&self, cell_idx: usize, tag: &str) -> bool {
+        let tags = self.cells.get(cell_idx).and_then(|cell| cell.get("metadata")?.get("tags"));
+        let tags = tags.and_then(Value::as_array);
+        tags.is_some_and(|tags| tags.iter().any(|found| found.as_str() == Some(tag)))
+    }
+
+    /// Replaces the text of a cell.
+    pub fn set_source(&mut self, cell_idx: usize, text: &str) {
+        if let Some(cell) = self.cells.get_mut(cell_idx) {
+            cell.insert("source".to_owned(), lines(text));
+        }
+    }
+
+    /// A notebook of nothing but code cells, each with an identifier.
+    pub fn of_code(cells: impl IntoIterator<Item = (String, String)>) -> Self {
+        let mut document = Self { root: Map::new(), cells: Vec::new() };
+        document.root.insert("nbformat".to_owned(), json!(4));
+        document.root.insert("nbformat_minor".to_owned(), json!(5));
+        document.root.insert("metadata".to_owned(), json!({}));
+        for (id, text) in cells {
+            let cell = json!({
+                "cell_type": "code", "id": id, "metadata": {}, "source": lines(&text),
+                "execution_count": null, "outputs": [],
+            });
+            document.cells.extend(cell.as_object().cloned());
+        }
+        document
+    }
+
     /// The identifier of a cell.
-    #[cfg(test)]
     pub fn id(&self, cell_idx: usize) -> Option<&str> {
         self.cells.get(cell_idx)?.get("id")?.as_str()
     }
 
     /// Whether a cell says of itself that it may fail.
     pub fn may_fail(&self, cell_idx: usize) -> bool {
-        let tags = self.cells.get(cell_idx).and_then(|cell| cell.get("metadata")?.get("tags"));
-        tags.and_then(Value::as_array)
-            .is_some_and(|tags| tags.iter().any(|tag| tag.as_str() == Some(MAY_FAIL)))
+        self.has_tag(cell_idx, MAY_FAIL)
     }
 
     /// Forgets the results of an earlier run: a cell that is not reached this time must not look as
@@ -262,6 +311,11 @@ fn joined(source: &Value) -> Option<String> {
         Value::Array(lines) => lines.iter().map(Value::as_str).collect(),
         _ => None,
     }
+}
+
+/// Text as a list of lines, as the format likes it.
+fn lines(text: &str) -> Value {
+    text.split_inclusive('\n').map(|line| Value::String(line.to_owned())).collect()
 }
 
 fn sorted(value: Value) -> Value {

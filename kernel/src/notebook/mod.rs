@@ -5,9 +5,11 @@
 //! holds besides results is changed. Whether the results can be written is found out before the
 //! first cell runs, and an older file stays until the new one is whole.
 
+pub mod check;
 pub mod document;
 pub mod error;
 pub mod outputs;
+pub mod parameters;
 pub mod pictures;
 pub mod run;
 pub mod screen;

@@ -12,11 +12,14 @@ use tokio::sync::mpsc;
 use super::document::Document;
 use super::error::NotebookError;
 use super::outputs::Outputs;
+use super::parameters::{self, ParameterFault};
 use super::pictures::Pictures;
 use super::screen::Screen;
 use super::target::Target;
 use crate::cells::Engine;
-use crate::cells::types::{CellEvent, CellReply, CellRequest, Outcome, Timings};
+use crate::cells::types::{
+    CellEvent, CellFailure, CellReply, CellRequest, Facts, Origin, Outcome, Timings,
+};
 use crate::setup::progress::clock;
 use crate::worker::headway;
 
@@ -70,15 +73,59 @@ pub struct Summary {
     pub failed: bool,
 }
 
+/// One cell that was run.
+#[derive(Debug)]
+pub struct Ran<'a> {
+    /// Its place among the cells, from 0.
+    pub cell_idx: usize,
+    /// Its number in the run.
+    pub count: u32,
+    /// Its outputs as the notebook format has them.
+    pub outputs: &'a [Value],
+    /// Why it failed, if it did.
+    pub failure: Option<&'a CellFailure>,
+    /// Whether it failed and was not meant to.
+    pub failed: bool,
+    /// Whether it was interrupted.
+    pub interrupted: bool,
+    /// How long it took.
+    pub timings: Timings,
+    /// What it stood on and what it left behind.
+    pub facts: &'a Facts,
+}
+
+/// Follows a run.
+pub trait Watcher {
+    /// Whether a cell is to be run at all.
+    fn wants(&mut self, cell_idx: usize) -> bool {
+        let _ = cell_idx;
+        true
+    }
+
+    /// A cell was run.
+    fn ran(&mut self, ran: &Ran<'_>) {
+        let _ = ran;
+    }
+
+    /// Whether the run goes on behind a cell that failed and was not meant to.
+    fn goes_on(&self) -> bool {
+        false
+    }
+}
+
+/// Nobody follows the run.
+impl Watcher for () {}
+
 /// Runs the cells of a notebook in order and puts their results into it.
 ///
-/// The first cell that fails ends the run, unless it is tagged as one that may. Cells after it are
-/// left without results.
+/// The first cell that fails ends the run, unless it is tagged as one that may or the watcher wants
+/// to go on. Cells after it are left without results.
 pub async fn run_cells(
     document: &mut Document,
     pictures: &mut Pictures,
     engine: &mut impl Runner,
     screen: &Screen,
+    watcher: &mut impl Watcher,
 ) -> Summary {
     document.clear_results();
     let code: Vec<(usize, String)> = (0..document.n_cells())
@@ -89,10 +136,15 @@ pub async fn run_cells(
     let mut keyboard = signal(SignalKind::interrupt()).ok();
     let mut summary = Summary { n_run: 0, n_code: code.len(), n_compiled: 0, failed: false };
     for (count, (cell_idx, code)) in (1u32..).zip(code) {
+        if !watcher.wants(cell_idx) {
+            continue;
+        }
         let place = cell_idx + 1;
         let n_cells = document.n_cells();
         screen.begin(place, n_cells, &code);
-        let request = CellRequest { code: code.clone(), count, silent: false };
+        let origin =
+            Origin { cell_id: document.id(cell_idx).map(str::to_owned), deleted: Vec::new() };
+        let request = CellRequest { code: code.clone(), count, silent: false, origin };
         let mut outputs = Outputs::default();
         let began = Utc::now();
         let reply = run_cell(engine, request, &mut outputs, screen, &mut keyboard).await;
@@ -110,12 +162,24 @@ pub async fn run_cells(
         let (done, bundles) = outputs.finish();
         pictures.add(count, &bundles);
         let times = execution_times(began, ended);
+        watcher.ran(&Ran {
+            cell_idx,
+            count,
+            outputs: &done,
+            failure: failure.as_ref(),
+            failed: failure.is_some() && (interrupted || !document.may_fail(cell_idx)),
+            interrupted,
+            timings: reply.timings,
+            facts: &reply.facts,
+        });
         document.set_result(cell_idx, count, done, times, timings(reply.timings));
         match failure {
             Some(failure) if interrupted || !document.may_fail(cell_idx) => {
                 screen.failed(count, place, n_cells, &failure);
                 summary.failed = true;
-                break;
+                if interrupted || !watcher.goes_on() {
+                    break;
+                }
             }
             Some(_) => screen.end(place, n_cells, &code, "failed, as it is allowed to"),
             None => screen.end(place, n_cells, &code, &took(reply.timings)),
@@ -206,16 +270,18 @@ fn timings(timings: Timings) -> Value {
 pub async fn run_file<R: Runner>(
     notebook: &Path,
     output: Option<&Path>,
+    set: &[String],
     rust_release: &str,
     start: impl AsyncFnOnce() -> Result<R, String>,
 ) -> Result<Summary, RunError> {
     let mut document = Document::read(notebook)?;
+    parameters::apply(&mut document, set)?;
     let target = Target::choose(notebook, output)?;
     let mut engine = start().await.map_err(RunError::Engine)?;
     let began = Instant::now();
     let screen = Screen::new();
     let mut pictures = Pictures::default();
-    let summary = run_cells(&mut document, &mut pictures, &mut engine, &screen).await;
+    let summary = run_cells(&mut document, &mut pictures, &mut engine, &screen, &mut ()).await;
     engine.shutdown().await;
     document.set_kernel(rust_release);
     let (path, folder) = (target.notebook.clone(), target.pictures.clone());
@@ -245,6 +311,9 @@ pub enum RunError {
     /// The notebook or the place for the results.
     #[error(transparent)]
     Notebook(#[from] NotebookError),
+    /// A value given for this run.
+    #[error(transparent)]
+    Parameter(#[from] ParameterFault),
     /// The kit, the compiler or the worker.
     #[error("{0}")]
     Engine(String),

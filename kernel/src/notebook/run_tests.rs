@@ -50,7 +50,7 @@ impl Runner for Scripted {
             run: Duration::from_millis(2),
             compiled: code != "cached",
         };
-        CellReply { outcome, timings }
+        CellReply { outcome, timings, facts: Default::default() }
     }
 
     fn interrupter(&self) -> Box<dyn Fn()> {
@@ -81,7 +81,7 @@ async fn run(text: &str) -> (Result<Summary, RunError>, Option<Value>, tempfile:
     let path = folder.path().join("kilns.ipynb");
     std::fs::write(&path, text).unwrap();
     let start = async || Ok(Scripted { seen: Vec::new() });
-    let summary = run_file(&path, None, "1.95.0", start).await;
+    let summary = run_file(&path, None, &[], "1.95.0", start).await;
     let written = std::fs::read(folder.path().join("kilns.executed.ipynb")).ok();
     let value = written.map(|bytes| {
         nbformat::parse_notebook(std::str::from_utf8(&bytes).unwrap()).unwrap();
@@ -160,6 +160,6 @@ async fn a_bad_notebook_starts_no_engine() {
     let path = folder.path().join("x.ipynb");
     std::fs::write(&path, "{").unwrap();
     let start = async || -> Result<Scripted, String> { panic!("the engine was started") };
-    let error = run_file(&path, None, "1.95.0", start).await.unwrap_err();
+    let error = run_file(&path, None, &[], "1.95.0", start).await.unwrap_err();
     assert!(error.to_string().contains("is not JSON"), "{error}");
 }

@@ -16,6 +16,8 @@ const WIDTH: usize = 60;
 pub struct Screen {
     bar: Option<ProgressBar>,
     colours: bool,
+    /// Whether cells are not reported one by one.
+    silent: bool,
 }
 
 impl Screen {
@@ -29,7 +31,12 @@ impl Screen {
             bar.set_style(style.unwrap_or_else(|_| ProgressStyle::default_spinner()));
             bar
         });
-        Self { bar, colours }
+        Self { bar, colours, silent: false }
+    }
+
+    /// A screen that shows how far a run has come on a terminal and nothing anywhere else.
+    pub fn quiet() -> Self {
+        Self { silent: true, ..Self::new() }
     }
 
     /// A cell begins.
@@ -61,13 +68,16 @@ impl Screen {
 
     /// A cell ended, and the run goes on.
     pub fn end(&self, place: usize, of: usize, code: &str, how: &str) {
-        if self.bar.is_none() {
+        if self.bar.is_none() && !self.silent {
             self.say(&format!("cell {place} of {of}: {} ({how})", headline(code)));
         }
     }
 
     /// A cell failed.
     pub fn failed(&self, count: u32, place: usize, of: usize, failure: &CellFailure) {
+        if self.silent {
+            return;
+        }
         let mut text = format!("cell [{count}] failed");
         if let Some(line) = failure.line {
             let _ = write!(text, " at its line {line}");

@@ -29,6 +29,18 @@ impl Target {
     /// # Errors
     /// None of them can be written.
     pub fn choose(notebook: &Path, asked: Option<&Path>) -> Result<Self, NotebookError> {
+        Self::choose_as(notebook, asked, &format!("{MARK}.ipynb"))
+    }
+
+    /// As [`Target::choose`], for a file with another ending.
+    ///
+    /// # Errors
+    /// As [`Target::choose`].
+    pub fn choose_as(
+        notebook: &Path,
+        asked: Option<&Path>,
+        ending: &str,
+    ) -> Result<Self, NotebookError> {
         if let Some(path) = asked {
             if path.is_dir() {
                 return Err(NotebookError::BadOutput {
@@ -39,7 +51,7 @@ impl Target {
             return Self::at(path.to_owned());
         }
         let stem = notebook.file_stem().unwrap_or_default().to_string_lossy();
-        let name = format!("{stem}.{MARK}.ipynb");
+        let name = format!("{stem}.{ending}");
         let beside = Self::at(notebook.with_file_name(&name));
         match beside {
             Err(NotebookError::BadOutput { .. }) => Self::at(PathBuf::from(name)),
@@ -71,8 +83,16 @@ impl Target {
     /// # Errors
     /// The file cannot be written.
     pub fn write(self, text: &str) -> Result<(), NotebookError> {
+        self.write_bytes(text.as_bytes())
+    }
+
+    /// As [`Target::write`], for a file that is no text.
+    ///
+    /// # Errors
+    /// As [`Target::write`].
+    pub fn write_bytes(self, bytes: &[u8]) -> Result<(), NotebookError> {
         let mut file = self.file;
-        file.write_all(text.as_bytes()).map_err(NotebookError::files("write", &self.notebook))?;
+        file.write_all(bytes).map_err(NotebookError::files("write", &self.notebook))?;
         place(file, &self.notebook)
     }
 }

@@ -16,7 +16,7 @@ use tokio::sync::{mpsc, oneshot};
 
 use super::evaluator::{Evaluator, Interrupt};
 use crate::cells::types::{
-    CellEvent, CellFailure, CellReply, CellRequest, MimeBundle, Outcome, Scope, Timings,
+    CellEvent, CellFailure, CellReply, CellRequest, MimeBundle, Outcome, Scope,
 };
 use crate::help::Index;
 use crate::wire::note;
@@ -206,7 +206,7 @@ async fn run_cell<E: Evaluator>(
     news: &mpsc::Sender<News>,
 ) -> CellReply {
     if request.code.trim().is_empty() {
-        return CellReply { outcome: Outcome::Done, timings: Timings::default() };
+        return CellReply::at_once(Outcome::Done);
     }
     let (sender, mut events) = mpsc::channel(WAITING);
     let reply = {
@@ -261,7 +261,7 @@ fn internal(panic: &Box<dyn Any + Send>) -> String {
 }
 
 fn failed(message: String) -> CellReply {
-    CellReply { outcome: Outcome::Failed(failure(message)), timings: Timings::default() }
+    CellReply::at_once(Outcome::Failed(failure(message)))
 }
 
 /// A failure that is not the cell's fault.

@@ -6,7 +6,7 @@ use chrono::{DateTime, Utc};
 use jupyter_protocol::{ExecuteRequest, JupyterMessage};
 
 use super::engine::Job;
-use crate::cells::types::CellRequest;
+use crate::cells::types::{CellRequest, Origin};
 use crate::wire::Inlet;
 
 /// A cell that a client asked to run.
@@ -101,9 +101,22 @@ impl Running {
                 code: self.order.execute.code.clone(),
                 count: u32::try_from(self.count).unwrap_or(u32::MAX),
                 silent: self.order.execute.silent,
+                origin: origin(&self.order.message),
             },
             expressions,
         }
+    }
+}
+
+/// Which cell a request is about, where the client says so beside the protocol: editors send the
+/// identifier of the cell, and those of cells that were deleted since.
+pub fn origin(message: &JupyterMessage) -> Origin {
+    let metadata = &message.metadata;
+    let text = |value: &serde_json::Value| value.as_str().map(str::to_owned);
+    let deleted = metadata.get("deletedCells").and_then(serde_json::Value::as_array);
+    Origin {
+        cell_id: metadata.get("cellId").and_then(text).filter(|id| !id.is_empty()),
+        deleted: deleted.into_iter().flatten().filter_map(text).collect(),
     }
 }
 

@@ -24,7 +24,7 @@ use super::publish::Outlet;
 use super::service::{Event, Service};
 use super::watch::Signal;
 use crate::cells::types::{
-    CellEvent, CellFailure, CellReply, CellRequest, MimeBundle, Outcome, Scope, StreamName,
+    CellEvent, CellFailure, CellReply, CellRequest, Facts, MimeBundle, Outcome, Scope, StreamName,
     Timings, VariableInfo,
 };
 use crate::wire::{Inlet, Request};
@@ -86,10 +86,10 @@ impl Evaluator for Script {
         self.interrupted.flag.store(false, Ordering::SeqCst);
         for line in request.code.lines() {
             if let Some(outcome) = self.line(line, &events).await {
-                return CellReply { outcome, timings };
+                return CellReply { outcome, timings, facts: Facts::default() };
             }
         }
-        CellReply { outcome: Outcome::Done, timings }
+        CellReply { outcome: Outcome::Done, timings, facts: Facts::default() }
     }
 
     async fn evaluate(&mut self, expression: &str) -> Result<MimeBundle, CellFailure> {
@@ -609,7 +609,7 @@ impl Evaluator for Flood {
             let text = "y".repeat(100);
             events.send(CellEvent::Stream { name: StreamName::Stdout, text }).await.unwrap();
         }
-        CellReply { outcome: Outcome::Done, timings: Timings::default() }
+        CellReply::at_once(Outcome::Done)
     }
 
     async fn evaluate(&mut self, expression: &str) -> Result<MimeBundle, CellFailure> {

@@ -73,7 +73,7 @@ impl<O: Outlet> Service<O> {
             (Turn::Waiting, EngineState::Starting(_)) => {
                 let text = "interrupted before the engine was ready; the cell did not run";
                 let outcome = Outcome::Interrupted(plain_failure("Interrupted", text));
-                self.conclude(CellReply { outcome, timings: Timings::default() }, vec![]).await;
+                self.conclude(CellReply::at_once(outcome), vec![]).await;
                 self.pump().await;
             }
             // The cell ends by itself, for there is no engine.
@@ -94,7 +94,7 @@ impl<O: Outlet> Service<O> {
 
     pub(super) async fn fail_running(&mut self, name: &str, reason: &str) {
         let outcome = Outcome::Failed(plain_failure(name, reason));
-        self.conclude(CellReply { outcome, timings: Timings::default() }, vec![]).await;
+        self.conclude(CellReply::at_once(outcome), vec![]).await;
     }
 
     /// Shows something that the running cell showed.

@@ -22,6 +22,7 @@ use std::fs::{self, File, TryLockError};
 use std::path::{Path, PathBuf};
 use std::time::Instant;
 
+pub use compiler::command_path;
 pub use error::SetupError;
 pub use kit::{Kit, KitHome};
 pub use progress::{Reporter, SetupEvent};

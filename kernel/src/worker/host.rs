@@ -29,6 +29,7 @@ pub fn main(prelude: &Path, commands: RawFd, reports: RawFd) -> i32 {
             return 3;
         }
     };
+    super::opened::watch();
     // SAFETY: the descriptors were inherited for this call and nothing else uses them.
     let status = unsafe { entry(commands, reports) };
     // Threads of cells may still be inside the library; it is never unloaded.

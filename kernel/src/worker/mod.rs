@@ -6,6 +6,7 @@
 
 pub mod headway;
 pub mod host;
+mod opened;
 pub mod process;
 
 /// The messages, which are written down once, in the prelude.

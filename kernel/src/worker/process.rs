@@ -13,7 +13,9 @@ use tokio::time::Instant;
 
 use crate::cells::types::{CellEvent, MimeBundle, StreamName};
 
-use super::message::{Command, Ended, Form, INTERFACE, Report, Run, read_frame, write_frame};
+use super::message::{
+    Command, Ended, Form, INTERFACE, Report, Run, TableFile, read_frame, write_frame,
+};
 
 /// How long a cell that was asked to stop may take to reach a check.
 const GRACE: Duration = Duration::from_millis(1500);
@@ -53,6 +55,8 @@ pub struct Worker {
     child: tokio::process::Child,
     commands: File,
     reports: mpsc::UnboundedReceiver<Report>,
+    /// Files that the running cell has read as tables.
+    tables: Vec<TableFile>,
     stdout: Pipe,
     stderr: Pipe,
 }
@@ -108,6 +112,7 @@ impl Worker {
             child,
             commands: File::from(commands),
             reports: received,
+            tables: Vec::new(),
             stdout: Pipe::new(stdout)?,
             stderr: Pipe::new(stderr)?,
         };
@@ -166,6 +171,7 @@ impl Worker {
                 News::Report(Some(Report::Progress { line })) => {
                     let _ = events.send(CellEvent::Progress(line)).await;
                 }
+                News::Report(Some(Report::Read(file))) => self.tables.push(file),
                 News::Report(Some(Report::Ended(ended))) => {
                     self.pass_on_the_rest(events).await;
                     return Ending::Reported(ended);
@@ -177,6 +183,11 @@ impl Worker {
                 }
             }
         }
+    }
+
+    /// Takes what the last cell has read as tables.
+    pub fn take_tables(&mut self) -> Vec<TableFile> {
+        std::mem::take(&mut self.tables)
     }
 
     /// Drops variables; gives what went wrong in a destructor. `Err` means that the worker died.

@@ -23,15 +23,17 @@ mod text;
 mod tests;
 
 pub use chart::{
-    Chart, Intervals, NUMBERS, Names, Reference, biplot, correlation_map, loading_bars,
-    loading_plot, pairs, profiles, score_matrix, score_plot, scree, structure_circle,
-    variance_shares,
+    Chart, Intervals, Names, Reference, biplot, correlation_map, loading_bars, loading_plot, pairs,
+    profiles, score_matrix, score_plot, scree, structure_circle, variance_shares,
 };
 pub use numbers::{fixed, significant, stored};
 pub use tables::{NumberFormat, Table, TableColumn};
 
 pub(crate) use numbers::{counted, grouped};
 pub(crate) use tables::{Abridged, stacked};
+
+/// The MIME type of the numbers behind a chart or a table, as JSON: for whoever checks or reuses them.
+pub const NUMBERS: &str = "application/vnd.semiaxis.numbers+json";
 
 /// The same content in several forms; a client shows the richest one it knows.
 #[derive(Debug, Clone, Default, PartialEq)]

@@ -11,7 +11,7 @@ use std::path::PathBuf;
 use serde::{Deserialize, Serialize};
 
 /// The number of this set of messages.
-pub const INTERFACE: u32 = 2;
+pub const INTERFACE: u32 = 3;
 
 /// The name of the one function that a worker process calls in the prelude.
 pub const ENTRY: &str = "semiaxis_worker";
@@ -70,6 +70,8 @@ pub enum Report {
         /// The work under way.
         line: Option<Line>,
     },
+    /// The cell has read a file as a table.
+    Read(TableFile),
     /// The cell has ended.
     Ended(Ended),
     /// The variables are dropped.
@@ -101,6 +103,34 @@ pub struct Form {
     pub content: serde_json::Value,
 }
 
+/// A file that a cell has read as a table: the bytes that it read, not what is there now.
+#[derive(Debug, Clone, PartialEq, Eq, Serialize, Deserialize)]
+pub struct TableFile {
+    /// Its absolute path; bytes that are no UTF-8 stand as `U+FFFD`.
+    pub path: String,
+    /// Its size.
+    pub bytes: u64,
+    /// The SHA-256 digest of its bytes, in hexadecimal digits.
+    pub sha256: String,
+    /// Rows of the table.
+    pub rows: usize,
+    /// Columns of the table.
+    pub columns: usize,
+}
+
+/// A file that the worker's process has opened while a cell ran.
+#[derive(Debug, Clone, PartialEq, Eq, PartialOrd, Ord, Serialize, Deserialize)]
+pub struct OpenedFile {
+    /// Its absolute path; bytes that are no UTF-8 stand as `U+FFFD`.
+    pub path: String,
+    /// Whether it was opened to be written.
+    pub written: bool,
+}
+
+/// What the host's `semiaxis_take_opened` calls with each file that was opened since the last call:
+/// the context, the bytes of the path and their count, and whether it was opened to be written.
+pub type TakeOpened = extern "C" fn(*mut std::ffi::c_void, *const u8, usize, bool);
+
 /// How a cell ended.
 #[derive(Debug, Serialize, Deserialize)]
 pub struct Ended {
@@ -112,6 +142,8 @@ pub struct Ended {
     pub gone: Vec<String>,
     /// Variables that were put on the shelf.
     pub kept: Vec<String>,
+    /// Files that were opened meanwhile, each path once.
+    pub opened: Vec<OpenedFile>,
 }
 
 /// Whether a cell ran to its end.

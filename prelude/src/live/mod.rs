@@ -10,6 +10,7 @@
 pub mod message;
 
 mod cell;
+mod files;
 mod progress;
 mod seen;
 mod shelf;
@@ -20,6 +21,7 @@ mod worker;
 use std::sync::atomic::{AtomicBool, AtomicU64, Ordering};
 
 pub use cell::{Cell, Failure, leaving, left};
+pub(crate) use files::TableRead;
 pub use progress::{Counted, Progress, counted};
 pub use seen::{ByDebug, ByDisplay, ByExhibit, ByName, Seen};
 

@@ -17,8 +17,8 @@ use std::time::{Duration, Instant};
 
 use super::cell::{Cell, note_panics};
 use super::message::{
-    Command, Ended, Form, How, INTERFACE, Report, Run, Trouble, linker_words, read_frame,
-    write_frame,
+    Command, Ended, Form, How, INTERFACE, Report, Run, TableFile, Trouble, linker_words,
+    read_frame, write_frame,
 };
 use super::progress::{Change, Reporter};
 use super::shelf::Shelf;
@@ -140,7 +140,13 @@ fn run_cell(shelf: &mut Shelf, libraries: &mut Libraries, run: &Run) -> Ended {
         eprintln!("dropping a replaced value panicked: {trouble}");
     }
     let gone = finished.gone.into_iter().filter(|name| !shelf.holds(name)).collect();
-    Ended { how: finished.how, result: super::forms(&finished.result), gone, kept: finished.kept }
+    Ended {
+        how: finished.how,
+        result: super::forms(&finished.result),
+        gone,
+        kept: finished.kept,
+        opened: super::files::opened(),
+    }
 }
 
 /// The compiled cells loaded so far. They are never unloaded: values on the shelf, threads and
@@ -189,11 +195,22 @@ fn report(report: &Report) {
             result: Vec::new(),
             gone: Vec::new(),
             kept: Vec::new(),
+            opened: Vec::new(),
         };
         if write_frame(&mut *pipe, &Report::Ended(ended)).is_err() {
             std::process::exit(0);
         }
     }
+}
+
+/// Whether this process is a worker.
+pub(super) fn is_here() -> bool {
+    LINES.get().is_some()
+}
+
+/// Tells the kernel of a file that was read as a table.
+pub(super) fn read(file: TableFile) {
+    report(&Report::Read(file));
 }
 
 /// Sends an exhibit and waits until the kernel has passed on what was printed before it; false

@@ -70,7 +70,7 @@ use self::card::Card;
 use self::picture::{Drawing, Picture};
 use self::settings::Settings;
 use super::text::visible;
-use super::{Bundle, Content, Exhibit};
+use super::{Bundle, Content, Exhibit, NUMBERS};
 use crate::error::Result;
 
 /// A chart of an analysis, with its settings.
@@ -89,9 +89,6 @@ pub struct Chart {
 
 // Bytes of SVG from which on a PNG takes too long to be made unasked.
 const LARGE: usize = 100_000;
-
-/// The MIME type of the numbers that a chart draws, as JSON: for whoever checks or reuses them.
-pub const NUMBERS: &str = "application/vnd.semiaxis.numbers+json";
 
 impl Chart {
     fn new(picture: impl Picture + 'static) -> Self {

@@ -8,13 +8,14 @@
 //! The same table is drawn as HTML, which follows the colours of the page it stands on, and as
 //! plain text for consoles.
 
+mod behind;
 mod html;
 mod plain;
 #[cfg(test)]
 mod tests;
 
 use super::numbers::{fixed, grouped, percent, significant, stored};
-use super::{Bundle, Exhibit};
+use super::{Bundle, Content, Exhibit, NUMBERS};
 
 // A table of up to MOST_ROWS rows is shown whole, a longer one by its head and tail.
 const MOST_ROWS: usize = 24;
@@ -166,7 +167,10 @@ impl Table {
 
 impl Exhibit for Table {
     fn exhibit(&self) -> Bundle {
-        Bundle::new().with_html(self.html()).with_plain(self.plain())
+        Bundle::new()
+            .with_html(self.html())
+            .with_plain(self.plain())
+            .with(NUMBERS, Content::Json(behind::table(self)))
     }
 }
 
@@ -174,7 +178,10 @@ impl Exhibit for Table {
 pub(crate) fn stacked(tables: &[&Table]) -> Bundle {
     let html: String = tables.iter().map(|table| table.html()).collect();
     let plain: Vec<String> = tables.iter().map(|table| table.plain()).collect();
-    Bundle::new().with_html(html).with_plain(plain.join("\n\n"))
+    Bundle::new()
+        .with_html(html)
+        .with_plain(plain.join("\n\n"))
+        .with(NUMBERS, Content::Json(behind::tables(tables)))
 }
 
 impl TableColumn {

@@ -13,6 +13,7 @@ use polars::prelude::DataFrame;
 
 use super::nearest::nearest;
 use crate::error::{Error, Result};
+use crate::live::TableRead;
 
 pub use options::TableOptions;
 
@@ -90,14 +91,17 @@ fn read_at(path: &Path, options: &TableOptions) -> Result<DataFrame> {
         .map(|extension| extension.to_string_lossy().to_lowercase())
         .filter(|extension| READABLE.contains(&extension.as_str()));
     let bytes = read_bytes(path, extension.is_some())?;
-    match extension.as_deref() {
+    let read = TableRead::of(&bytes);
+    let table = match extension.as_deref() {
         Some("csv") => delimited::read(path, bytes, ',', options),
         Some("tsv" | "tab") => delimited::read(path, bytes, '\t', options),
         Some("parquet") => columnar::read_parquet(path, bytes),
         Some("arrow" | "ipc" | "feather") => columnar::read_arrow(path, bytes),
         Some("jsonl" | "ndjson") => json_lines::read(path, bytes),
         _ => Err(Error::UnknownExtension { path: path.to_owned(), accepted: READABLE }),
-    }
+    }?;
+    read.became(path, table.shape());
+    Ok(table)
 }
 
 /// The whole file, or why there is none. A path that exists but cannot be read by its extension
