@@ -2,6 +2,7 @@
 
 mod cells;
 mod help;
+mod log;
 mod notebook;
 mod record;
 mod session;
@@ -83,6 +84,19 @@ enum Command {
         #[arg(long, value_name = "NUMBER", default_value_t = record::compare::TOLERANCE)]
         tolerance: f64,
     },
+    /// List the sessions that were logged, or show one of them.
+    ///
+    /// The status is 0 if the log is whole, 1 if it is cut short or altered, 2 if there is none.
+    Log {
+        /// The session: its name, the beginning of it, or `last`.
+        session: Option<String>,
+        /// Write the session's entries as JSON lines
+        #[arg(long, requires = "session", conflicts_with = "notebook")]
+        json: bool,
+        /// Write a notebook of what ran, in order, without what was overwritten
+        #[arg(long, value_name = "FILE", requires = "session")]
+        notebook: Option<PathBuf>,
+    },
     /// Say, without running anything, whether the saved outputs can come from a run from top to bottom.
     ///
     /// The status is 0 if they can, 1 if they cannot, 2 if the notebook cannot be read.
@@ -129,6 +143,9 @@ fn main() -> ExitCode {
             record(&record::command::Request { notebook, output, with_errors, pdf, set, seed })
         }
         Command::Verify { record, data, tolerance } => verify(&record, &data, tolerance),
+        Command::Log { session, json, notebook } => {
+            log(session.as_deref(), json, notebook.as_deref())
+        }
         Command::Check { notebook } => check(&notebook),
         Command::Kernel { connection_file } => {
             session::serve(&connection_file, EngineOptions::default())
@@ -235,6 +252,55 @@ fn verify(record: &Path, data: &[PathBuf], tolerance: f64) -> ExitCode {
         Ok(verified) if verified.differs() => ExitCode::from(FAILED),
         Ok(_) => ExitCode::from(OK),
         Err(error) => could_not(&error),
+    }
+}
+
+fn log(session: Option<&str>, json: bool, notebook: Option<&Path>) -> ExitCode {
+    let folder = match log::store::folder() {
+        Ok(folder) => folder,
+        Err(error) => return could_not(&error),
+    };
+    let print = |text: &str| {
+        // A reader that closed its end has seen enough.
+        let _ = std::io::Write::write_all(&mut std::io::stdout(), text.as_bytes());
+    };
+    let Some(asked) = session else {
+        return match log::read::sessions(&folder) {
+            Ok(sessions) => {
+                print(&log::tell::list(&sessions));
+                ExitCode::from(OK)
+            }
+            Err(error) => could_not(&error),
+        };
+    };
+    let session = match log::read::find(&folder, asked) {
+        Ok(session) => session,
+        Err(error) => return could_not(&error),
+    };
+    if let Some(path) = notebook {
+        match log::tell::write_notebook(&session, path, RUST) {
+            Ok(n_cells) => print(&format!("notebook of {n_cells} cells: {}\n", path.display())),
+            Err(error) => return could_not(&error),
+        }
+    } else if json {
+        print(&log::tell::json_lines(&session));
+    } else {
+        print(&log::tell::show(&session));
+    }
+    match session.state {
+        log::read::State::Whole => ExitCode::from(OK),
+        log::read::State::CutShort => {
+            eprintln!(
+                "semiaxis: the log of this session is cut short; it was read up to the last whole entry"
+            );
+            ExitCode::from(FAILED)
+        }
+        log::read::State::Altered(n) => {
+            eprintln!(
+                "semiaxis: the log of this session is altered at entry {n}; it was read up to there"
+            );
+            ExitCode::from(FAILED)
+        }
     }
 }
 

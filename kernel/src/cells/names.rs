@@ -96,7 +96,11 @@ struct Bound(BTreeSet<String>);
 
 impl<'ast> Visit<'ast> for Bound {
     fn visit_pat_ident(&mut self, pattern: &'ast syn::PatIdent) {
-        self.0.insert(plain(&pattern.ident));
+        // A capital letter begins the name of a constant or variant, which binds nothing.
+        let name = plain(&pattern.ident);
+        if !name.starts_with(char::is_uppercase) {
+            self.0.insert(name);
+        }
         visit::visit_pat_ident(self, pattern);
     }
 

@@ -13,7 +13,7 @@ use super::error::RecordError;
 use super::evidence::{CellOutputs, FileFacts, Manifest, NUMBERS, Outputs, Set};
 use super::gather::{self, Gathered};
 use super::markup::size;
-use super::narrative::first_heading;
+use super::narrative::titles;
 use super::page;
 use super::{host, seal};
 use crate::cells::Engine;
@@ -165,7 +165,8 @@ fn title(document: &Document, path: &Path) -> String {
     let heading = || {
         (0..document.n_cells())
             .filter(|cell_idx| document.kind(*cell_idx) == "markdown")
-            .find_map(|cell_idx| first_heading(&document.source(cell_idx)))
+            .flat_map(|cell_idx| titles(&document.source(cell_idx)))
+            .next()
     };
     let name = || path.file_stem().unwrap_or_default().to_string_lossy().into_owned();
     given.or_else(heading).unwrap_or_else(name)

@@ -49,6 +49,8 @@ pub struct Narrative<'a> {
     folder: &'a Path,
     /// The title of the page: a first heading that says the same is left out.
     title: &'a str,
+    /// By how much headings go down: none if the title is the only one of level 1.
+    shift: u8,
     /// The headings so far.
     pub headings: Vec<Heading>,
     /// The pictures so far.
@@ -57,8 +59,8 @@ pub struct Narrative<'a> {
 
 impl<'a> Narrative<'a> {
     /// For a notebook in a folder.
-    pub fn new(folder: &'a Path, title: &'a str) -> Self {
-        Self { folder, title, headings: Vec::new(), pictures: Vec::new() }
+    pub fn new(folder: &'a Path, title: &'a str, shift: u8) -> Self {
+        Self { folder, title, shift, headings: Vec::new(), pictures: Vec::new() }
     }
 
     /// One cell as HTML.
@@ -99,7 +101,7 @@ impl<'a> Narrative<'a> {
         }
         // No level is left out on the way down, so that the outline can be read aloud.
         let deepest = self.headings.last().map_or(2, |last| last.level + 1);
-        let level = (level as u8 + 1).clamp(2, deepest.min(6));
+        let level = (level as u8 + self.shift).clamp(2, deepest.min(6));
         let id = format!("{HEADING}{}", self.headings.len() + 1);
         events.push(Event::InlineHtml(format!("<h{level} id=\"{id}\">").into()));
         for event in inner {
@@ -191,14 +193,15 @@ fn options() -> Options {
         | Options::ENABLE_MATH
 }
 
-/// The first heading of the highest level in a Markdown text.
-pub fn first_heading(markdown: &str) -> Option<String> {
+/// The headings of level 1 in a Markdown text.
+pub fn titles(markdown: &str) -> Vec<String> {
+    let mut titles = Vec::new();
     let mut inner: Option<Vec<Event<'_>>> = None;
     for event in Parser::new_ext(markdown, options()) {
         match event {
             Event::Start(Tag::Heading { level: HeadingLevel::H1, .. }) => inner = Some(Vec::new()),
             Event::End(TagEnd::Heading(HeadingLevel::H1)) => {
-                return inner.map(|inner| plain(&inner)).filter(|text| !text.trim().is_empty());
+                titles.extend(inner.take().map(|inner| plain(&inner)));
             }
             other => {
                 if let Some(inner) = &mut inner {
@@ -207,7 +210,8 @@ pub fn first_heading(markdown: &str) -> Option<String> {
             }
         }
     }
-    None
+    titles.retain(|title| !title.trim().is_empty());
+    titles
 }
 
 fn plain(events: &[Event<'_>]) -> String {
@@ -279,12 +283,12 @@ mod tests {
     use serde_json::json;
 
     fn html(markdown: &str) -> String {
-        Narrative::new(Path::new("."), "Title").html(markdown, None)
+        Narrative::new(Path::new("."), "Title", 1).html(markdown, None)
     }
 
     #[test]
     fn the_outline_has_one_title_and_leaves_no_level_out() {
-        let mut narrative = Narrative::new(Path::new("."), "Clay tiles");
+        let mut narrative = Narrative::new(Path::new("."), "Clay tiles", 1);
         let first = narrative.html("# Clay tiles\n\ntext\n\n### Deep\n\n# Again\n\n## Next", None);
         assert_eq!(
             first,
@@ -317,7 +321,7 @@ mod tests {
     fn pictures_become_part_of_the_page_or_are_named() {
         let folder = tempfile::tempdir().unwrap();
         std::fs::write(folder.path().join("a b.png"), [1, 2, 3]).unwrap();
-        let mut narrative = Narrative::new(folder.path(), "T");
+        let mut narrative = Narrative::new(folder.path(), "T", 0);
         let shown = narrative.html("![kiln](a%20b.png) ![two](<a b.png>)", None);
         assert_eq!(shown.matches("src=\"data:image/png;base64,AQID\"").count(), 2, "{shown}");
         assert_eq!(narrative.pictures[0].path, "a b.png");

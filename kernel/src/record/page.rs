@@ -13,7 +13,7 @@ use super::evidence::Manifest;
 use super::exhibits;
 use super::highlight::highlighted;
 use super::markup::{escaped, milliseconds, size};
-use super::narrative::{Narrative, PictureFile};
+use super::narrative::{Narrative, PictureFile, titles};
 use crate::notebook::document::Document;
 
 const STYLE: &str = include_str!("style.css");
@@ -37,7 +37,12 @@ pub fn body(
     manifest: &Manifest,
     folder: &Path,
 ) -> Body {
-    let mut narrative = Narrative::new(folder, &manifest.title);
+    let of_level_one = (0..document.n_cells())
+        .filter(|cell_idx| document.kind(*cell_idx) == "markdown")
+        .flat_map(|cell_idx| titles(&document.source(cell_idx)))
+        .filter(|heading| heading.trim() != manifest.title.trim())
+        .count();
+    let mut narrative = Narrative::new(folder, &manifest.title, u8::from(of_level_one > 0));
     let mut cells = String::new();
     for cell_idx in 0..document.n_cells() {
         let place = cell_idx + 1;

@@ -28,6 +28,7 @@ use std::process::ExitCode;
 use std::time::Duration;
 
 use crate::cells::types::EngineOptions;
+use crate::log::store::{self, Limits, Log};
 use crate::wire::{self, Intake, Sockets, note};
 use service::{Event, Service};
 
@@ -85,13 +86,22 @@ pub fn serve(connection_file: &Path, options: EngineOptions) -> ExitCode {
     })
 }
 
+/// Begins the session's log. Without one the session goes on: cells matter more than their log.
+fn begin_log(id: &str, seed: u64) -> Option<Log> {
+    let short = id.get(..8).unwrap_or(id);
+    let begun =
+        store::folder().and_then(|folder| Log::begin(&folder, short, seed, Limits::default()));
+    begun.map_err(|error| note(format_args!("this session is not logged: {error}"))).ok()
+}
+
 /// The loop between the sockets, the engine and the signals.
 async fn converse(id: &str, key: &str, sockets: Sockets, options: EngineOptions) {
     let Sockets { mut shell, mut control, mut stdin, outlets } = sockets;
     let (mut signals, _watch) = watch::start();
+    let log = begin_log(id, options.seed);
     let (engine, mut news) = engine::start(move |progress| evaluator::start(options, progress));
     let mut intake = Intake::new(key);
-    let mut service = Service::new(id, outlets, engine);
+    let mut service = Service::new(id, outlets, engine).with_log(log);
     service.greet().await;
     let mut engine_lives = true;
     'session: loop {

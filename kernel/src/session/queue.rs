@@ -7,6 +7,7 @@ use jupyter_protocol::{ExecuteRequest, JupyterMessage};
 
 use super::engine::Job;
 use crate::cells::types::{CellRequest, Origin};
+use crate::log::store::Listener;
 use crate::wire::Inlet;
 
 /// A cell that a client asked to run.
@@ -47,6 +48,8 @@ pub struct Running {
     pub turn: Turn,
     /// The plain text of its result, for the history.
     pub output: Option<String>,
+    /// Takes the digests of what it shows, for the log.
+    pub listener: Listener,
     /// The line about its long work that clients have been shown.
     pub headway: Headway,
 }
@@ -151,6 +154,7 @@ impl Queue {
             since: Utc::now(),
             turn: Turn::Waiting,
             output: None,
+            listener: Listener::default(),
             headway: Headway::Never,
         };
         if running.is_stored() {

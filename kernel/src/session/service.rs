@@ -26,6 +26,7 @@ use super::turns::plain_failure;
 use super::watch::Signal;
 use crate::cells::types::Scope;
 use crate::help::Index;
+use crate::log::store::Log;
 use crate::wire::{Inlet, Intake, Refusal, Request, note};
 
 /// Everything that can happen to a session.
@@ -85,6 +86,8 @@ pub struct Service<O> {
     pub(super) history: History,
     pub(super) stream: StreamBuffer,
     pub(super) pacer: Pacer,
+    /// What ran, for later; none where it cannot be written.
+    pub(super) log: Option<Log>,
     /// What the session defined when the last cell ended.
     scope: Scope,
     /// What the prelude offers; empty until the engine's thread has read it.
@@ -103,9 +106,16 @@ impl<O: Outlet> Service<O> {
             history: History::default(),
             stream: StreamBuffer::default(),
             pacer: Pacer::new(Instant::now()),
+            log: None,
             scope: Scope::default(),
             index: Index::default(),
         }
+    }
+
+    /// Logs what runs from now on.
+    pub fn with_log(mut self, log: Option<Log>) -> Self {
+        self.log = log;
+        self
     }
 
     /// Says, once, that the kernel is starting.
@@ -147,6 +157,9 @@ impl<O: Outlet> Service<O> {
 
     /// Ends the engine, or leaves it to the system when that takes too long.
     pub async fn stop_engine(&mut self, news: &mut mpsc::Receiver<News>, patience: Duration) {
+        if let Some(Err(error)) = self.log.as_mut().map(Log::end) {
+            note(format_args!("the end of the session could not be logged: {error}"));
+        }
         self.engine.stop();
         let stopped = async { while !matches!(news.recv().await, Some(News::Stopped) | None) {} };
         if tokio::time::timeout(patience, stopped).await.is_err() {

@@ -15,12 +15,14 @@ use serde_json::{Value, json};
 
 use super::answers::media;
 use super::publish::{Outlet, reply_to};
-use super::queue::{Headway, Order, Running, Turn};
+use super::queue::{Headway, Order, Running, Turn, origin};
 use super::service::{EngineState, Service};
 use super::stream::Gathered;
 use crate::cells::types::{
-    CellEvent, CellFailure, CellReply, MimeBundle, Outcome, StreamName, Timings,
+    CellEvent, CellFailure, CellReply, Facts, MimeBundle, Outcome, StreamName, Timings,
 };
+use crate::log::entry::CellEntry;
+use crate::wire::note;
 use crate::worker::headway;
 
 impl<O: Outlet> Service<O> {
@@ -99,6 +101,9 @@ impl<O: Outlet> Service<O> {
 
     /// Shows something that the running cell showed.
     pub(super) async fn show(&mut self, event: CellEvent) {
+        if let (Some(running), Some(_)) = (&mut self.queue.running, &self.log) {
+            running.listener.hear(&event);
+        }
         match event {
             CellEvent::Stream { name, text } => self.show_text(name, text).await,
             CellEvent::Display(bundle) => {
@@ -196,6 +201,7 @@ impl<O: Outlet> Service<O> {
     ) {
         self.show_headway(None).await;
         self.flush().await;
+        let interrupted = matches!(reply.outcome, Outcome::Interrupted(_));
         let failure = match reply.outcome {
             Outcome::Done => None,
             Outcome::Failed(failure) | Outcome::Interrupted(failure) => Some(failure),
@@ -203,7 +209,8 @@ impl<O: Outlet> Service<O> {
         if let Some(failure) = &failure {
             self.send_output(error_output(failure).into()).await;
         }
-        let Some(running) = self.queue.running.take() else { return };
+        let Some(mut running) = self.queue.running.take() else { return };
+        self.enter(&mut running, failure.as_ref(), interrupted, reply.timings, reply.facts);
         if running.is_stored()
             && let Some(output) = &running.output
         {
@@ -257,6 +264,47 @@ impl<O: Outlet> Service<O> {
 
 fn plain_bundle(text: &str) -> MimeBundle {
     MimeBundle::from_iter([("text/plain".to_owned(), text.into())])
+}
+
+impl<O> Service<O> {
+    /// Enters a cell that has ended into the log, before its reply is sent.
+    fn enter(
+        &mut self,
+        running: &mut Running,
+        failure: Option<&CellFailure>,
+        interrupted: bool,
+        timings: Timings,
+        facts: Facts,
+    ) {
+        let Some(log) = &mut self.log else { return };
+        let outcome = match failure {
+            None => "done",
+            Some(_) if interrupted => "interrupted",
+            Some(_) => "failed",
+        };
+        let milliseconds = |time: std::time::Duration| time.as_secs_f64() * 1e3;
+        let written = log.cell(CellEntry {
+            count: u32::try_from(running.count).unwrap_or(u32::MAX),
+            cell_id: origin(&running.order.message).cell_id,
+            silent: running.order.execute.silent,
+            source: running.order.execute.code.clone(),
+            outcome: outcome.to_owned(),
+            message: failure.map(|failure| format!("{}: {}", failure.name, failure.message)),
+            seed: facts.seed,
+            compile_ms: milliseconds(timings.compile),
+            run_ms: milliseconds(timings.run),
+            outputs: std::mem::take(&mut running.listener).finish(),
+            tables: facts.tables,
+            opened: facts.opened,
+            uses: facts.uses,
+            makes: facts.makes,
+            outdated: facts.outdated,
+        });
+        if let Err(error) = written {
+            // The next cell tries again: a full disk may have been emptied.
+            note(format_args!("a cell could not be logged in {}: {error}", log.path().display()));
+        }
+    }
 }
 
 /// A failure with nothing to tell but one line.
