@@ -5,6 +5,7 @@
 //! `use polars::prelude::*;` in a cell.
 
 // From tables to statistics.
+pub use crate::adequacy::{Adequacy, MultivariateNormality, adequacy, multivariate_normality};
 pub use crate::components::{
     ComponentOptions, Decomposition, FittedComponents, PrincipalComponents, RandomisedOptions,
     Reconstruction, Route, Scaling, principal_components, principal_components_with,
@@ -17,6 +18,10 @@ pub use crate::exhibit::{
 };
 pub use crate::parallel::{Noise, ParallelAnalysis, ParallelOptions, parallel_analysis};
 pub use crate::random::{Generator, random_generator, random_normal};
+pub use crate::stability::{
+    Alignment, AsymptoticErrors, AsymptoticOptions, Bootstrap, BootstrapOptions, LeaveOut,
+    LeaveOutOptions, asymptotic_errors, bootstrap, leave_out,
+};
 pub use crate::table::{
     ColumnDescription, ColumnDescriptions, DataMatrix, FrameToMatrix, GappedMatrix, Label,
     MatrixOptions, Missing, MissingPattern, MissingValues, NamedMatrix, TableOptions,

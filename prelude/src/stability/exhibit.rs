@@ -208,7 +208,7 @@ fn direction_table(bootstrap: &Bootstrap) -> Table {
     // Shares from 0 to 1 are accepted without exception.
     let at = |share: f64| bootstrap.angle_quantile(share).unwrap_or(f64::NAN);
     Table::new(format!(
-        "Directions: the space of {} turns by {}° in the middle, {}° at most in 95 % of resamples",
+        "Directions: the space of {} turns by {}° (median), by less than {}° in 95 % of resamples",
         counted(k, "component"),
         DEGREES.format(at(0.5)),
         DEGREES.format(at(0.95))

@@ -25,11 +25,13 @@ use crate::table::NamedMatrix;
 /// use semiaxis::stability::{LeaveOutOptions, leave_out};
 /// use semiaxis::table::DataMatrix;
 ///
-/// // Four rows on a line and one beside it.
-/// let x = DataMatrix::from_unnamed(dmatrix![1.0, 1.0; 2.0, 2.1; 3.0, 2.9; 4.0, 4.0; 4.0, 1.0])?;
+/// // Five rows about a line, and one high above it.
+/// let x = dmatrix![1.0, 1.0; 2.0, 2.1; 3.0, 2.9; 4.0, 4.0; 5.0, 5.1; 3.0, 12.0];
+/// let x = DataMatrix::from_unnamed(x)?;
 /// let pca = principal_components(&x, Scaling::Covariance)?;
 /// let influence = leave_out(&pca, LeaveOutOptions::new().components(1))?;
-/// assert_eq!(influence.most_influential().next(), Some("5"));
+/// assert_eq!(influence.most_influential().next(), Some("6"));
+/// assert!(influence.angles()[5] > 20.0);
 /// # Ok::<(), semiaxis::Error>(())
 /// ```
 ///

@@ -3,6 +3,7 @@
 
 mod components;
 mod parallel;
+mod stability;
 mod tables;
 
 mod files;
