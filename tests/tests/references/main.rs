@@ -4,5 +4,6 @@
 mod components;
 mod parallel;
 mod tables;
+mod transform;
 
 mod files;
