@@ -299,6 +299,32 @@ pub enum Error {
         found: usize,
     },
 
+    /// Something that was saved cannot be read back.
+    SavedForm {
+        /// The part at fault.
+        part: String,
+        /// What stands there.
+        found: String,
+        /// What would be accepted.
+        accepted: String,
+    },
+    /// Something was saved in a version that is not known.
+    SavedVersion {
+        /// What was saved.
+        format: &'static str,
+        /// Its version.
+        found: u64,
+        /// The version that is known.
+        known: u64,
+    },
+    /// An analysis that was saved holds no such thing.
+    NotSaved {
+        /// What was asked for.
+        what: &'static str,
+        /// The way out.
+        remedy: &'static str,
+    },
+
     // Statistics.
     /// A method needs more rows.
     TooFewRows {

@@ -26,6 +26,7 @@ mod columns;
 mod cross;
 mod exhibit;
 mod meaning;
+mod saved;
 mod scores;
 pub(crate) mod spectrum;
 mod supplementary;

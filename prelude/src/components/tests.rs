@@ -4,6 +4,7 @@
 mod exhibits;
 mod meaning;
 mod routes;
+mod saved;
 mod weights;
 
 use nalgebra::{DMatrix, DVector, dmatrix};

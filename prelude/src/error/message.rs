@@ -219,6 +219,17 @@ impl fmt::Display for Error {
             Error::ShapeMismatch { what, expected, found } => {
                 write!(f, "{what}: {expected} needed, {found} given")
             }
+            Error::SavedForm { part, found, accepted } => {
+                write!(f, "cannot read back what was saved: {} is ", Plain(part))?;
+                write!(f, "{}; accepted: {}", Plain(found), Plain(accepted))
+            }
+            Error::SavedVersion { format, found, known } => write!(
+                f,
+                "what was saved has version {found} of \"{format}\"; this library knows version {known}"
+            ),
+            Error::NotSaved { what, remedy } => {
+                write!(f, "the analysis was saved without its {what}; {remedy}")
+            }
             Error::TooFewRows { method, needed, found } => {
                 write!(
                     f,
