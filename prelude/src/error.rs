@@ -355,6 +355,14 @@ pub enum Error {
         /// The first place, counted from 1, where the order differs: wanted and found.
         order: Option<(usize, String, String)>,
     },
+    /// A table does not have the rows that an analysis was made with.
+    RowsDiffer {
+        /// Labels of the analysis that the table lacks.
+        missing: Vec<String>,
+        /// Labels of the table that the analysis does not know; when none is missing or unknown,
+        /// the order differs.
+        extra: Vec<String>,
+    },
     /// An option lies outside its range.
     OptionOutOfRange {
         /// The option.

@@ -6,8 +6,9 @@
 
 // From tables to statistics.
 pub use crate::components::{
-    ComponentOptions, Decomposition, FittedComponents, PrincipalComponents, RandomisedOptions,
-    Reconstruction, Route, Scaling, principal_components, principal_components_with,
+    Communalities, ComponentOptions, Decomposition, FittedComponents, PrincipalComponents,
+    RandomisedOptions, Reconstruction, Route, Scaling, SupplementaryColumns, SupplementaryGroups,
+    principal_components, principal_components_with,
 };
 pub use crate::error::{Error, Result};
 pub use crate::exhibit::{

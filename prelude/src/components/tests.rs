@@ -2,6 +2,7 @@
 //! workspace's `tests/tests/references`.
 
 mod exhibits;
+mod meaning;
 mod routes;
 mod weights;
 

@@ -265,6 +265,22 @@ impl fmt::Display for Error {
                 if let Some((place, wanted, found)) = order {
                     write!(f, "; place {place} holds {} instead of {}", Name(found), Name(wanted))?;
                 }
+                if missing.is_empty() {
+                    write!(f, "; bring them into its order with `x.select(pca.variables())?`")?;
+                }
+                Ok(())
+            }
+            Error::RowsDiffer { missing, extra } => {
+                write!(f, "the rows are not those of the analysis")?;
+                if !missing.is_empty() {
+                    write!(f, "; missing: {}", Names(missing))?;
+                }
+                if !extra.is_empty() {
+                    write!(f, "; unknown to it: {}", Names(extra))?;
+                }
+                if missing.is_empty() {
+                    write!(f, "; bring them into its order with `x.select_rows(pca.labels())?`")?;
+                }
                 Ok(())
             }
             Error::OptionOutOfRange { option, value, accepted } => {

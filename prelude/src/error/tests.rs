@@ -59,6 +59,7 @@ fn examples() -> Vec<Error> {
         Error::NoRows,
         Error::NoColumns,
         Error::OptionNeeded { option: "keep", needed_by: "a randomised decomposition" },
+        Error::RowsDiffer { missing: vec![], extra: vec![] },
         Error::BadWeight { row: 2, label: "b".into(), value: -1.0 },
         Error::MissingLabels { column: "x".into(), row: 2, count: 1 },
         Error::RepeatedLabel { column: Some("x".into()), label: "a".into(), rows: (1, 2) },

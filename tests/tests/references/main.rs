@@ -4,5 +4,6 @@
 mod components;
 mod parallel;
 mod tables;
+mod weights_and_meaning;
 
 mod files;
