@@ -14,7 +14,7 @@ pub use crate::error::{Error, Result};
 pub use crate::exhibit::{
     Bundle, Chart, Content, Exhibit, NumberFormat, Reference, Table, TableColumn, biplot,
     correlation_map, loading_plot, pairs, profiles, score_matrix, score_plot, scree, significant,
-    structure_circle, variance_shares,
+    structure_circle, turntable, variance_shares,
 };
 pub use crate::parallel::{Noise, ParallelAnalysis, ParallelOptions, parallel_analysis};
 pub use crate::random::{Generator, random_generator, random_normal};
