@@ -337,6 +337,22 @@ pub enum Error {
         /// What would be accepted.
         accepted: String,
     },
+    /// Something was saved in a version that is not known.
+    SavedVersion {
+        /// What was saved.
+        format: &'static str,
+        /// Its version.
+        found: u64,
+        /// The version that is known.
+        known: u64,
+    },
+    /// An analysis that was saved holds no such thing.
+    NotSaved {
+        /// What was asked for.
+        what: &'static str,
+        /// The way out.
+        remedy: &'static str,
+    },
 
     // Statistics.
     /// A method needs more rows.
@@ -393,6 +409,14 @@ pub enum Error {
         extra: Vec<String>,
         /// The first place, counted from 1, where the order differs: wanted and found.
         order: Option<(usize, String, String)>,
+    },
+    /// A table does not have the rows that an analysis was made with.
+    RowsDiffer {
+        /// Labels of the analysis that the table lacks.
+        missing: Vec<String>,
+        /// Labels of the table that the analysis does not know; when none is missing or unknown,
+        /// the order differs.
+        extra: Vec<String>,
     },
     /// An option lies outside its range.
     OptionOutOfRange {

@@ -1,5 +1,7 @@
 //! Components and reconstructions as tables, with the conventions they were computed by.
 
+mod meaning;
+
 use super::fitted::FittedComponents;
 use super::options::Scaling;
 use super::result::{PrincipalComponents, Reconstruction};

@@ -328,6 +328,7 @@ impl Task<'_> {
                 variances: fitted.variances,
                 total_variance,
                 loadings: named(loadings, x.shared_variables()),
+                saved_scores: None,
             },
             weights: self.weights.map(|weights| weights.weights().into()),
             scores: match scores {

@@ -36,6 +36,8 @@ pub struct FittedComponents {
     pub(super) total_variance: f64,
     // p × r.
     pub(super) loadings: NamedMatrix,
+    // n × r; only after loading an analysis that was saved with them.
+    pub(super) saved_scores: Option<NamedMatrix>,
 }
 
 impl FittedComponents {

@@ -25,8 +25,11 @@ mod randomised;
 mod columns;
 mod cross;
 mod exhibit;
+mod meaning;
+mod saved;
 mod scores;
 pub(crate) mod spectrum;
+mod supplementary;
 mod ties;
 pub(crate) mod views;
 
@@ -35,6 +38,8 @@ mod tests;
 
 pub use fit::{principal_components, principal_components_with};
 pub use fitted::FittedComponents;
+pub use meaning::Communalities;
 pub use options::{ComponentOptions, Decomposition, RandomisedOptions, Route, Scaling};
 pub use randomised::Approximation;
 pub use result::{PrincipalComponents, Reconstruction};
+pub use supplementary::{SupplementaryColumns, SupplementaryGroups};

@@ -173,6 +173,14 @@ fn centre_block(
     }
 }
 
+/// The product of the transpose of a matrix with the matrix.
+pub(super) fn transposed_product(a: &DMatrix<f64>) -> DMatrix<f64> {
+    let mut result = DMatrix::zeros(a.ncols(), a.ncols());
+    let into = view_mut(&mut result);
+    matmul(into, Accum::Replace, view(a).transpose(), view(a), 1.0, PIECES);
+    result
+}
+
 /// The product of a matrix with the transpose of another.
 pub(super) fn product(a: &DMatrix<f64>, b: &DMatrix<f64>) -> DMatrix<f64> {
     let mut result = DMatrix::zeros(a.nrows(), b.nrows());

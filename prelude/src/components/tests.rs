@@ -2,7 +2,9 @@
 //! workspace's `tests/tests/references`.
 
 mod exhibits;
+mod meaning;
 mod routes;
+mod saved;
 mod weights;
 
 use nalgebra::{DMatrix, DVector, dmatrix};

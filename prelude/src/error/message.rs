@@ -253,6 +253,13 @@ impl fmt::Display for Error {
                 write!(f, "cannot read back what was saved: {} is ", Plain(part))?;
                 write!(f, "{}; accepted: {}", Plain(found), Plain(accepted))
             }
+            Error::SavedVersion { format, found, known } => write!(
+                f,
+                "what was saved has version {found} of \"{format}\"; this library knows version {known}"
+            ),
+            Error::NotSaved { what, remedy } => {
+                write!(f, "the analysis was saved without its {what}; {remedy}")
+            }
             Error::TooFewRows { method, needed, found } => {
                 write!(
                     f,
@@ -298,6 +305,22 @@ impl fmt::Display for Error {
                 }
                 if let Some((place, wanted, found)) = order {
                     write!(f, "; place {place} holds {} instead of {}", Name(found), Name(wanted))?;
+                }
+                if missing.is_empty() {
+                    write!(f, "; bring them into its order with `x.select(pca.variables())?`")?;
+                }
+                Ok(())
+            }
+            Error::RowsDiffer { missing, extra } => {
+                write!(f, "the rows are not those of the analysis")?;
+                if !missing.is_empty() {
+                    write!(f, "; missing: {}", Names(missing))?;
+                }
+                if !extra.is_empty() {
+                    write!(f, "; unknown to it: {}", Names(extra))?;
+                }
+                if missing.is_empty() {
+                    write!(f, "; bring them into its order with `x.select_rows(pca.labels())?`")?;
                 }
                 Ok(())
             }

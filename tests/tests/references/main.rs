@@ -5,5 +5,6 @@ mod components;
 mod parallel;
 mod tables;
 mod transform;
+mod weights_and_meaning;
 
 mod files;
