@@ -261,8 +261,8 @@ impl fmt::Display for Error {
                 write!(f, "; accepted: {accepted}")
             }
             Error::NoSpread { columns, measure } => {
-                write!(f, "columns without {measure}: ")?;
-                list(f, columns, |f, (name, middle)| write!(f, "{} about {middle}", Name(name)))?;
+                write!(f, "columns whose {measure} is zero: ")?;
+                list(f, columns, |f, (name, middle)| write!(f, "{}, about {middle}", Name(name)))?;
                 write!(f, "; leave them out, or transform the others by name with `.of([…])`")
             }
             Error::TransformationsDiffer { wanted, found } => {
