@@ -8,6 +8,7 @@ use super::options::{Route, Scaling};
 use super::randomised::Approximation;
 use super::scores::project_rows;
 use crate::error::{Error, Result};
+use crate::live::{checkpoint, interrupted};
 use crate::table::{DataMatrix, NamedMatrix};
 
 /// The part of [`PrincipalComponents`](super::PrincipalComponents) that needs no data: means,
@@ -210,8 +211,15 @@ impl FittedComponents {
     }
 
     pub(super) fn scores_of(&self, x: &DataMatrix) -> NamedMatrix {
-        let loadings = self.loadings.values();
-        let values = project_rows(x.values(), &self.mean, &self.scale, loadings, || false);
+        let project = |stop: fn() -> bool| {
+            project_rows(x.values(), &self.mean, &self.scale, self.loadings.values(), stop)
+        };
+        let mut values = project(interrupted);
+        checkpoint();
+        if interrupted() {
+            // Only the thread of the cell leaves it; on others the scores must be whole.
+            values = project(|| false);
+        }
         NamedMatrix::new(values, x.shared_labels(), self.loadings.shared_column_names())
             .expect("as many rows and columns as the rows and loadings that made them")
     }

@@ -11,9 +11,10 @@ use std::collections::{HashMap, HashSet};
 use nalgebra::{DMatrix, DVector};
 
 use super::columns::Columns;
-use super::cross::{self, RowWeights};
+use super::cross;
 use super::options::Scaling;
 use super::result::PrincipalComponents;
+use super::row_weights::RowWeights;
 use super::scores::Standardised;
 use crate::distributions::normal_upper_tail;
 use crate::error::{Error, Result};

@@ -3,6 +3,7 @@
 
 mod exhibits;
 mod meaning;
+mod randomised;
 mod routes;
 mod saved;
 mod weights;
