@@ -299,6 +299,35 @@ pub enum Error {
         found: usize,
     },
 
+    /// A value lies outside the domain of a transformation, or of the way back from one.
+    OutsideDomain {
+        /// What was attempted.
+        action: String,
+        /// The column.
+        column: String,
+        /// The first such row, counted from 1.
+        row: usize,
+        /// Its label.
+        label: String,
+        /// The value.
+        value: f64,
+        /// What is accepted, in words.
+        accepted: String,
+    },
+    /// Columns have no spread that they could be divided by.
+    NoSpread {
+        /// Each such column and its middle.
+        columns: Vec<(String, f64)>,
+        /// The measure of spread that is zero, or that a transformation was to be judged by.
+        measure: &'static str,
+    },
+    /// Rows did not go through the transformations that were expected of them.
+    TransformationsDiffer {
+        /// The transformations that were expected, in order.
+        wanted: Vec<String>,
+        /// Those that the rows went through, in order.
+        found: Vec<String>,
+    },
     /// Something that was saved cannot be read back.
     SavedForm {
         /// The part at fault.

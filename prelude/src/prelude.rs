@@ -23,6 +23,7 @@ pub use crate::table::{
     MatrixOptions, Missing, MissingPattern, MissingValues, NamedMatrix, TableOptions,
     describe_columns, missing_values, read_table, read_table_with,
 };
+pub use crate::transform::{Transform, Transformation};
 
 // Showing something in the middle of a cell.
 pub use crate::show;

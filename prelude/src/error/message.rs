@@ -219,6 +219,36 @@ impl fmt::Display for Error {
             Error::ShapeMismatch { what, expected, found } => {
                 write!(f, "{what}: {expected} needed, {found} given")
             }
+            Error::OutsideDomain { action, column, row, label, value, accepted } => {
+                write!(f, "{action}: column {} holds {value} in row {row}", Name(column))?;
+                if *label != row.to_string() {
+                    write!(f, " ({})", Name(label))?;
+                }
+                write!(f, "; accepted: {accepted}")
+            }
+            Error::NoSpread { columns, measure } => {
+                write!(f, "columns without {measure}: ")?;
+                list(f, columns, |f, (name, middle)| write!(f, "{} about {middle}", Name(name)))?;
+                write!(f, "; leave them out, or transform the others by name with `.of([…])`")
+            }
+            Error::TransformationsDiffer { wanted, found } => {
+                let chain = |f: &mut fmt::Formatter<'_>, chain: &[String]| match chain {
+                    [] => write!(f, "none"),
+                    chain => list(f, chain, |f, step| write!(f, "{}", Plain(step))),
+                };
+                write!(f, "the transformations differ; expected: ")?;
+                chain(f, wanted)?;
+                write!(f, "; found: ")?;
+                chain(f, found)?;
+                if wanted == found {
+                    write!(f, ", fitted to other rows")?;
+                }
+                write!(
+                    f,
+                    "; bring rows as they were measured, and repeat the transformations with "
+                )?;
+                write!(f, "`.transformed_as(…)`")
+            }
             Error::SavedForm { part, found, accepted } => {
                 write!(f, "cannot read back what was saved: {} is ", Plain(part))?;
                 write!(f, "{}; accepted: {}", Plain(found), Plain(accepted))

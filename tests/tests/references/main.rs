@@ -4,6 +4,7 @@
 mod components;
 mod parallel;
 mod tables;
+mod transform;
 mod weights_and_meaning;
 
 mod files;
