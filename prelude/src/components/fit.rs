@@ -116,6 +116,7 @@ impl Task<'_> {
                 route: fitted.route,
                 approximation: fitted.approximation,
                 n_rows: x.n_rows(),
+                transformations: x.transformations().into(),
                 is_weighted: self.weights.is_some(),
                 rank,
                 tolerance: fitted.tolerance,

@@ -3,6 +3,7 @@
 
 mod exhibits;
 mod meaning;
+mod new_rows;
 mod randomised;
 mod routes;
 mod saved;
