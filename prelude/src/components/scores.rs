@@ -5,7 +5,7 @@ use faer::{Accum, MatRef, Par};
 use nalgebra::{DMatrix, DVector};
 use rayon::prelude::*;
 
-use super::cross::RowWeights;
+use super::row_weights::RowWeights;
 use super::views::{PIECES, view, view_mut};
 use crate::live::interrupted;
 
@@ -171,6 +171,14 @@ fn centre_block(
             centred.iter_mut().for_each(|deviation| *deviation /= scale);
         }
     }
+}
+
+/// The product of the transpose of a matrix with the matrix.
+pub(super) fn transposed_product(a: &DMatrix<f64>) -> DMatrix<f64> {
+    let mut result = DMatrix::zeros(a.ncols(), a.ncols());
+    let into = view_mut(&mut result);
+    matmul(into, Accum::Replace, view(a).transpose(), view(a), 1.0, PIECES);
+    result
 }
 
 /// The product of a matrix with the transpose of another.

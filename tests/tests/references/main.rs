@@ -5,5 +5,7 @@ mod components;
 mod parallel;
 mod stability;
 mod tables;
+mod transform;
+mod weights_and_meaning;
 
 mod files;
