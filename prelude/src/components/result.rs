@@ -36,8 +36,8 @@ impl PrincipalComponents {
     /// ```
     ///
     /// Each column has mean zero and variance λ (divisor n − 1), and no two are correlated: with
-    /// row weights, by the weighted formulas of [`DataMatrix::with_weights`]. They are in the units of the variables under covariance and without unit under correlation.
-    /// Computed on first use.
+    /// row weights, by the weighted formulas of [`DataMatrix::with_weights`]. They are in the units
+    /// of the variables under covariance and without unit under correlation. Computed on first use.
     pub fn scores(&self) -> &NamedMatrix {
         self.scores.get_or_init(|| self.scores_of(&self.data))
     }
