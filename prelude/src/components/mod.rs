@@ -20,9 +20,9 @@ mod result;
 
 mod fit;
 
-mod cross;
+pub(crate) mod cross;
 mod exhibit;
-mod scores;
+pub(crate) mod scores;
 pub(crate) mod spectrum;
 pub(crate) mod views;
 

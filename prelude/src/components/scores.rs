@@ -55,7 +55,7 @@ pub(super) fn product(a: &DMatrix<f64>, b: &DMatrix<f64>) -> DMatrix<f64> {
 }
 
 /// The centred and scaled columns combined with weights on the rows: p × r.
-pub(super) fn combine_rows(
+pub(crate) fn combine_rows(
     x: &DMatrix<f64>,
     mean: &DVector<f64>,
     scale: &DVector<f64>,
