@@ -233,6 +233,11 @@ pub enum Error {
         /// The columns.
         columns: Vec<String>,
     },
+    /// Rows hold no value at all.
+    EmptyRows {
+        /// Their labels.
+        labels: Vec<String>,
+    },
     /// Dropping rows with missing values would leave none.
     NoCompleteRow {
         /// Columns with missing values, and how many each.

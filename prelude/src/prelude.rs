@@ -16,9 +16,9 @@ pub use crate::exhibit::{
 pub use crate::parallel::{Noise, ParallelAnalysis, ParallelOptions, parallel_analysis};
 pub use crate::random::{Generator, random_generator, random_normal};
 pub use crate::table::{
-    ColumnDescription, ColumnDescriptions, DataMatrix, FrameToMatrix, Label, MatrixOptions,
-    Missing, MissingPattern, MissingValues, NamedMatrix, TableOptions, describe_columns,
-    missing_values, read_table, read_table_with,
+    ColumnDescription, ColumnDescriptions, DataMatrix, FrameToMatrix, GappedMatrix, Label,
+    MatrixOptions, Missing, MissingPattern, MissingValues, NamedMatrix, TableOptions,
+    describe_columns, missing_values, read_table, read_table_with,
 };
 
 // Showing something in the middle of a cell.

@@ -168,6 +168,15 @@ impl fmt::Display for Error {
                     Names(columns)
                 )
             }
+            Error::EmptyRows { labels } => {
+                let (noun, verb) =
+                    if labels.len() == 1 { ("row", "holds") } else { ("rows", "hold") };
+                write!(
+                    f,
+                    "{noun} {} {verb} no value at all; leave out what is empty",
+                    Names(labels)
+                )
+            }
             Error::NoCompleteRow { columns, n_rows } => {
                 write!(f, "none of {n_rows} rows is complete; missing values: ")?;
                 list(f, columns, |f, c| write!(f, "{} in {}", c.count, Name(&c.column)))

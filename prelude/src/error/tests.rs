@@ -47,6 +47,7 @@ fn examples() -> Vec<Error> {
         },
         Error::MissingValues { columns: counts(), n_rows: 9, n_complete: 6 },
         Error::AllMissing { columns: names(&["x", "y"]) },
+        Error::EmptyRows { labels: names(&["a"]) },
         Error::NoCompleteRow { columns: counts(), n_rows: 9 },
         Error::NonFinite {
             column: "x".into(),

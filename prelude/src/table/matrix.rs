@@ -324,7 +324,7 @@ impl fmt::Debug for DataMatrix {
     }
 }
 
-fn check_count(what: &'static str, expected: usize, found: usize) -> Result<()> {
+pub(super) fn check_count(what: &'static str, expected: usize, found: usize) -> Result<()> {
     if expected == found { Ok(()) } else { Err(Error::ShapeMismatch { what, expected, found }) }
 }
 
@@ -347,7 +347,7 @@ pub(super) fn check_names(names: &[String]) -> Result<()> {
     Err(Error::DuplicateColumns { columns })
 }
 
-fn check_labels(labels: &[String], source: &LabelSource) -> Result<()> {
+pub(super) fn check_labels(labels: &[String], source: &LabelSource) -> Result<()> {
     if matches!(source, LabelSource::RowNumbers) {
         return Ok(());
     }

@@ -12,6 +12,7 @@
 mod read;
 
 mod frame;
+mod gapped;
 mod matrix;
 mod named;
 mod notes;
@@ -29,6 +30,7 @@ pub use describe::{
     describe_columns, missing_values,
 };
 pub use frame::FrameToMatrix;
+pub use gapped::GappedMatrix;
 pub use matrix::DataMatrix;
 pub use named::NamedMatrix;
 pub use notes::{DroppedRow, LabelSource, LeftOut, LeftOutReason, MatrixNotes};
