@@ -13,6 +13,11 @@ pub use crate::exhibit::{
     Bundle, Chart, Content, Exhibit, NumberFormat, Reference, Table, TableColumn, biplot,
     loading_plot, score_plot, scree, significant,
 };
+pub use crate::gaps::{
+    Completed, ComponentChoice, ComponentRule, EstimatedCell, GapMethod, GapOptions,
+    ProbabilisticComponents, ProbabilisticOptions, components_for_gaps, estimate_missing,
+    probabilistic_components,
+};
 pub use crate::parallel::{Noise, ParallelAnalysis, ParallelOptions, parallel_analysis};
 pub use crate::random::{Generator, random_generator, random_normal};
 pub use crate::table::{

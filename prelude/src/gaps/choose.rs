@@ -65,9 +65,7 @@ pub(super) fn choose(
     seed: u64,
 ) -> Result<ComponentChoice> {
     let tried = match rule {
-        ComponentRule::CrossValidated { folds } => {
-            cross_validated(x, folds, most, settings, seed)?
-        }
+        ComponentRule::CrossValidated { folds } => cross_validated(x, folds, most, settings, seed)?,
         _ => generalised(x, most, settings, seed)?,
     };
     let n_unconverged = tried.iter().map(|tried| tried.n_unconverged).sum();
@@ -108,9 +106,13 @@ fn cross_validated(
     let scale = working_scale(observed_spread(x).deviation, settings.scaling);
     let n_numbers = most + 1;
     let what = "choosing components by cross-validation";
-    let parts = repeat(what, folds * n_numbers, seed, || (), |(), _, job| {
-        predict(x, &hidden[job % folds], &scale, job / folds, settings)
-    })?;
+    let parts = repeat(
+        what,
+        folds * n_numbers,
+        seed,
+        || (),
+        |(), _, job| predict(x, &hidden[job % folds], &scale, job / folds, settings),
+    )?;
     let of_number = |k: usize| -> Tried {
         let parts = &parts[k * folds..][..folds];
         let n_predicted = parts.iter().flatten().map(|part| part.n_cells).sum();
@@ -199,26 +201,33 @@ fn generalised(
     let (n, p) = x.shape();
     let n_observed = x.iter().filter(|value| !value.is_nan()).count();
     let what = "choosing components by generalised cross-validation";
-    repeat(what, most + 1, seed, || (), |(), _, k| {
-        let mut error = PredictionError { n_components: k, mean_squared: None, standard_error: None };
-        let mut n_unconverged = 0;
-        let fitted = fit_once(x, k, settings, None)
-            .and_then(|fit| Ok((fit.estimates(x)?, fit.status.converged)));
-        match (fitted, free_cells(n_observed, n, p, k)) {
-            (Err(Error::Interrupted), _) => return Err(Error::Interrupted),
-            (Ok((estimates, converged)), Some(free)) => {
-                let mut filled = x.clone();
-                for estimate in estimates {
-                    filled[(estimate.row, estimate.column)] = estimate.value;
+    repeat(
+        what,
+        most + 1,
+        seed,
+        || (),
+        |(), _, k| {
+            let mut error =
+                PredictionError { n_components: k, mean_squared: None, standard_error: None };
+            let mut n_unconverged = 0;
+            let fitted = fit_once(x, k, settings, None)
+                .and_then(|fit| Ok((fit.estimates(x)?, fit.status.converged)));
+            match (fitted, free_cells(n_observed, n, p, k)) {
+                (Err(Error::Interrupted), _) => return Err(Error::Interrupted),
+                (Ok((estimates, converged)), Some(free)) => {
+                    let mut filled = x.clone();
+                    for estimate in estimates {
+                        filled[(estimate.row, estimate.column)] = estimate.value;
+                    }
+                    let roots = roots(&filled, settings.scaling == Scaling::Correlation, k)?;
+                    let squares = residual_of_observed(x, &filled, &roots);
+                    let free = free as f64;
+                    error.mean_squared = Some(n_observed as f64 * squares / (free * free));
+                    n_unconverged = usize::from(!converged);
                 }
-                let roots = roots(&filled, settings.scaling == Scaling::Correlation, k)?;
-                let squares = residual_of_observed(x, &filled, &roots);
-                let free = free as f64;
-                error.mean_squared = Some(n_observed as f64 * squares / (free * free));
-                n_unconverged = usize::from(!converged);
+                _ => {}
             }
-            _ => {}
-        }
-        Ok(Tried { error, n_predicted: n_observed, n_unconverged })
-    })
+            Ok(Tried { error, n_predicted: n_observed, n_unconverged })
+        },
+    )
 }

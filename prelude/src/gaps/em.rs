@@ -32,7 +32,7 @@ use crate::error::{Error, Result};
 use crate::live::interrupted;
 
 /// Noise below this share of the mean variance is taken for none: the likelihood has no bound.
-const LEAST_NOISE: f64 = 1e-12;
+pub(super) const LEAST_NOISE: f64 = 1e-12;
 
 /// W, μ and σ², in the units of the analysis.
 #[derive(Clone)]
@@ -140,8 +140,7 @@ fn extrapolated(from: &Parameters, middle: &Parameters, to: &Parameters) -> Opti
     };
     let (a, b, c) = (values(from), values(middle), values(to));
     let step: Vec<f64> = b.iter().zip(&a).map(|(b, a)| b - a).collect();
-    let bend: Vec<f64> =
-        c.iter().zip(&b).zip(&step).map(|((c, b), step)| (c - b) - step).collect();
+    let bend: Vec<f64> = c.iter().zip(&b).zip(&step).map(|((c, b), step)| (c - b) - step).collect();
     let length = (dot(&step, &step) / dot(&bend, &bend)).sqrt();
     // At a length of one the extrapolation is the second step itself.
     if !(length > 1.0) || !length.is_finite() {

@@ -7,7 +7,7 @@
 use nalgebra::DMatrix;
 use rand_distr::{Distribution, StandardNormal};
 
-use super::em::{Climb, Limits, Parameters, climb, scatter};
+use super::em::{Climb, LEAST_NOISE, Limits, Parameters, climb, scatter};
 use super::iterative::iterate;
 use super::options::{GapMethod, Settings};
 use super::patterns::{Group, Patterns, observed_spread};
@@ -102,12 +102,9 @@ pub(super) fn fit_once(
     settings: &Settings,
     random: Option<&mut Generator>,
 ) -> Result<Fit> {
-    let limits =
-        Limits { n_iterations: settings.iterations, tolerance: settings.tolerance };
+    let limits = Limits { n_iterations: settings.iterations, tolerance: settings.tolerance };
     match settings.method {
-        GapMethod::Probabilistic => {
-            most_likely(x, settings.scaling, n_components, limits, random)
-        }
+        GapMethod::Probabilistic => most_likely(x, settings.scaling, n_components, limits, random),
         GapMethod::Shrunken | GapMethod::LeastSquares => {
             let shrunken = settings.method == GapMethod::Shrunken;
             match random {
@@ -132,6 +129,9 @@ fn most_likely(
     let spread = observed_spread(x);
     let (centre, scale) = (spread.mean, working_scale(spread.deviation, scaling));
     let patterns = Patterns::new(x, &centre, &scale);
+    if patterns.n_observed == x.len() {
+        return closed_form(x, scaling, n_components, centre, scale);
+    }
     let plain = plain_start(x, &centre, &scale, n_components)?;
     let start = match random {
         None => plain,
@@ -139,13 +139,7 @@ fn most_likely(
     };
     let Climb { parameters, log_likelihoods, n_iterations, last_change, converged } =
         climb(&patterns, start, limits)?;
-    // A density in the units of the data is smaller by the product of the scales.
-    let shift: f64 = patterns
-        .groups
-        .iter()
-        .flat_map(|group| group.observed.iter().map(|j| scale[*j].ln() * group.rows.len() as f64))
-        .sum();
-    let shift = if scaling == Scaling::Covariance { shift } else { 0.0 };
+    let shift = log_likelihood_shift(scaling, scale[0], patterns.n_observed);
     Ok(Fit {
         n_components,
         centre,
@@ -170,6 +164,54 @@ pub(super) fn working_scale(deviation: Vec<f64>, scaling: Scaling) -> Vec<f64> {
             vec![unit; deviation.len()]
         }
     }
+}
+
+/// A density in the units of the data is smaller than in those of the fit, which differ from them
+/// under covariance scaling only as far as the analysis is concerned.
+fn log_likelihood_shift(scaling: Scaling, unit: f64, n_observed: usize) -> f64 {
+    match scaling {
+        Scaling::Correlation => 0.0,
+        Scaling::Covariance => n_observed as f64 * unit.ln(),
+    }
+}
+
+/// Maximum likelihood without holes: Tipping and Bishop (1999), equations 7 and 8.
+fn closed_form(
+    x: &DMatrix<f64>,
+    scaling: Scaling,
+    k: usize,
+    centre: Vec<f64>,
+    scale: Vec<f64>,
+) -> Result<Fit> {
+    let (n, p) = x.shape();
+    let scaled = DMatrix::from_fn(n, p, |i, j| (x[(i, j)] - centre[j]) / scale[j]);
+    let roots = roots(&scaled, false, k)?;
+    let left: f64 = roots.variances.iter().skip(k).map(|root| root.max(0.0)).sum();
+    let noise = left / (p - k) as f64;
+    if !(noise > LEAST_NOISE) {
+        return Err(Error::NoNoise { n_components: k });
+    }
+    let mut coefficients = vec![0.0; p * (k + 1)];
+    for (j, row) in coefficients.chunks_exact_mut(k + 1).enumerate() {
+        for s in 0..k {
+            row[s] = roots.axes[(j, s)] * (roots.variances[s] - noise).max(0.0).sqrt();
+        }
+    }
+    let (n, p) = (n as f64, p as f64);
+    let kept: f64 = roots.variances.iter().take(k).map(|root| root.ln()).sum();
+    let log_likelihood =
+        -0.5 * n * (p * (2.0 * std::f64::consts::PI).ln() + kept + (p - k as f64) * noise.ln() + p);
+    let shift = log_likelihood_shift(scaling, scale[0], x.len());
+    Ok(Fit {
+        n_components: k,
+        centre,
+        scale,
+        coefficients,
+        ridge: noise,
+        noise,
+        log_likelihoods: vec![log_likelihood - shift],
+        status: Status { n_iterations: 0, last_change: 0.0, converged: true },
+    })
 }
 
 /// The closed form for the matrix with its holes at the means of their columns.
@@ -226,6 +268,19 @@ impl Fit {
         self.coefficients[j * (self.n_components + 1) + self.n_components]
     }
 
+    /// The unit of the fit, seen from the units of the analysis.
+    pub(super) fn unit(&self, scaling: Scaling) -> f64 {
+        match scaling {
+            Scaling::Correlation => 1.0,
+            Scaling::Covariance => self.scale[0],
+        }
+    }
+
+    /// The noise variance in the units of the analysis.
+    pub(super) fn noise_in_units(&self, scaling: Scaling) -> f64 {
+        self.noise * self.unit(scaling).powi(2)
+    }
+
     pub(super) fn patterns(&self, x: &DMatrix<f64>) -> Patterns {
         Patterns::new(x, &self.centre, &self.scale)
     }
@@ -240,6 +295,7 @@ impl Fit {
             return Err(Error::ScoresUndetermined {
                 n_components: k,
                 row: group.rows[0] + 1,
+                label: (group.rows[0] + 1).to_string(),
                 n_observed: group.observed.len(),
             });
         }

@@ -1,5 +1,5 @@
 //! Iterative components: holes are filled from the components of the filled matrix, again and
-//! again until they stay.
+//! again until they stay (on the way there, see `settle`).
 //!
 //! With the n × p matrix filled, centred and scaled afresh in every round, λ_s its roots (divisor
 //! n) and S components kept, a hole becomes
@@ -26,9 +26,9 @@ use super::em::Limits;
 use super::fit::{Fit, Status};
 use super::patterns::observed_spread;
 use super::roots::{Roots, roots};
+use super::settle::settle;
 use crate::components::Scaling;
 use crate::error::{Error, Result};
-use crate::live::interrupted;
 
 /// A hole: its row and its column.
 type Place = (usize, usize);
@@ -48,34 +48,27 @@ pub(super) fn iterate(
     let unit = scaling == Scaling::Correlation;
     let observed = observed_spread(x);
     let mut filled = x.clone();
-    let mut holes: Vec<Place> = Vec::new();
-    for j in 0..x.ncols() {
-        for i in 0..x.nrows() {
-            if x[(i, j)].is_nan() {
-                holes.push((i, j));
-                filled[(i, j)] = observed.mean[j] + start() * observed.deviation[j];
-            }
+    let columns = 0..x.ncols();
+    let holes: Vec<Place> = columns
+        .flat_map(|j| (0..x.nrows()).map(move |i| (i, j)))
+        .filter(|&place| x[place].is_nan())
+        .collect();
+    // Holes as standard deviations from the means of their columns.
+    let mut fill = |filled: &mut DMatrix<f64>, standard: &[f64]| {
+        for (&(i, j), z) in holes.iter().zip(standard) {
+            filled[(i, j)] = observed.mean[j] + z * observed.deviation[j];
         }
-    }
-    let mut status = Status { n_iterations: 0, last_change: f64::INFINITY, converged: false };
-    if holes.is_empty() {
-        status = Status { n_iterations: 0, last_change: 0.0, converged: true };
-    }
-    while status.n_iterations < limits.n_iterations && !status.converged {
-        if interrupted() {
-            return Err(Error::Interrupted);
-        }
+    };
+    let first: Vec<f64> = holes.iter().map(|_| start()).collect();
+    let (settled, status) = settle(first, limits, |standard| {
+        fill(&mut filled, standard);
         let round = Round::of(&filled, unit, n_components, shrunken)?;
-        let new = round.values_at(&filled, &holes);
-        status.last_change = 0.0;
-        for (&(i, j), new) in holes.iter().zip(&new) {
-            let change = (new - filled[(i, j)]).abs() / observed.deviation[j];
-            status.last_change = status.last_change.max(change);
-            filled[(i, j)] = *new;
-        }
-        status.n_iterations += 1;
-        status.converged = status.last_change <= limits.tolerance;
-    }
+        let values = round.values_at(&filled, &holes);
+        let standard =
+            |(&(_, j), value): (&Place, &f64)| (value - observed.mean[j]) / observed.deviation[j];
+        Ok(holes.iter().zip(&values).map(standard).collect())
+    })?;
+    fill(&mut filled, &settled);
     let round = Round::of(&filled, unit, n_components, shrunken)?;
     round.into_fit(x, &filled, status)
 }

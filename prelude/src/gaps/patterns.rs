@@ -80,7 +80,7 @@ pub(super) fn observed_spread(x: &DMatrix<f64>) -> Spread {
 }
 
 /// Whether a column shows at least two different values, those apart by rounding being equal.
-pub(super) fn varies(column: impl Iterator<Item = f64> + Clone) -> bool {
+pub(super) fn varies(column: impl Iterator<Item = f64>) -> bool {
     let seen = column.filter(|value| !value.is_nan());
     let (least, most) = seen.fold((f64::INFINITY, f64::NEG_INFINITY), |(least, most), value| {
         (f64::min(least, value), f64::max(most, value))

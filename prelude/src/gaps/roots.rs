@@ -11,7 +11,7 @@ use crate::live::interrupted;
 /// Centre and scale of the columns, and their components. The divisor of variances is n.
 pub(super) struct Roots {
     pub(super) mean: DVector<f64>,
-    /// Standard deviations, or ones.
+    /// Standard deviations (divisor n − 1, as everywhere), or ones.
     pub(super) scale: DVector<f64>,
     /// Descending; min(n, p) of them, the last being zero to within rounding where n ≤ p.
     pub(super) variances: DVector<f64>,
@@ -26,8 +26,8 @@ pub(super) fn roots(x: &DMatrix<f64>, unit: bool, n_components: usize) -> Result
     if p <= n {
         let CrossProduct { mean, mut lower } = cross::of_columns(x, None);
         stop()?;
+        let scale = scale(unit, &lower.diagonal(), n);
         lower /= n as f64;
-        let scale = scale(unit, &lower.diagonal());
         for (j, mut column) in lower.column_iter_mut().enumerate() {
             for i in j..p {
                 column[i] /= scale[i] * scale[j];
@@ -39,9 +39,8 @@ pub(super) fn roots(x: &DMatrix<f64>, unit: bool, n_components: usize) -> Result
     }
     let (moments, mut lower) = cross::of_rows(x, unit, None);
     stop()?;
-    let scale = scale(unit, &(moments.sum_squares / n as f64));
-    // The product of rows scales columns with the divisor n − 1, here n stands throughout.
-    lower /= if unit { (n - 1) as f64 } else { n as f64 };
+    let scale = scale(unit, &moments.sum_squares, n);
+    lower /= n as f64;
     let spectrum = spectrum::symmetric(lower)?;
     let mut weights = spectrum.vectors.columns(0, n_components).into_owned();
     for (mut column, variance) in weights.column_iter_mut().zip(spectrum.roots.iter()) {
@@ -53,8 +52,9 @@ pub(super) fn roots(x: &DMatrix<f64>, unit: bool, n_components: usize) -> Result
     Ok(Roots { mean: moments.mean, scale, variances: spectrum.roots, axes })
 }
 
-fn scale(unit: bool, variances: &DVector<f64>) -> DVector<f64> {
-    if unit { variances.map(f64::sqrt) } else { DVector::repeat(variances.len(), 1.0) }
+fn scale(unit: bool, sum_squares: &DVector<f64>, n: usize) -> DVector<f64> {
+    let deviation = |squares: f64| (squares / (n - 1) as f64).sqrt();
+    if unit { sum_squares.map(deviation) } else { DVector::repeat(sum_squares.len(), 1.0) }
 }
 
 fn stop() -> Result<()> {

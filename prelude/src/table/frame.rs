@@ -93,7 +93,12 @@ impl FrameToMatrix for DataFrame {
         let dropped_rows = rows.dropped(&columns, &labels.text);
         let names = columns.iter().map(|column| column.name().to_string()).collect();
         let kept_labels = rows.kept.iter().map(|&row| labels.text[row].clone()).collect();
-        let notes = MatrixNotes { left_out, dropped_rows, n_table_rows: self.height() };
+        let notes = MatrixNotes {
+            left_out,
+            dropped_rows,
+            n_table_rows: self.height(),
+            estimated: Vec::new(),
+        };
         DataMatrix::checked(values, names, kept_labels, labels.source, Some(notes))
     }
 }

@@ -2,6 +2,8 @@
 
 use std::fmt;
 
+use crate::error::ColumnCount;
+
 /// Where the labels of a matrix's rows come from.
 #[derive(Debug, Clone, PartialEq, Eq)]
 #[non_exhaustive]
@@ -58,6 +60,8 @@ pub struct MatrixNotes {
     pub dropped_rows: Vec<DroppedRow>,
     /// Rows in the table.
     pub n_table_rows: usize,
+    /// Columns in which missing values were replaced by estimates, and how many in each.
+    pub estimated: Vec<ColumnCount>,
 }
 
 impl fmt::Display for LabelSource {
