@@ -9,6 +9,7 @@ pub mod parallel;
 pub mod prelude;
 pub mod random;
 pub mod table;
+pub mod transform;
 
 mod distributions;
 mod quantile;

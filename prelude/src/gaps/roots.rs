@@ -3,7 +3,7 @@
 use nalgebra::{DMatrix, DVector};
 
 use crate::components::cross::{self, CrossProduct};
-use crate::components::scores::combine_rows;
+use crate::components::scores::Standardised;
 use crate::components::spectrum;
 use crate::error::{Error, Result};
 use crate::live::interrupted;
@@ -48,7 +48,9 @@ pub(super) fn roots(x: &DMatrix<f64>, unit: bool, n_components: usize) -> Result
         let length = (variance * n as f64).sqrt();
         column *= if length > 0.0 { 1.0 / length } else { 0.0 };
     }
-    let axes = combine_rows(x, &moments.mean, &scale, &weights);
+    let standardised = Standardised { x, mean: &moments.mean, scale: &scale, weights: None };
+    let axes = standardised.transposed_times(&weights);
+    stop()?;
     Ok(Roots { mean: moments.mean, scale, variances: spectrum.roots, axes })
 }
 

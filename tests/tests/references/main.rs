@@ -5,5 +5,7 @@ mod components;
 mod gaps;
 mod parallel;
 mod tables;
+mod transform;
+mod weights_and_meaning;
 
 mod files;
