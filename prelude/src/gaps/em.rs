@@ -143,7 +143,7 @@ fn extrapolated(from: &Parameters, middle: &Parameters, to: &Parameters) -> Opti
     let bend: Vec<f64> = c.iter().zip(&b).zip(&step).map(|((c, b), step)| (c - b) - step).collect();
     let length = (dot(&step, &step) / dot(&bend, &bend)).sqrt();
     // At a length of one the extrapolation is the second step itself.
-    if !(length > 1.0) || !length.is_finite() {
+    if !length.is_finite() || length <= 1.0 {
         return None;
     }
     let mut reached: Vec<f64> = a
@@ -366,7 +366,7 @@ impl Sums {
             add(coefficients, change, 1.0);
         }
         next.noise = squares / patterns.n_observed as f64;
-        if !(next.noise > LEAST_NOISE) {
+        if next.noise.is_nan() || next.noise <= LEAST_NOISE {
             return Err(no_noise(k));
         }
         self.standardise(patterns.n_rows as f64, &mut next)?;

@@ -188,13 +188,13 @@ fn closed_form(
     let roots = roots(&scaled, false, k)?;
     let left: f64 = roots.variances.iter().skip(k).map(|root| root.max(0.0)).sum();
     let noise = left / (p - k) as f64;
-    if !(noise > LEAST_NOISE) {
+    if noise.is_nan() || noise <= LEAST_NOISE {
         return Err(Error::NoNoise { n_components: k });
     }
     let mut coefficients = vec![0.0; p * (k + 1)];
     for (j, row) in coefficients.chunks_exact_mut(k + 1).enumerate() {
-        for s in 0..k {
-            row[s] = roots.axes[(j, s)] * (roots.variances[s] - noise).max(0.0).sqrt();
+        for (s, loading) in row[..k].iter_mut().enumerate() {
+            *loading = roots.axes[(j, s)] * (roots.variances[s] - noise).max(0.0).sqrt();
         }
     }
     let (n, p) = (n as f64, p as f64);

@@ -22,7 +22,7 @@
 
 use nalgebra::DMatrix;
 
-use super::em::Limits;
+use super::em::{LEAST_NOISE, Limits};
 use super::fit::{Fit, Status};
 use super::patterns::observed_spread;
 use super::roots::{Roots, roots};
@@ -54,7 +54,7 @@ pub(super) fn iterate(
         .filter(|&place| x[place].is_nan())
         .collect();
     // Holes as standard deviations from the means of their columns.
-    let mut fill = |filled: &mut DMatrix<f64>, standard: &[f64]| {
+    let fill = |filled: &mut DMatrix<f64>, standard: &[f64]| {
         for (&(i, j), z) in holes.iter().zip(standard) {
             filled[(i, j)] = observed.mean[j] + z * observed.deviation[j];
         }
@@ -70,6 +70,10 @@ pub(super) fn iterate(
     })?;
     fill(&mut filled, &settled);
     let round = Round::of(&filled, unit, n_components, shrunken)?;
+    let mean_variance = round.roots.variances.sum() / x.ncols() as f64;
+    if shrunken && round.noise <= LEAST_NOISE * mean_variance {
+        return Err(Error::NoNoise { n_components });
+    }
     round.into_fit(x, &filled, status)
 }
 
@@ -129,8 +133,8 @@ impl Round {
         let Roots { mean, scale, variances, axes } = self.roots;
         let mut coefficients = vec![0.0; x.ncols() * (k + 1)];
         for (j, row) in coefficients.chunks_exact_mut(k + 1).enumerate() {
-            for s in 0..k {
-                row[s] = axes[(j, s)] * (variances[s] - self.noise).max(0.0).sqrt();
+            for (s, loading) in row[..k].iter_mut().enumerate() {
+                *loading = axes[(j, s)] * (variances[s] - self.noise).max(0.0).sqrt();
             }
         }
         Ok(Fit {

@@ -14,7 +14,7 @@ pub(super) fn factor(matrix: &mut [f64], order: usize) -> bool {
             let rest = diagonal - dot;
             if i == j {
                 // What is left of a diagonal after cancelling all of its digits is no number.
-                if !(rest > diagonal.abs() * 1e-14) {
+                if rest.is_nan() || rest <= diagonal.abs() * 1e-14 {
                     return false;
                 }
                 matrix[i * order + i] = rest.sqrt();
