@@ -24,41 +24,9 @@ use faer::{Accum, MatMut, MatRef, Par};
 use nalgebra::{DMatrix, DVector};
 use rayon::prelude::*;
 
+use super::row_weights::RowWeights;
 use super::views::{PIECES, WORTH_CUTTING, view, view_mut};
 use crate::live::interrupted;
-use crate::table::DataMatrix;
-
-/// How much each row counts, for sums over rows.
-///
-/// Products take each row times the root of its weight, so that a product of two rows carries the
-/// weight itself; means are weighted ones.
-#[derive(Clone)]
-pub(crate) struct RowWeights {
-    // One per row, positive, of sum n.
-    weights: Vec<f64>,
-    roots: Vec<f64>,
-}
-
-impl RowWeights {
-    /// Those of a matrix that make a difference.
-    pub(crate) fn of(x: &DataMatrix) -> Option<Self> {
-        let weights = x.relative_weights()?;
-        let roots = weights.iter().map(|weight| weight.sqrt()).collect();
-        Some(RowWeights { weights, roots })
-    }
-
-    /// The weights, of sum n.
-    pub(crate) fn weights(&self) -> &[f64] {
-        &self.weights
-    }
-
-    /// Multiplies each row by the root of its weight.
-    pub(crate) fn weigh_rows(&self, matrix: &mut DMatrix<f64>) {
-        for mut column in matrix.column_iter_mut() {
-            column.iter_mut().zip(&self.roots).for_each(|(value, root)| *value *= root);
-        }
-    }
-}
 
 /// Column means and the cross-product of deviations from them.
 pub(crate) struct CrossProduct {
@@ -156,7 +124,7 @@ pub(crate) fn of_columns(x: &DMatrix<f64>, weights: Option<&RowWeights>) -> Cros
     let mut lower = add_in_order(sums);
     let weight = |place: usize| {
         let (first, n_rows) = (place * block, block.min(n - place * block));
-        weights.map_or(n_rows as f64, |weights| sum(&weights.weights[first..first + n_rows]))
+        weights.map_or(n_rows as f64, |weights| sum(&weights.weights()[first..first + n_rows]))
     };
     let mean = gather(&mut lower, rounded, left, weight);
     CrossProduct { mean, lower }
@@ -205,7 +173,7 @@ pub(crate) fn of_rows(
                     match weights {
                         None => scaled.iter_mut().for_each(|deviation| *deviation -= centre.left),
                         Some(weights) => {
-                            for (deviation, root) in scaled.iter_mut().zip(&weights.roots) {
+                            for (deviation, root) in scaled.iter_mut().zip(weights.roots()) {
                                 *deviation -= centre.left * root;
                             }
                         }
@@ -227,9 +195,9 @@ pub(crate) fn of_rows(
 }
 
 /// A mean in two parts: what a double can hold, and what is left of it.
-struct Centre {
-    rounded: f64,
-    left: f64,
+pub(super) struct Centre {
+    pub(super) rounded: f64,
+    pub(super) left: f64,
 }
 
 /// Writes the deviations of a column from its rounded mean and returns the mean.
@@ -255,31 +223,10 @@ fn centre_into(column: &[f64], centred: &mut [f64]) -> Centre {
     Centre { rounded, left: left / n }
 }
 
-impl RowWeights {
-    /// As [`centre_into`] for rows from `first` on, with deviations times the roots of the weights.
-    fn centre_into(&self, column: &[f64], centred: &mut [f64], first: usize) -> Centre {
-        let rows = first..first + column.len();
-        let (weights, roots) = (&self.weights[rows.clone()], &self.roots[rows]);
-        for ((product, value), weight) in centred.iter_mut().zip(column).zip(weights) {
-            *product = value * weight;
-        }
-        let total = sum(weights);
-        let rounded = sum(centred) / total;
-        for ((product, value), weight) in centred.iter_mut().zip(column).zip(weights) {
-            *product = (value - rounded) * weight;
-        }
-        let left = sum(centred) / total;
-        for ((deviation, value), root) in centred.iter_mut().zip(column).zip(roots) {
-            *deviation = (value - rounded) * root;
-        }
-        Centre { rounded, left }
-    }
-}
-
 /// Running sums kept side by side, so that they vectorise and lose fewer digits than one.
 const LANES: usize = 16;
 
-fn sum(values: &[f64]) -> f64 {
+pub(super) fn sum(values: &[f64]) -> f64 {
     let mut lanes = [0.0; LANES];
     let (chunks, rest) = values.as_chunks::<LANES>();
     for chunk in chunks {

@@ -42,8 +42,8 @@ impl PrincipalComponents {
         self.scores.get_or_init(|| self.scores_of(&self.data))
     }
 
-    /// The rows as the first `n_components` components alone describe them, in the original
-    /// units, with what that leaves unexplained.
+    /// The rows as the first `n_components` components alone describe them, in the units that were
+    /// analysed, with what that leaves unexplained.
     ///
     /// ```text
     /// x̂_ij = x̄_j + s_j Σ_{k ≤ K} z_ik v_jk
@@ -67,15 +67,7 @@ impl PrincipalComponents {
             }
         }
         let proportion = self.variances.rows(0, n_components).sum() / self.total_variance;
-        let values = DataMatrix::from_values(
-            values,
-            self.variables().iter().cloned(),
-            self.labels().iter().cloned(),
-        )?;
-        let values = match self.data.weights() {
-            Some(weights) => values.with_weights(weights.iter().copied())?,
-            None => values,
-        };
+        let values = self.data.with_values(values)?;
         let residual_sum_of_squares = match self.row_weights() {
             Some(weights) => row_residuals.iter().zip(weights).map(|(r, w)| r * w).sum(),
             None => row_residuals.sum(),

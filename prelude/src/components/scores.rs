@@ -5,7 +5,7 @@ use faer::{Accum, MatRef, Par};
 use nalgebra::{DMatrix, DVector};
 use rayon::prelude::*;
 
-use super::cross::RowWeights;
+use super::row_weights::RowWeights;
 use super::views::{PIECES, view, view_mut};
 use crate::live::interrupted;
 

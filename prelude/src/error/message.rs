@@ -247,7 +247,7 @@ impl fmt::Display for Error {
                     f,
                     "; bring rows as they were measured, and repeat the transformations with "
                 )?;
-                write!(f, "`.transformed_as(…)`")
+                write!(f, "`.transformed_as(…)`, or for scores with `.project_raw(…)`")
             }
             Error::SavedForm { part, found, accepted } => {
                 write!(f, "cannot read back what was saved: {} is ", Plain(part))?;
