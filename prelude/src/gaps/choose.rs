@@ -26,6 +26,10 @@ use crate::quantile::deviation;
 use crate::random::replicate_generator;
 use crate::repeat::repeat;
 
+/// Predictions that are off by this share of a standard deviation rank numbers of components as
+/// well as better ones, and fits of too many components, which are slow to settle, end early.
+const TOLERANCE: f64 = 1e-4;
+
 /// How many numbers a fit of k components by least squares chooses: means, scores and axes.
 pub(super) fn fitted_numbers(n_rows: usize, n_cols: usize, k: usize) -> usize {
     n_cols + k * (n_rows + n_cols - k - 1)
@@ -64,6 +68,7 @@ pub(super) fn choose(
     settings: &Settings,
     seed: u64,
 ) -> Result<ComponentChoice> {
+    let settings = &Settings { tolerance: settings.tolerance.max(TOLERANCE), ..*settings };
     let tried = match rule {
         ComponentRule::CrossValidated { folds } => cross_validated(x, folds, most, settings, seed)?,
         _ => generalised(x, most, settings, seed)?,

@@ -153,7 +153,8 @@ impl GapOptions {
 
     /// The largest change at which a fit ends, above 0 and at most 0.01: of a loading or mean in
     /// standard deviations and of the logarithm of the noise (probabilistic), or of an estimated
-    /// cell in standard deviations of its column (iterative).
+    /// cell in standard deviations of its column (iterative). Fits that only serve to choose the
+    /// number of components end at 1e-4 where this is smaller.
     pub fn tolerance(mut self, tolerance: f64) -> Self {
         self.settings.tolerance = tolerance;
         self
