@@ -24,9 +24,9 @@ pub use crate::gaps::{
 pub use crate::parallel::{Noise, ParallelAnalysis, ParallelOptions, parallel_analysis};
 pub use crate::random::{Generator, random_generator, random_normal};
 pub use crate::table::{
-    ColumnDescription, ColumnDescriptions, DataMatrix, FrameToMatrix, GappedMatrix, Label,
-    MatrixOptions, Missing, MissingPattern, MissingValues, NamedMatrix, TableOptions,
-    describe_columns, missing_values, read_table, read_table_with,
+    ColumnCheck, ColumnDescription, ColumnDescriptions, DataMatrix, FrameToMatrix, GappedMatrix,
+    Label, MatrixOptions, Missing, MissingPattern, MissingValues, NamedMatrix, NumberType,
+    TableOptions, describe_columns, missing_values, read_table, read_table_with,
 };
 pub use crate::transform::{Transform, Transformation};
 
