@@ -3,6 +3,7 @@
 pub mod components;
 pub mod error;
 pub mod exhibit;
+pub mod gaps;
 pub mod live;
 pub mod parallel;
 pub mod prelude;
