@@ -4,6 +4,7 @@ pub mod adequacy;
 pub mod components;
 pub mod error;
 pub mod exhibit;
+pub mod gaps;
 pub mod live;
 pub mod parallel;
 pub mod prelude;

@@ -17,6 +17,11 @@ pub use crate::exhibit::{
     correlation_map, loading_plot, pairs, profiles, score_matrix, score_plot, scree, significant,
     structure_circle, turntable, variance_shares,
 };
+pub use crate::gaps::{
+    Completed, ComponentChoice, ComponentRule, EstimatedCell, GapMethod, GapOptions,
+    ProbabilisticComponents, ProbabilisticOptions, components_for_gaps, estimate_missing,
+    probabilistic_components,
+};
 pub use crate::parallel::{Noise, ParallelAnalysis, ParallelOptions, parallel_analysis};
 pub use crate::random::{Generator, random_generator, random_normal};
 pub use crate::stability::{

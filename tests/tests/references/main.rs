@@ -2,6 +2,7 @@
 //! family. `tests/references/README.md` says how the values were made.
 
 mod components;
+mod gaps;
 mod parallel;
 mod stability;
 mod tables;
