@@ -65,14 +65,14 @@ fn failure(output: &Value) -> String {
 fn exhibit(forms: &Map<String, Value>) -> String {
     let text = |mime: &str| forms.get(mime).map(joined).filter(|text| text.len() <= MOST_MARKUP);
     let words = text("text/plain").unwrap_or_default();
-    if let Some(html) = text("text/html") {
-        let html = clean(&html, Source::Exhibit);
-        return format!("<div class=\"exhibit\" tabindex=\"0\">{html}</div>\n");
-    }
     if let Some(svg) = text("image/svg+xml") {
         // As a picture it can neither run nor load anything, and keeps its own styles to itself.
         let address = format!("data:image/svg+xml;base64,{}", STANDARD.encode(&svg));
         return picture(&address, &title(&svg).unwrap_or_else(|| first_line(&words)), &words);
+    }
+    if let Some(html) = text("text/html") {
+        let html = clean(&html, Source::Exhibit);
+        return format!("<div class=\"exhibit\" tabindex=\"0\">{html}</div>\n");
     }
     for mime in ["image/png", "image/jpeg", "image/gif", "image/webp"] {
         if let Some(data) = text(mime) {

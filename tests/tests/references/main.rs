@@ -2,8 +2,11 @@
 //! family. `tests/references/README.md` says how the values were made.
 
 mod components;
+mod gaps;
 mod parallel;
+mod stability;
 mod tables;
+mod transform;
 mod weights_and_meaning;
 
 mod files;

@@ -9,7 +9,7 @@ use super::{Cell, Look, ShownRow, Table, TableColumn};
 const MOST_ROWS: usize = 10_000;
 
 /// One table.
-pub(super) fn table(table: &Table) -> Value {
+fn table(table: &Table) -> Value {
     let n_rows = table.n_rows();
     let rows: Vec<usize> = match n_rows <= MOST_ROWS {
         true => (0..n_rows).collect(),
@@ -31,8 +31,11 @@ pub(super) fn table(table: &Table) -> Value {
     })
 }
 
-/// Several tables, one under the other.
+/// One table, or several that stand one under the other.
 pub(super) fn tables(tables: &[&Table]) -> Value {
+    if let [one] = tables {
+        return table(one);
+    }
     let tables: Vec<Value> = tables.iter().map(|found| table(found)).collect();
     json!({"kind": "tables", "tables": tables})
 }

@@ -149,3 +149,24 @@ fn tables_without_rows_or_columns_are_drawn() {
     assert!(table.html().contains("<td></td>"));
     assert_eq!(table.plain().lines().count(), 4);
 }
+
+#[test]
+fn the_numbers_behind_a_table_are_handed_on_unrounded() {
+    let table = Table::new("c <x>")
+        .column(TableColumn::texts("kiln", ["north", "mill"]).as_row_heads())
+        .column(TableColumn::numbers("mean", [1.0 / 3.0, f64::NAN], NumberFormat::Decimals(1)))
+        .note("n");
+    let found = table.exhibit();
+    let numbers = found.entries().iter().find_map(|(mime, content)| match content {
+        Content::Json(json) if mime == NUMBERS => Some(json.clone()),
+        _ => None,
+    });
+    let expected = serde_json::json!({
+        "kind": "table", "caption": "c <x>", "notes": ["n"],
+        "columns": [
+            {"heading": "kiln", "detail": "", "values": ["north", "mill"]},
+            {"heading": "mean", "detail": "", "values": [1.0 / 3.0, "NaN"]},
+        ],
+    });
+    assert_eq!(numbers, Some(expected));
+}
