@@ -290,6 +290,15 @@ impl Client {
         self.collect(&id, LONG).await
     }
 
+    /// Runs a cell as an editor sends it, with the identifier of the cell and those of cells that were
+    /// deleted since.
+    pub async fn execute_as(&mut self, cell: &str, deleted: &[&str], code: &str) -> Execution {
+        let metadata = serde_json::json!({"cellId": cell, "deletedCells": deleted});
+        let message = JupyterMessage::new(ExecuteRequest::new(code.to_owned()), None);
+        let id = self.send_message(message.with_metadata(metadata)).await;
+        self.collect(&id, LONG).await
+    }
+
     /// Runs a cell to its end and fails the test if it does not go well.
     pub async fn execute_well(&mut self, code: &str) -> Execution {
         let cell = self.execute(code).await;

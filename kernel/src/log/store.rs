@@ -35,11 +35,21 @@ impl Default for Limits {
     }
 }
 
-/// The folder of logs of this user.
+/// The variable by which a person puts logs elsewhere, or keeps none.
+const ELSEWHERE: &str = "SEMIAXIS_LOG";
+
+/// The folder of logs of this user: `log` beside the kits, unless `SEMIAXIS_LOG` names another.
 ///
 /// # Errors
-/// The environment names no folder for data.
+/// The environment names no folder for data, or `SEMIAXIS_LOG` is `off`.
 pub fn folder() -> io::Result<PathBuf> {
+    match std::env::var_os(ELSEWHERE) {
+        Some(given) if given == "off" => {
+            return Err(io::Error::other("SEMIAXIS_LOG is off"));
+        }
+        Some(given) if !given.is_empty() => return std::path::absolute(given),
+        _ => {}
+    }
     let home = KitHome::find().map_err(|error| io::Error::other(error.to_string()))?;
     Ok(home.kits.with_file_name("log"))
 }
