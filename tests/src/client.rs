@@ -137,6 +137,8 @@ impl Client {
         std::fs::write(&connection_file, text).expect("the connection file can be written");
 
         let mut command = Command::new(kernel_executable());
+        // Sessions of tests are no sessions of the person who runs them.
+        command.env("SEMIAXIS_LOG", dir.path().join("log"));
         command.arg("kernel").arg(&connection_file).envs(&start.environment);
         command.stdin(Stdio::null()).kill_on_drop(true);
         // What cargo adds to the environment of tests, users do not have.

@@ -168,7 +168,7 @@ fn build(manifest: &Manifest, out: &mut String) {
     }
     out.push_str("</dl>\n");
     out.push_str(&format!(
-        "<details><summary>{} crates</summary><ul class=\"crates\">\n",
+        "<details class=\"always\"><summary>{} crates</summary><ul class=\"crates\">\n",
         build.crates.len()
     ));
     for (name, version) in &build.crates {

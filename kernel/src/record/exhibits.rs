@@ -6,6 +6,7 @@ use serde_json::{Map, Value};
 
 use super::evidence::joined;
 use super::markup::{escaped, head, size};
+use super::narrative::{mathematics, shown_markdown};
 use super::sanitise::{Source, clean, preformatted};
 use crate::notebook::screen::without_colours;
 
@@ -70,7 +71,7 @@ fn exhibit(forms: &Map<String, Value>) -> String {
         let address = format!("data:image/svg+xml;base64,{}", STANDARD.encode(&svg));
         return picture(&address, &title(&svg).unwrap_or_else(|| first_line(&words)), &words);
     }
-    if let Some(html) = text("text/html") {
+    if let Some(html) = text("text/html").filter(|html| !needs_scripts(html)) {
         let html = clean(&html, Source::Exhibit);
         return format!("<div class=\"exhibit\" tabindex=\"0\">{html}</div>\n");
     }
@@ -81,6 +82,16 @@ fn exhibit(forms: &Map<String, Value>) -> String {
             return picture(&format!("data:{mime};base64,{data}"), &first_line(&words), &words);
         }
     }
+    if let Some(markdown) = text("text/markdown").filter(|_| words.trim().is_empty()) {
+        return format!(
+            "<div class=\"exhibit\" tabindex=\"0\">{}</div>\n",
+            shown_markdown(&markdown)
+        );
+    }
+    if let Some(tex) = text("text/latex").filter(|_| words.trim().is_empty()) {
+        let tex = tex.trim().trim_matches('$');
+        return format!("<div class=\"exhibit\" tabindex=\"0\">{}</div>\n", mathematics(tex, true));
+    }
     if let Some(found) = forms.get("text/plain") {
         return format!(
             "<div class=\"said result\">{}</div>\n",
@@ -89,6 +100,11 @@ fn exhibit(forms: &Map<String, Value>) -> String {
     }
     let kinds: Vec<String> = forms.keys().map(|mime| escaped(mime)).collect();
     format!("<p class=\"cut\">An exhibit that a page cannot show: {}.</p>\n", kinds.join(", "))
+}
+
+/// Whether HTML is a program rather than a text; on a page that runs none its words say more.
+fn needs_scripts(html: &str) -> bool {
+    html.to_ascii_lowercase().contains("<script")
 }
 
 fn picture(address: &str, title: &str, words: &str) -> String {
@@ -128,9 +144,8 @@ mod tests {
     #[test]
     fn the_richest_form_that_a_page_can_hold_is_shown() {
         let show = |data: Value| html(&[json!({"output_type": "display_data", "data": data})]);
-        let shown =
-            show(json!({"text/html": ["<b>x</b>", "<script>y</script>"], "text/plain": "x"}));
-        assert_eq!(shown, "<div class=\"exhibit\" tabindex=\"0\"><b>x</b></div>\n");
+        let shown = show(json!({"text/html": ["<b>x</b>", "<i></i>"], "text/plain": "x"}));
+        assert_eq!(shown, "<div class=\"exhibit\" tabindex=\"0\"><b>x</b><i></i></div>\n");
         let svg = "<svg><title>Tiles &amp; \"kilns\"</title><script>x()</script></svg>";
         let shown =
             show(json!({"image/svg+xml": svg, "image/png": "AAAA", "text/plain": "a <chart>"}));
@@ -143,6 +158,17 @@ mod tests {
             "{shown}"
         );
         assert!(show(json!({"application/x": 1})).contains("cannot show: application/x"));
+    }
+
+    #[test]
+    fn what_needs_scripts_is_shown_in_words_and_other_texts_are_read() {
+        let show = |data: Value| html(&[json!({"output_type": "display_data", "data": data})]);
+        let turning = show(
+            json!({"text/html": "<canvas></canvas><script>x()</script>", "text/plain": "a cloud"}),
+        );
+        assert!(turning.contains("<pre tabindex=\"0\">a cloud</pre>"), "{turning}");
+        assert!(show(json!({"text/markdown": "# a *b*"})).contains("<div>a <em>b</em></div>"));
+        assert!(show(json!({"text/latex": "$\\frac{1}{2}$"})).contains("<mfrac>"));
     }
 
     #[test]

@@ -226,8 +226,15 @@ fn plain(events: &[Event<'_>]) -> String {
     text
 }
 
+/// Markdown that an exhibit gives as its form.
+pub fn shown_markdown(markdown: &str) -> String {
+    let mut html = String::new();
+    pulldown_cmark::html::push_html(&mut html, Parser::new_ext(markdown, options()));
+    clean(&html, Source::Exhibit)
+}
+
 /// TeX as MathML; as itself where it is no mathematics that can be read.
-fn mathematics(tex: &str, display: bool) -> String {
+pub fn mathematics(tex: &str, display: bool) -> String {
     use pulldown_latex::config::{DisplayMode, RenderConfig};
     use pulldown_latex::{Parser, Storage, push_mathml};
     let as_it_is = || format!("<code>{}</code>", escaped(tex));
