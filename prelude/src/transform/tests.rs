@@ -287,6 +287,8 @@ fn columns_that_do_not_spread_are_named() {
         other => panic!("{other:?}"),
     }
     assert!(x.transformed(Transform::centre()).is_ok());
+    let wide = tiles(dmatrix![-1e308; 1.5e308]);
+    assert!(matches!(wide.transformed(Transform::unit_range()), Err(Error::NoSpread { .. })));
     let one = tiles(dmatrix![1.0]);
     assert!(matches!(one.transformed(Transform::standardise()), Err(Error::NoSpread { .. })));
     let two = tiles(dmatrix![1.0; 2.0]);
