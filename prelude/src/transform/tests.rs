@@ -209,6 +209,8 @@ fn an_exponent_at_a_bound_says_so() {
     let estimate = exponent.estimate.unwrap();
     assert_eq!((exponent.value, estimate.at_bound), (5.0, true));
     assert_eq!((estimate.lower, estimate.upper), (None, None));
+    let close = DataMatrix::from_unnamed(dmatrix![1e300; 1e300_f64.next_up(); 1e300]).unwrap();
+    assert!(matches!(close.transformed(Transform::box_cox()), Err(Error::NoConvergence { .. })));
     // Values that span hundreds of powers of ten: the search keeps powers finite.
     let x = DataMatrix::from_unnamed(dmatrix![1e-200; 1e-3; 1.0; 1e5; 1e200]).unwrap();
     let value = exponent_of(&Transform::box_cox().fit(&x).unwrap()).value;
