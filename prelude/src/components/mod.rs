@@ -31,12 +31,12 @@ mod fit;
 mod randomised;
 
 mod columns;
-mod cross;
+pub(crate) mod cross;
 mod exhibit;
 mod meaning;
 mod row_weights;
 mod saved;
-mod scores;
+pub(crate) mod scores;
 pub(crate) mod spectrum;
 mod supplementary;
 mod ties;

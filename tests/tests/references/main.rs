@@ -2,7 +2,9 @@
 //! family. `tests/references/README.md` says how the values were made.
 
 mod components;
+mod gaps;
 mod parallel;
+mod stability;
 mod tables;
 mod transform;
 mod weights_and_meaning;
