@@ -1,5 +1,6 @@
 //! What a Semiaxis cell finds preloaded: tables, matrices, multivariate statistics and exhibits.
 
+pub mod comparison;
 pub mod components;
 pub mod error;
 pub mod exhibit;
@@ -7,6 +8,7 @@ pub mod live;
 pub mod parallel;
 pub mod prelude;
 pub mod random;
+pub mod rotation;
 pub mod table;
 
 mod distributions;
