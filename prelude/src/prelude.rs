@@ -5,6 +5,11 @@
 //! `use polars::prelude::*;` in a cell.
 
 // From tables to statistics.
+pub use crate::comparison::{
+    Congruence, PrincipalAngles, Procrustes, ProcrustesOptions, ProcrustesTest,
+    ProcrustesTestOptions, Similarity, congruence, principal_angles, procrustes, procrustes_test,
+    procrustes_with,
+};
 pub use crate::components::{
     ComponentOptions, Decomposition, FittedComponents, PrincipalComponents, RandomisedOptions,
     Reconstruction, Route, Scaling, principal_components, principal_components_with,
@@ -17,6 +22,9 @@ pub use crate::exhibit::{
 };
 pub use crate::parallel::{Noise, ParallelAnalysis, ParallelOptions, parallel_analysis};
 pub use crate::random::{Generator, random_generator, random_normal};
+pub use crate::rotation::{
+    Rotated, RotatedComponents, Rotation, RotationOptions, rotate, rotate_with,
+};
 pub use crate::table::{
     ColumnDescription, ColumnDescriptions, DataMatrix, FrameToMatrix, GappedMatrix, Label,
     MatrixOptions, Missing, MissingPattern, MissingValues, NamedMatrix, TableOptions,

@@ -267,8 +267,14 @@ impl Search {
                 }
             },
         )?;
-        let arrivals: Vec<Arrival> = arrivals.into_iter().flatten().collect();
+        let mut arrivals: Vec<Arrival> = arrivals.into_iter().flatten().collect();
         let n_collapsed = n_starts - arrivals.len();
+        // One that is still on its way may have a better criterion only because it is falling
+        // without end, as oblimin can with γ above zero.
+        let has_arrived = |arrival: &Arrival| arrival.gradient <= self.limits.tolerance;
+        if arrivals.iter().any(has_arrived) {
+            arrivals.retain(has_arrived);
+        }
         let lower_is_better = matches!(self.rotation, Rotation::Oblimin { .. });
         let gain = |arrival: &Arrival| {
             if lower_is_better { -arrival.criterion } else { arrival.criterion }
@@ -282,17 +288,12 @@ impl Search {
         let mut reached: Vec<Arrival> =
             arrivals.into_iter().filter(|arrival| gain(arrival) >= most - SAME * scale).collect();
         let n_reached = reached.len();
-        // The first in order of those that found the same, so that rounding does not choose; one
-        // that has arrived before one that has not.
-        let place = reached
-            .iter()
-            .position(|arrival| arrival.gradient <= self.limits.tolerance)
-            .unwrap_or(0);
         if reached.is_empty() {
             let rotation = self.rotation.to_string();
             return Err(Error::RotationCollapsed { rotation, n_starts });
         }
-        Ok(Best { arrival: reached.swap_remove(place), n_reached, n_collapsed })
+        // The first in order of those that found the same, so that rounding does not choose.
+        Ok(Best { arrival: reached.swap_remove(0), n_reached, n_collapsed })
     }
 }
 

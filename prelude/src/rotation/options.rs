@@ -48,9 +48,9 @@ pub enum Rotation {
     /// over all T with columns of unit length (Jennrich and Sampson 1966).
     Oblimin {
         /// The weight γ, from −100 to 0.8; 0 is usual (also called direct quartimin). The larger it
-        /// is, the more the components may correlate; above 0 they may fall together, which is
-        /// an error, and beyond 0.8 they nearly always do. Very negative values approach an
-        /// orthogonal rotation.
+        /// is, the more the components correlate. Above 0 the criterion may have no minimum: then
+        /// components fall together, which is an error when it happens from every start and is
+        /// counted otherwise; beyond 0.8 it nearly always happens.
         gamma: f64,
     },
 }

@@ -1,8 +1,10 @@
 //! Numbers from outside: books, and other programs on open data, a file for each statistical
 //! family. `tests/references/README.md` says how the values were made.
 
+mod comparison;
 mod components;
 mod parallel;
+mod rotation;
 mod tables;
 
 mod files;
