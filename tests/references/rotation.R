@@ -1,8 +1,7 @@
 # Makes `rotation.json`: rotated loadings of principal components of open data (the correlation
 # matrices Harman74.cor and ability.cov and the data set iris that ship with R, Harman.8 of psych),
-# by R's varimax (singular value decompositions of the whole gradient)
-# with a promax step written out after it, and by
-# GPArotation's gradient projection; the orthogonal ones from a Crawford-Ferguson criterion where the
+# by R's varimax (singular value decompositions of the whole gradient) with a promax step written out
+# after it, and by GPArotation's gradient projection; the orthogonal ones from a Crawford-Ferguson criterion where the
 # library has it, which is another formula. Starts are random, and the best of 4 is kept.
 #
 #     Rscript rotation.R
