@@ -15,6 +15,8 @@ use std::path::PathBuf;
 
 use polars::prelude::PolarsError;
 
+use crate::table::NumberType;
+
 /// The prelude's result.
 pub type Result<T, E = Error> = std::result::Result<T, E>;
 
@@ -194,6 +196,34 @@ pub enum Error {
         /// The name.
         name: String,
     },
+    /// A column was asked for by name and was also to be left out.
+    WantedAndUnwanted {
+        /// The name.
+        name: String,
+    },
+    /// No column has a name that fits a pattern.
+    NoColumnLike {
+        /// The pattern.
+        pattern: String,
+        /// The names there are.
+        available: Vec<String>,
+    },
+    /// No column has a type that was asked for.
+    NoColumnOfType {
+        /// The type.
+        number_type: NumberType,
+        /// The columns there are, each with its type.
+        columns: Vec<(String, String)>,
+    },
+    /// Leaving out columns with missing values would leave none.
+    NoColumnLeft {
+        /// The columns, and how many values each misses.
+        columns: Vec<ColumnCount>,
+        /// Rows in the table.
+        n_rows: usize,
+        /// The share of values that a column may miss.
+        share: f64,
+    },
     /// The table has no numeric column.
     NoNumericColumns {
         /// The columns there are, each with its type.
@@ -282,12 +312,23 @@ pub enum Error {
     },
     /// The weight of a row is not a positive finite number.
     BadWeight {
+        /// The column of the table that holds the weights, where there is one.
+        column: Option<String>,
         /// The first such row, counted from 1.
         row: usize,
         /// Its label.
         label: String,
         /// The weight that was given.
         value: f64,
+    },
+    /// A weight column has missing weights.
+    MissingWeights {
+        /// The weight column.
+        column: String,
+        /// The first row without a weight.
+        row: usize,
+        /// How many weights are missing.
+        count: usize,
     },
     /// Counts that should agree do not.
     ShapeMismatch {
@@ -297,6 +338,61 @@ pub enum Error {
         expected: usize,
         /// The count that was given.
         found: usize,
+    },
+
+    /// A value lies outside the domain of a transformation, or of the way back from one.
+    OutsideDomain {
+        /// What was attempted.
+        action: String,
+        /// The column.
+        column: String,
+        /// The first such row, counted from 1.
+        row: usize,
+        /// Its label.
+        label: String,
+        /// The value.
+        value: f64,
+        /// What is accepted, in words.
+        accepted: String,
+    },
+    /// Columns have no spread that they could be divided by.
+    NoSpread {
+        /// Each such column and its middle.
+        columns: Vec<(String, f64)>,
+        /// The measure of spread that is zero, or that a transformation was to be judged by.
+        measure: &'static str,
+    },
+    /// Rows did not go through the transformations that were expected of them.
+    TransformationsDiffer {
+        /// The transformations that were expected, in order.
+        wanted: Vec<String>,
+        /// Those that the rows went through, in order.
+        found: Vec<String>,
+    },
+    /// Something that was saved cannot be read back.
+    SavedForm {
+        /// The part at fault.
+        part: String,
+        /// What stands there.
+        found: String,
+        /// What would be accepted.
+        accepted: String,
+    },
+    /// Something was saved in a version that is not known.
+    SavedVersion {
+        /// What was saved.
+        format: &'static str,
+        /// Its version.
+        found: u64,
+        /// The version that is known.
+        known: u64,
+    },
+    /// An analysis that was saved holds no such thing.
+    NotSaved {
+        /// What was asked for.
+        what: &'static str,
+        /// The way out.
+        remedy: &'static str,
     },
 
     // Statistics.
@@ -354,6 +450,14 @@ pub enum Error {
         extra: Vec<String>,
         /// The first place, counted from 1, where the order differs: wanted and found.
         order: Option<(usize, String, String)>,
+    },
+    /// A table does not have the rows that an analysis was made with.
+    RowsDiffer {
+        /// Labels of the analysis that the table lacks.
+        missing: Vec<String>,
+        /// Labels of the table that the analysis does not know; when none is missing or unknown,
+        /// the order differs.
+        extra: Vec<String>,
     },
     /// An option lies outside its range.
     OptionOutOfRange {

@@ -11,14 +11,15 @@ pub use crate::comparison::{
     procrustes_with,
 };
 pub use crate::components::{
-    ComponentOptions, Decomposition, FittedComponents, PrincipalComponents, RandomisedOptions,
-    Reconstruction, Route, Scaling, principal_components, principal_components_with,
+    Communalities, ComponentOptions, Decomposition, FittedComponents, PrincipalComponents,
+    RandomisedOptions, Reconstruction, Route, Scaling, SupplementaryColumns, SupplementaryGroups,
+    principal_components, principal_components_with,
 };
 pub use crate::error::{Error, Result};
 pub use crate::exhibit::{
     Bundle, Chart, Content, Exhibit, NumberFormat, Reference, Table, TableColumn, biplot,
     correlation_map, loading_plot, pairs, profiles, score_matrix, score_plot, scree, significant,
-    structure_circle, variance_shares,
+    structure_circle, turntable, variance_shares,
 };
 pub use crate::parallel::{Noise, ParallelAnalysis, ParallelOptions, parallel_analysis};
 pub use crate::random::{Generator, random_generator, random_normal};
@@ -26,10 +27,11 @@ pub use crate::rotation::{
     Rotated, RotatedComponents, Rotation, RotationOptions, rotate, rotate_with,
 };
 pub use crate::table::{
-    ColumnDescription, ColumnDescriptions, DataMatrix, FrameToMatrix, GappedMatrix, Label,
-    MatrixOptions, Missing, MissingPattern, MissingValues, NamedMatrix, TableOptions,
-    describe_columns, missing_values, read_table, read_table_with,
+    ColumnCheck, ColumnDescription, ColumnDescriptions, DataMatrix, FrameToMatrix, GappedMatrix,
+    Label, MatrixOptions, Missing, MissingPattern, MissingValues, NamedMatrix, NumberType,
+    TableOptions, describe_columns, missing_values, read_table, read_table_with,
 };
+pub use crate::transform::{Transform, Transformation};
 
 // Showing something in the middle of a cell.
 pub use crate::show;

@@ -25,16 +25,23 @@ mod randomised;
 mod columns;
 mod cross;
 mod exhibit;
+mod meaning;
+mod row_weights;
+mod saved;
 mod scores;
 pub(crate) mod spectrum;
+mod supplementary;
 mod ties;
 pub(crate) mod views;
+mod ways;
 
 #[cfg(test)]
 mod tests;
 
 pub use fit::{principal_components, principal_components_with};
 pub use fitted::FittedComponents;
+pub use meaning::Communalities;
 pub use options::{ComponentOptions, Decomposition, RandomisedOptions, Route, Scaling};
 pub use randomised::Approximation;
 pub use result::{PrincipalComponents, Reconstruction};
+pub use supplementary::{SupplementaryColumns, SupplementaryGroups};

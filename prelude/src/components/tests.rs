@@ -2,7 +2,11 @@
 //! workspace's `tests/tests/references`.
 
 mod exhibits;
+mod meaning;
+mod new_rows;
+mod randomised;
 mod routes;
+mod saved;
 mod weights;
 
 use nalgebra::{DMatrix, DVector, dmatrix};

@@ -6,5 +6,7 @@ mod components;
 mod parallel;
 mod rotation;
 mod tables;
+mod transform;
+mod weights_and_meaning;
 
 mod files;
