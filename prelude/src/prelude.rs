@@ -5,6 +5,7 @@
 //! `use polars::prelude::*;` in a cell.
 
 // From tables to statistics.
+pub use crate::adequacy::{Adequacy, MultivariateNormality, adequacy, multivariate_normality};
 pub use crate::comparison::{
     Congruence, PrincipalAngles, Procrustes, ProcrustesOptions, ProcrustesTest,
     ProcrustesTestOptions, Similarity, congruence, principal_angles, procrustes, procrustes_test,
@@ -21,10 +22,19 @@ pub use crate::exhibit::{
     correlation_map, loading_plot, pairs, profiles, score_matrix, score_plot, scree, significant,
     structure_circle, turntable, variance_shares,
 };
+pub use crate::gaps::{
+    Completed, ComponentChoice, ComponentRule, EstimatedCell, GapMethod, GapOptions,
+    ProbabilisticComponents, ProbabilisticOptions, components_for_gaps, estimate_missing,
+    probabilistic_components,
+};
 pub use crate::parallel::{Noise, ParallelAnalysis, ParallelOptions, parallel_analysis};
 pub use crate::random::{Generator, random_generator, random_normal};
 pub use crate::rotation::{
     Rotated, RotatedComponents, Rotation, RotationOptions, rotate, rotate_with,
+};
+pub use crate::stability::{
+    Alignment, AsymptoticErrors, AsymptoticOptions, Bootstrap, BootstrapOptions, LeaveOut,
+    LeaveOutOptions, asymptotic_errors, bootstrap, leave_out,
 };
 pub use crate::table::{
     ColumnCheck, ColumnDescription, ColumnDescriptions, DataMatrix, FrameToMatrix, GappedMatrix,

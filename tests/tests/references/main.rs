@@ -3,8 +3,10 @@
 
 mod comparison;
 mod components;
+mod gaps;
 mod parallel;
 mod rotation;
+mod stability;
 mod tables;
 mod transform;
 mod weights_and_meaning;
