@@ -359,7 +359,7 @@ pub enum Error {
     NoSpread {
         /// Each such column and its middle.
         columns: Vec<(String, f64)>,
-        /// The measure of spread that is zero, or that a transformation was to be judged by.
+        /// The measure of spread that is zero or beyond what a number can hold.
         measure: &'static str,
     },
     /// Rows did not go through the transformations that were expected of them.

@@ -261,7 +261,7 @@ impl fmt::Display for Error {
                 write!(f, "; accepted: {accepted}")
             }
             Error::NoSpread { columns, measure } => {
-                write!(f, "columns whose {measure} is zero: ")?;
+                write!(f, "columns without a {measure} to divide by: ")?;
                 list(f, columns, |f, (name, middle)| write!(f, "{}, about {middle}", Name(name)))?;
                 write!(f, "; leave them out, or transform the others by name with `.of([…])`")
             }
