@@ -435,6 +435,29 @@ pub enum Error {
         /// The largest deviation that is accepted.
         most: f64,
     },
+    /// The theory behind a method does not cover rows of unequal weight.
+    WeightsNotCovered {
+        /// The method.
+        method: &'static str,
+    },
+    /// A scatter matrix has no inverse: some variables can be computed from the others.
+    SingularScatter {
+        /// The method.
+        method: &'static str,
+        /// The rank of the matrix.
+        rank: usize,
+        /// Its order, which is the number of variables.
+        order: usize,
+    },
+    /// Too many resamples could not be analysed, since columns did not vary in them.
+    DegenerateResamples {
+        /// Resamples that could be analysed.
+        usable: usize,
+        /// Resamples that were drawn.
+        drawn: usize,
+        /// Columns that did not vary, and in how many resamples each.
+        columns: Vec<ColumnCount>,
+    },
     /// More components were asked for than there are.
     ComponentOutOfRange {
         /// How many, or which, was asked for.

@@ -1,5 +1,6 @@
 //! What a Semiaxis cell finds preloaded: tables, matrices, multivariate statistics and exhibits.
 
+pub mod adequacy;
 pub mod components;
 pub mod error;
 pub mod exhibit;
@@ -8,6 +9,7 @@ pub mod live;
 pub mod parallel;
 pub mod prelude;
 pub mod random;
+pub mod stability;
 pub mod table;
 pub mod transform;
 

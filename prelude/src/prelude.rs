@@ -5,6 +5,7 @@
 //! `use polars::prelude::*;` in a cell.
 
 // From tables to statistics.
+pub use crate::adequacy::{Adequacy, MultivariateNormality, adequacy, multivariate_normality};
 pub use crate::components::{
     Communalities, ComponentOptions, Decomposition, FittedComponents, PrincipalComponents,
     RandomisedOptions, Reconstruction, Route, Scaling, SupplementaryColumns, SupplementaryGroups,
@@ -23,6 +24,10 @@ pub use crate::gaps::{
 };
 pub use crate::parallel::{Noise, ParallelAnalysis, ParallelOptions, parallel_analysis};
 pub use crate::random::{Generator, random_generator, random_normal};
+pub use crate::stability::{
+    Alignment, AsymptoticErrors, AsymptoticOptions, Bootstrap, BootstrapOptions, LeaveOut,
+    LeaveOutOptions, asymptotic_errors, bootstrap, leave_out,
+};
 pub use crate::table::{
     ColumnCheck, ColumnDescription, ColumnDescriptions, DataMatrix, FrameToMatrix, GappedMatrix,
     Label, MatrixOptions, Missing, MissingPattern, MissingValues, NamedMatrix, NumberType,

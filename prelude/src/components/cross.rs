@@ -91,36 +91,32 @@ pub(crate) fn of_columns(x: &DMatrix<f64>, weights: Option<&RowWeights>) -> Cros
     let mut rounded = DMatrix::zeros(p, n_blocks);
     let mut left = DMatrix::zeros(p, n_blocks);
     let blocks_per_part = n_blocks.div_ceil(n_parts);
-    let sums: Vec<DMatrix<f64>> = rounded
-        .as_mut_slice()
-        .par_chunks_mut(p * blocks_per_part)
-        .zip(left.as_mut_slice().par_chunks_mut(p * blocks_per_part))
-        .enumerate()
-        .map(|(part, (rounded, left))| {
-            let mut sum = DMatrix::zeros(p, p);
-            let mut buffer = vec![0.0; block * p];
-            let centres = rounded.chunks_mut(p).zip(left.chunks_mut(p));
-            for (place, (rounded, left)) in centres.enumerate() {
-                if interrupted() {
-                    break;
-                }
-                let first = (part * blocks_per_part + place) * block;
-                let n_rows = block.min(n - first);
-                let buffer = &mut buffer[..n_rows * p];
-                for (j, centred) in buffer.chunks_mut(n_rows).enumerate() {
-                    let column = &x.as_slice()[j * n + first..][..n_rows];
-                    let centre = match weights {
-                        None => centre_into(column, centred),
-                        Some(weights) => weights.centre_into(column, centred, first),
-                    };
-                    (rounded[j], left[j]) = (centre.rounded, centre.left);
-                }
-                let block = MatRef::from_column_major_slice(buffer, n_rows, p);
-                add_lower(view_mut(&mut sum), block.transpose(), block, 1.0, par);
+    let sum_of_part = |(part, (rounded, left)): (usize, (&mut [f64], &mut [f64]))| {
+        let mut sum = DMatrix::zeros(p, p);
+        let mut buffer = vec![0.0; block * p];
+        let centres = rounded.chunks_mut(p).zip(left.chunks_mut(p));
+        for (place, (rounded, left)) in centres.enumerate() {
+            if interrupted() {
+                break;
             }
-            sum
-        })
-        .collect();
+            let first = (part * blocks_per_part + place) * block;
+            let n_rows = block.min(n - first);
+            let buffer = &mut buffer[..n_rows * p];
+            for (j, centred) in buffer.chunks_mut(n_rows).enumerate() {
+                let column = &x.as_slice()[j * n + first..][..n_rows];
+                let centre = match weights {
+                    None => centre_into(column, centred),
+                    Some(weights) => weights.centre_into(column, centred, first),
+                };
+                (rounded[j], left[j]) = (centre.rounded, centre.left);
+            }
+            let block = MatRef::from_column_major_slice(buffer, n_rows, p);
+            add_lower(view_mut(&mut sum), block.transpose(), block, 1.0, par);
+        }
+        sum
+    };
+    let sums =
+        on_threads(rounded.as_mut_slice(), left.as_mut_slice(), p * blocks_per_part, sum_of_part);
     let mut lower = add_in_order(sums);
     let weight = |place: usize| {
         let (first, n_rows) = (place * block, block.min(n - place * block));
@@ -147,51 +143,63 @@ pub(crate) fn of_rows(
     let per_part = n_blocks.div_ceil(n_parts) * block;
     let mut mean = DVector::zeros(p);
     let mut sum_squares = DVector::zeros(p);
-    let sums: Vec<DMatrix<f64>> = mean
-        .as_mut_slice()
-        .par_chunks_mut(per_part)
-        .zip(sum_squares.as_mut_slice().par_chunks_mut(per_part))
-        .enumerate()
-        .map(|(part, (means, squares))| {
-            let mut sum = DMatrix::zeros(n, n);
-            let mut buffer = vec![0.0; n * block];
-            for (place, (means, squares)) in
-                means.chunks_mut(block).zip(squares.chunks_mut(block)).enumerate()
-            {
-                if interrupted() {
-                    break;
-                }
-                let first = part * per_part + place * block;
-                let buffer = &mut buffer[..n * means.len()];
-                for (k, scaled) in buffer.chunks_mut(n).enumerate() {
-                    let column = &x.as_slice()[(first + k) * n..][..n];
-                    let centre = match weights {
-                        None => centre_into(column, scaled),
-                        Some(weights) => weights.centre_into(column, scaled, 0),
-                    };
-                    means[k] = centre.rounded + centre.left;
-                    match weights {
-                        None => scaled.iter_mut().for_each(|deviation| *deviation -= centre.left),
-                        Some(weights) => {
-                            for (deviation, root) in scaled.iter_mut().zip(weights.roots()) {
-                                *deviation -= centre.left * root;
-                            }
+    let sum_of_part = |(part, (means, squares)): (usize, (&mut [f64], &mut [f64]))| {
+        let mut sum = DMatrix::zeros(n, n);
+        let mut buffer = vec![0.0; n * block];
+        for (place, (means, squares)) in
+            means.chunks_mut(block).zip(squares.chunks_mut(block)).enumerate()
+        {
+            if interrupted() {
+                break;
+            }
+            let first = part * per_part + place * block;
+            let buffer = &mut buffer[..n * means.len()];
+            for (k, scaled) in buffer.chunks_mut(n).enumerate() {
+                let column = &x.as_slice()[(first + k) * n..][..n];
+                let centre = match weights {
+                    None => centre_into(column, scaled),
+                    Some(weights) => weights.centre_into(column, scaled, 0),
+                };
+                means[k] = centre.rounded + centre.left;
+                match weights {
+                    None => scaled.iter_mut().for_each(|deviation| *deviation -= centre.left),
+                    Some(weights) => {
+                        for (deviation, root) in scaled.iter_mut().zip(weights.roots()) {
+                            *deviation -= centre.left * root;
                         }
                     }
-                    squares[k] = scaled.iter().map(|d| d * d).sum();
-                    if unit && squares[k] > 0.0 {
-                        let variance: f64 = squares[k] / (n - 1) as f64;
-                        let factor = 1.0 / variance.sqrt();
-                        scaled.iter_mut().for_each(|d| *d *= factor);
-                    }
                 }
-                let block = MatRef::from_column_major_slice(buffer, n, means.len());
-                add_lower(view_mut(&mut sum), block, block.transpose(), 1.0, par);
+                squares[k] = scaled.iter().map(|d| d * d).sum();
+                if unit && squares[k] > 0.0 {
+                    let variance: f64 = squares[k] / (n - 1) as f64;
+                    let factor = 1.0 / variance.sqrt();
+                    scaled.iter_mut().for_each(|d| *d *= factor);
+                }
             }
-            sum
-        })
-        .collect();
+            let block = MatRef::from_column_major_slice(buffer, n, means.len());
+            add_lower(view_mut(&mut sum), block, block.transpose(), 1.0, par);
+        }
+        sum
+    };
+    let sums = on_threads(mean.as_mut_slice(), sum_squares.as_mut_slice(), per_part, sum_of_part);
     (Moments { mean, sum_squares }, add_in_order(sums))
+}
+
+/// Cuts two lists into pieces of the same length and answers for each pair of pieces, in order.
+///
+/// One piece is answered for where the caller stands: waking another thread takes longer than a
+/// small table.
+fn on_threads<T: Send>(
+    one: &mut [f64],
+    other: &mut [f64],
+    length: usize,
+    answer: impl Fn((usize, (&mut [f64], &mut [f64]))) -> T + Sync + Send,
+) -> Vec<T> {
+    if one.len() <= length {
+        return vec![answer((0, (one, other)))];
+    }
+    let pieces = one.par_chunks_mut(length).zip(other.par_chunks_mut(length)).enumerate();
+    pieces.map(answer).collect()
 }
 
 /// A mean in two parts: what a double can hold, and what is left of it.

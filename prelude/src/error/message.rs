@@ -326,6 +326,28 @@ impl fmt::Display for Error {
                  squares stay exact only between {least:e} and {most:e}, so change its unit",
                 Name(column)
             ),
+            Error::WeightsNotCovered { method } => write!(
+                f,
+                "{method} is not defined for rows of unequal weight; \
+                 take the weights off with `without_weights()`"
+            ),
+            Error::SingularScatter { method, rank, order } => write!(
+                f,
+                "{method} needs a scatter matrix of full rank; this one has rank {rank} and order \
+                 {order}, so some variables can be computed from others: leave {} out",
+                order - rank
+            ),
+            Error::DegenerateResamples { usable, drawn, columns } => {
+                write!(f, "only {usable} of {drawn} resamples could be analysed")?;
+                if !columns.is_empty() {
+                    write!(f, "; columns that did not vary in the others: ")?;
+                    list(f, columns, |f, at| {
+                        write!(f, "{} ({} times)", Name(&at.column), at.count)
+                    })?;
+                    write!(f, "; leave them out, or analyse covariances")?;
+                }
+                Ok(())
+            }
             Error::ComponentOutOfRange { asked, available } => {
                 write!(f, "{asked} components were asked for; accepted: 1 to {available}")
             }

@@ -4,6 +4,7 @@
 mod components;
 mod gaps;
 mod parallel;
+mod stability;
 mod tables;
 mod transform;
 mod weights_and_meaning;
