@@ -57,6 +57,11 @@ fn examples() -> Vec<Error> {
         Error::AllMissing { columns: names(&["x", "y"]) },
         Error::EmptyRows { labels: names(&["a"]) },
         Error::NoCompleteRow { columns: counts(), n_rows: 9 },
+        Error::ConstantObserved { columns: vec![("x".into(), 2.5, 4)] },
+        Error::TooFewObserved { n_components: 2, found: 20, needed: 31 },
+        Error::NoNoise { n_components: 2 },
+        Error::ScoresUndetermined { row: 4, label: "a".into(), n_observed: 1, n_components: 2 },
+        Error::WeightsNotTaken { method: "the estimation of missing values" },
         Error::NonFinite {
             column: "x".into(),
             row: 2,
