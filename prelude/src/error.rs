@@ -339,6 +339,40 @@ pub enum Error {
         /// The largest deviation that is accepted.
         most: f64,
     },
+    /// The theory behind a method does not cover rows of unequal weight.
+    WeightsNotCovered {
+        /// The method.
+        method: &'static str,
+    },
+    /// A scatter matrix has no inverse: some variables can be computed from the others.
+    SingularScatter {
+        /// The method.
+        method: &'static str,
+        /// The rank of the matrix.
+        rank: usize,
+        /// Its order, which is the number of variables.
+        order: usize,
+    },
+    /// So many rows satisfy one linear equation exactly that the most compact ones have no volume.
+    ExactFit {
+        /// The method.
+        method: &'static str,
+        /// Rows that satisfy the equation.
+        n_on: usize,
+        /// Rows there are.
+        n_rows: usize,
+        /// Variables of the equation, each with its coefficient.
+        coefficients: Vec<(String, f64)>,
+        /// What the products of coefficients and variables sum to.
+        constant: f64,
+        /// Labels of the rows that do not satisfy it.
+        off: Vec<String>,
+    },
+    /// Half or more of the values of a column are equal, so that it has no robust spread.
+    NoRobustSpread {
+        /// Each such column and its median.
+        columns: Vec<(String, f64)>,
+    },
     /// More components were asked for than there are.
     ComponentOutOfRange {
         /// How many, or which, was asked for.

@@ -1,12 +1,14 @@
 //! What a Semiaxis cell finds preloaded: tables, matrices, multivariate statistics and exhibits.
 
 pub mod components;
+pub mod distances;
 pub mod error;
 pub mod exhibit;
 pub mod live;
 pub mod parallel;
 pub mod prelude;
 pub mod random;
+pub mod robust;
 pub mod table;
 
 mod distributions;

@@ -22,7 +22,7 @@ mod fit;
 
 mod cross;
 mod exhibit;
-mod scores;
+pub(crate) mod scores;
 pub(crate) mod spectrum;
 pub(crate) mod views;
 
@@ -32,3 +32,5 @@ mod tests;
 pub use fit::principal_components;
 pub use options::{Route, Scaling};
 pub use result::{PrincipalComponents, Reconstruction};
+
+pub(crate) use result::same_variables;

@@ -14,7 +14,7 @@ const BLOCK: usize = 48 << 10;
 ///
 /// Rows are centred before they are multiplied, block by block: taking the mean's coordinates off
 /// afterwards would lose the digits of a large common offset.
-pub(super) fn project_rows(
+pub(crate) fn project_rows(
     x: &DMatrix<f64>,
     mean: &DVector<f64>,
     scale: &DVector<f64>,
@@ -47,7 +47,7 @@ pub(super) fn project_rows(
 }
 
 /// The product of a matrix with the transpose of another.
-pub(super) fn product(a: &DMatrix<f64>, b: &DMatrix<f64>) -> DMatrix<f64> {
+pub(crate) fn product(a: &DMatrix<f64>, b: &DMatrix<f64>) -> DMatrix<f64> {
     let mut result = DMatrix::zeros(a.nrows(), b.nrows());
     let into = view_mut(&mut result);
     matmul(into, Accum::Replace, view(a), view(b).transpose(), 1.0, PIECES);

@@ -2,7 +2,9 @@
 //! family. `tests/references/README.md` says how the values were made.
 
 mod components;
+mod outliers;
 mod parallel;
+mod robust;
 mod tables;
 
 mod files;
