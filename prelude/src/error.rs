@@ -299,6 +299,61 @@ pub enum Error {
         found: usize,
     },
 
+    /// A value lies outside the domain of a transformation, or of the way back from one.
+    OutsideDomain {
+        /// What was attempted.
+        action: String,
+        /// The column.
+        column: String,
+        /// The first such row, counted from 1.
+        row: usize,
+        /// Its label.
+        label: String,
+        /// The value.
+        value: f64,
+        /// What is accepted, in words.
+        accepted: String,
+    },
+    /// Columns have no spread that they could be divided by.
+    NoSpread {
+        /// Each such column and its middle.
+        columns: Vec<(String, f64)>,
+        /// The measure of spread that is zero, or that a transformation was to be judged by.
+        measure: &'static str,
+    },
+    /// Rows did not go through the transformations that were expected of them.
+    TransformationsDiffer {
+        /// The transformations that were expected, in order.
+        wanted: Vec<String>,
+        /// Those that the rows went through, in order.
+        found: Vec<String>,
+    },
+    /// Something that was saved cannot be read back.
+    SavedForm {
+        /// The part at fault.
+        part: String,
+        /// What stands there.
+        found: String,
+        /// What would be accepted.
+        accepted: String,
+    },
+    /// Something was saved in a version that is not known.
+    SavedVersion {
+        /// What was saved.
+        format: &'static str,
+        /// Its version.
+        found: u64,
+        /// The version that is known.
+        known: u64,
+    },
+    /// An analysis that was saved holds no such thing.
+    NotSaved {
+        /// What was asked for.
+        what: &'static str,
+        /// The way out.
+        remedy: &'static str,
+    },
+
     // Statistics.
     /// A method needs more rows.
     TooFewRows {
@@ -389,6 +444,14 @@ pub enum Error {
         /// The first place, counted from 1, where the order differs: wanted and found.
         order: Option<(usize, String, String)>,
     },
+    /// A table does not have the rows that an analysis was made with.
+    RowsDiffer {
+        /// Labels of the analysis that the table lacks.
+        missing: Vec<String>,
+        /// Labels of the table that the analysis does not know; when none is missing or unknown,
+        /// the order differs.
+        extra: Vec<String>,
+    },
     /// An option lies outside its range.
     OptionOutOfRange {
         /// The option.
@@ -397,6 +460,13 @@ pub enum Error {
         value: f64,
         /// What is accepted, in words.
         accepted: &'static str,
+    },
+    /// A choice needs an option that was not given.
+    OptionNeeded {
+        /// The option.
+        option: &'static str,
+        /// What needs it.
+        needed_by: &'static str,
     },
     /// The computation was asked to stop.
     Interrupted,

@@ -10,6 +10,7 @@ pub mod prelude;
 pub mod random;
 pub mod robust;
 pub mod table;
+pub mod transform;
 
 mod distributions;
 mod quantile;

@@ -6,12 +6,15 @@
 
 // From tables to statistics.
 pub use crate::components::{
-    PrincipalComponents, Reconstruction, Route, Scaling, principal_components,
+    Communalities, ComponentOptions, Decomposition, FittedComponents, PrincipalComponents,
+    RandomisedOptions, Reconstruction, Route, Scaling, SupplementaryColumns, SupplementaryGroups,
+    principal_components, principal_components_with,
 };
 pub use crate::error::{Error, Result};
 pub use crate::exhibit::{
     Bundle, Chart, Content, Exhibit, NumberFormat, Reference, Table, TableColumn, biplot,
-    loading_plot, score_plot, scree, significant,
+    correlation_map, loading_plot, pairs, profiles, score_matrix, score_plot, scree, significant,
+    structure_circle, turntable, variance_shares,
 };
 pub use crate::parallel::{Noise, ParallelAnalysis, ParallelOptions, parallel_analysis};
 pub use crate::random::{Generator, random_generator, random_normal};
@@ -20,6 +23,7 @@ pub use crate::table::{
     MatrixOptions, Missing, MissingPattern, MissingValues, NamedMatrix, TableOptions,
     describe_columns, missing_values, read_table, read_table_with,
 };
+pub use crate::transform::{Transform, Transformation};
 
 // Showing something in the middle of a cell.
 pub use crate::show;

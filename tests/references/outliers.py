@@ -49,7 +49,7 @@ def normal(share):
     return mpmath.sqrt(2) * mpmath.erfinv(2 * share - 1)
 
 
-def limits(roots, n, k, share):
+def limits(roots, n, k, share, residuals):
     share = mpmath.mpf(share)
     left = [mpmath.mpf(value) for value in roots[k:]]
     one, two, three = (mpmath.fsum(value**power for value in left) for power in (1, 2, 3))
@@ -58,6 +58,7 @@ def limits(roots, n, k, share):
     bracket = z * mpmath.sqrt(2 * two * h0**2) * mpmath.sign(h0) / one + 1
     bracket += two * h0 * (h0 - 1) / one**2
     q = len(left)
+    matched = residuals.var(ddof=1) / (2 * residuals.mean())
     return {
         "share": float(share),
         "t_squared_fitted": float(
@@ -68,6 +69,7 @@ def limits(roots, n, k, share):
         ),
         "jackson_mudholkar": float(one * bracket ** (1 / h0)),
         "box": float(two / one * chi_squared(share, one**2 / two)),
+        "moments": float(matched * chi_squared(share, residuals.mean() / matched)),
         "f": float(one * (n - 1) / (n - k - 1) * f(share, q, q * (n - k - 1))),
         "f_applies": bool(one**2 / two >= mpmath.mpf("0.8") * q),
         "score_distance": float(mpmath.sqrt(chi_squared(share, k))),
@@ -99,7 +101,9 @@ def case(name, x, k, scaled, held_back):
         "q": q(fitted).tolist(),
         "new_t_squared": t_squared(new).tolist(),
         "new_q": q(new).tolist(),
-        "limits": [limits(roots, n, k, share) for share in ("0.95", "0.975", "0.99")],
+        "limits": [
+            limits(roots, n, k, share, q(fitted)) for share in ("0.95", "0.975", "0.99")
+        ],
         "row": row,
         "to_t_squared": ((half @ take(fitted)[row]) ** 2).tolist(),
         "to_q": ((beyond @ take(fitted)[row]) ** 2).tolist(),

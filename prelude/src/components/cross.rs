@@ -52,9 +52,11 @@ impl RowWeights {
         &self.weights
     }
 
-    /// Their square roots.
-    pub(crate) fn roots(&self) -> &[f64] {
-        &self.roots
+    /// Multiplies each row by the root of its weight.
+    pub(crate) fn weigh_rows(&self, matrix: &mut DMatrix<f64>) {
+        for mut column in matrix.column_iter_mut() {
+            column.iter_mut().zip(&self.roots).for_each(|(value, root)| *value *= root);
+        }
     }
 }
 
@@ -80,6 +82,35 @@ const MOST_PARTS: usize = 16;
 
 /// Doubles in a block, so that it stays in the second-level cache with its products.
 const BLOCK: usize = 48 << 10;
+
+/// The centre and spread of each column alone.
+pub(crate) fn moments(x: &DMatrix<f64>, weights: Option<&RowWeights>) -> Moments {
+    let (n, p) = x.shape();
+    let columns: Vec<(f64, f64)> = x
+        .as_slice()
+        .par_chunks(n)
+        .map_init(
+            || vec![0.0; n],
+            |centred, column| {
+                if interrupted() {
+                    return (0.0, 0.0);
+                }
+                let centre = match weights {
+                    None => centre_into(column, centred),
+                    Some(weights) => weights.centre_into(column, centred, 0),
+                };
+                // The squares about the rounded mean exceed those about the mean by n times the
+                // square of what is left of it.
+                let squares: f64 = squares(centred) - n as f64 * centre.left * centre.left;
+                (centre.rounded + centre.left, squares.max(0.0))
+            },
+        )
+        .collect();
+    Moments {
+        mean: DVector::from_iterator(p, columns.iter().map(|(mean, _)| *mean)),
+        sum_squares: DVector::from_iterator(p, columns.iter().map(|(_, squares)| *squares)),
+    }
+}
 
 /// The cross-product of the columns, p × p.
 pub(crate) fn of_columns(x: &DMatrix<f64>, weights: Option<&RowWeights>) -> CrossProduct {
@@ -257,6 +288,17 @@ fn sum(values: &[f64]) -> f64 {
         }
     }
     fold(lanes) + rest.iter().sum::<f64>()
+}
+
+fn squares(values: &[f64]) -> f64 {
+    let mut lanes = [0.0; LANES];
+    let (chunks, rest) = values.as_chunks::<LANES>();
+    for chunk in chunks {
+        for (lane, value) in lanes.iter_mut().zip(chunk) {
+            *lane += value * value;
+        }
+    }
+    fold(lanes) + rest.iter().map(|value| value * value).sum::<f64>()
 }
 
 fn fold(lanes: [f64; LANES]) -> f64 {

@@ -1,5 +1,8 @@
 //! Components and reconstructions as tables, with the conventions they were computed by.
 
+mod meaning;
+
+use super::fitted::FittedComponents;
 use super::options::Scaling;
 use super::result::{PrincipalComponents, Reconstruction};
 use crate::exhibit::{
@@ -10,9 +13,17 @@ use crate::exhibit::{
 const VARIANCES: NumberFormat = NumberFormat::Significant(4);
 const LOADINGS: NumberFormat = NumberFormat::Decimals(3);
 const MOST_COMPONENTS: usize = 8;
+const MOST_GROUPS: usize = 4;
 
 /// Variances with their shares, and the loadings of the leading components.
 impl Exhibit for PrincipalComponents {
+    fn exhibit(&self) -> Bundle {
+        self.fitted().exhibit()
+    }
+}
+
+/// Variances with their shares, and the loadings of the leading components.
+impl Exhibit for FittedComponents {
     fn exhibit(&self) -> Bundle {
         stacked(&[&variances(self), &loadings(self)])
     }
@@ -54,8 +65,8 @@ impl Exhibit for Reconstruction {
     }
 }
 
-fn variances(pca: &PrincipalComponents) -> Table {
-    Table::new("Variance of each component")
+fn variances(pca: &FittedComponents) -> Table {
+    let mut table = Table::new("Variance of each component")
         .column(TableColumn::counts("component", 1..=pca.n_components()).as_row_heads())
         .column(TableColumn::numbers("variance", pca.variances().iter().copied(), VARIANCES))
         .column(TableColumn::numbers(
@@ -67,22 +78,78 @@ fn variances(pca: &PrincipalComponents) -> Table {
             "together",
             pca.cumulative().iter().copied(),
             NumberFormat::Percent,
-        ))
-        .note(format!(
-            "{} and {} {}; total variance {}; divisor n − 1 = {}; variances to 4 significant \
-             digits.",
-            counted(pca.n_rows(), "row"),
-            counted(pca.n_variables(), "variable"),
-            match pca.scaling() {
-                Scaling::Correlation => "brought to unit variance (correlation)",
-                Scaling::Covariance => "in their own units (covariance)",
-            },
-            significant(pca.total_variance(), 4),
-            grouped(pca.divisor())
-        ))
+        ));
+    if let Some(approximation) = pca.approximation() {
+        let residuals = approximation.residuals().iter().copied();
+        table = table.column(TableColumn::numbers("residual", residuals, VARIANCES));
+    }
+    let mut table = table.note(format!(
+        "{}{} and {} {}; total variance {}; divisor n − 1 = {}; variances to 4 significant \
+         digits; by {}.",
+        counted(pca.n_rows(), "row"),
+        if pca.is_weighted() { " of unequal weight" } else { "" },
+        counted(pca.n_variables(), "variable"),
+        match pca.scaling() {
+            Scaling::Correlation => "brought to unit variance (correlation)",
+            Scaling::Covariance => "in their own units (covariance)",
+        },
+        significant(pca.total_variance(), 4),
+        grouped(pca.divisor()),
+        pca.route(),
+    ));
+    for note in [left_out(pca), searched(pca), tied(pca)].into_iter().flatten() {
+        table = table.note(note);
+    }
+    table
 }
 
-fn loadings(pca: &PrincipalComponents) -> Table {
+fn left_out(pca: &FittedComponents) -> Option<String> {
+    let left = pca.left_out_variance();
+    (!pca.is_complete()).then(|| {
+        format!(
+            "Only the first {} kept; {} of the total variance, {}, is left out.",
+            counted(pca.n_components(), "component"),
+            significant(left, 4),
+            NumberFormat::Percent.format(left / pca.total_variance())
+        )
+    })
+}
+
+fn searched(pca: &FittedComponents) -> Option<String> {
+    let search = pca.approximation()?;
+    Some(format!(
+        "{} searched at random, refined {}, seed {}. Within the residual of each component lies \
+         a variance of the exact decomposition; no variance is short of its own by more than {} \
+         (Halko, Martinsson and Tropp 2011, equation 4.3; fails once in 10 billion searches).",
+        counted(search.n_directions(), "direction"),
+        counted(search.n_power_iterations(), "time"),
+        search.seed(),
+        significant(search.norm_bound().powi(2), 2)
+    ))
+}
+
+fn tied(pca: &FittedComponents) -> Option<String> {
+    let groups = pca.tied();
+    let listed: Vec<String> = groups
+        .iter()
+        .take(MOST_GROUPS)
+        .map(|group| match group.as_slice() {
+            [first, second] => format!("{first} and {second}"),
+            [first, .., last] => format!("{first} to {last}"),
+            _ => String::new(),
+        })
+        .collect();
+    let more = if groups.len() > MOST_GROUPS { ", and more" } else { "" };
+    (!groups.is_empty()).then(|| {
+        format!(
+            "Equal variances as far as the computation can tell: {}{more}. Directions within such \
+             a group are arbitrary.",
+            listed.join(", ")
+        )
+    })
+}
+
+fn loadings(pca: &FittedComponents) -> Table {
     let values = pca.loadings().values();
     let n_shown = pca.n_components().min(MOST_COMPONENTS);
     // All p loadings of a component are this large when every variable has the same part in it.

@@ -4,9 +4,13 @@ use std::sync::{Arc, OnceLock};
 
 use nalgebra::{DMatrix, DVector};
 
+use super::columns::Columns;
 use super::cross::{self, CrossProduct, Moments, RowWeights};
-use super::options::{Route, Scaling};
+use super::fitted::FittedComponents;
+use super::options::{ComponentOptions, Decomposition, Route, Scaling};
+use super::randomised::{self, Approximation};
 use super::result::PrincipalComponents;
+use super::scores::Standardised;
 use super::spectrum::{self, Spectrum};
 use crate::error::{Error, Result};
 use crate::live::checkpoint;
@@ -19,10 +23,6 @@ use crate::table::{DataMatrix, NamedMatrix};
 /// 4th edition, sections 8.1.2 and 8.6), here at most some 2e-11. Below it the data themselves
 /// are decomposed.
 const TRUSTED: f64 = 1e-5;
-
-/// Sums of squares beyond these cannot be multiplied and divided safely in double precision.
-const LEAST_SQUARES: f64 = 1e-290;
-const MOST_SQUARES: f64 = 1e290;
 
 /// The principal components of a matrix.
 ///
@@ -51,20 +51,56 @@ const MOST_SQUARES: f64 = 1e290;
 /// [`Error::NoVariation`] when no column varies; [`Error::Magnitude`] for deviations too large or
 /// too small to square.
 pub fn principal_components(x: &DataMatrix, scaling: Scaling) -> Result<PrincipalComponents> {
+    principal_components_with(x, ComponentOptions::new(scaling))
+}
+
+/// The principal components of a matrix, with a choice of how many are kept and of the way they
+/// are computed.
+///
+/// ```
+/// use semiaxis::components::{ComponentOptions, Route, Scaling, principal_components_with};
+/// use semiaxis::nalgebra::dmatrix;
+/// use semiaxis::table::DataMatrix;
+///
+/// let x = DataMatrix::from_unnamed(dmatrix![1.0, 1.0; 2.0, 3.0; 3.0, 2.0])?;
+/// let first = principal_components_with(&x, ComponentOptions::new(Scaling::Correlation).keep(1))?;
+/// assert_eq!((first.n_components(), first.rank()), (1, 2));
+/// assert!((first.total_variance() - 2.0).abs() < 1e-12); // still that of everything
+/// assert!((first.left_out_variance() - 0.5).abs() < 1e-12);
+/// # Ok::<(), semiaxis::Error>(())
+/// ```
+///
+/// # Errors
+///
+/// Those of [`principal_components`]; [`Error::ComponentOutOfRange`] when more components are to
+/// be kept than there are; [`Error::OptionOutOfRange`], and [`Error::OptionNeeded`] for a
+/// randomised decomposition that is not told how many to keep.
+pub fn principal_components_with(
+    x: &DataMatrix,
+    options: ComponentOptions,
+) -> Result<PrincipalComponents> {
+    let method = "principal components";
     if x.n_rows() < 2 {
-        return Err(Error::TooFewRows {
-            method: "principal components",
-            needed: 2,
-            found: x.n_rows(),
-        });
+        return Err(Error::TooFewRows { method, needed: 2, found: x.n_rows() });
     }
-    let weights = RowWeights::of(x);
-    let fitted = if x.n_cols() < x.n_rows() {
-        by_variables(x, scaling, weights.as_ref())
-    } else {
-        by_rows(x, scaling, weights.as_ref())
+    options.check((x.n_rows() - 1).min(x.n_cols()))?;
+    let task = Task { x, scaling: options.scaling(), weights: RowWeights::of(x) };
+    let fitted = match options.chosen_decomposition() {
+        Decomposition::Automatic if x.n_cols() < x.n_rows() => task.by_variables(false),
+        Decomposition::Automatic => task.by_rows(false),
+        Decomposition::VariableCrossProduct => task.by_variables(true),
+        Decomposition::RowCrossProduct => task.by_rows(true),
+        Decomposition::SingularValues => task.by_singular_values(task.columns()?),
+        Decomposition::Randomised(chosen) => task.randomised(options.chosen_keep(), chosen),
     }?;
-    Ok(fitted.into_result(x, scaling, weights))
+    task.result(fitted, options.chosen_keep())
+}
+
+/// What is to be decomposed.
+struct Task<'a> {
+    x: &'a DataMatrix,
+    scaling: Scaling,
+    weights: Option<RowWeights>,
 }
 
 /// What every way of decomposing hands over.
@@ -75,66 +111,30 @@ struct Fitted {
     variances: DVector<f64>,
     loadings: DMatrix<f64>,
     scores: Option<DMatrix<f64>>,
+    approximation: Option<Approximation>,
 }
 
-/// Centre, spread and scale of the columns.
-struct Columns {
-    mean: DVector<f64>,
-    deviation: DVector<f64>,
-    scale: DVector<f64>,
-}
-
-impl Columns {
-    /// Checks the spread of each column and derives its scale.
-    fn checked(x: &DataMatrix, moments: Moments, scaling: Scaling) -> Result<Self> {
-        let divisor = (x.n_rows() - 1) as f64;
-        let Moments { mean, sum_squares } = moments;
-        let mut deviation = sum_squares.map(|squares| (squares / divisor).sqrt());
-        let mut constant = Vec::new();
-        for (j, &squares) in sum_squares.iter().enumerate() {
-            // The cheap test picks out the few columns that need the exact one.
-            let rounding = 16.0 * f64::EPSILON * mean[j].abs();
-            let suspect = squares <= rounding * rounding * x.n_rows() as f64;
-            if !suspect && (LEAST_SQUARES..=MOST_SQUARES).contains(&squares) {
-                continue;
-            }
-            let column = x.values().column(j);
-            let (min, max) = (column.min(), column.max());
-            if max - min <= 2.0 * f64::EPSILON * min.abs().max(max.abs()) {
-                deviation[j] = 0.0;
-                constant.push((x.variables()[j].clone(), column[0]));
-            } else if !(LEAST_SQUARES..=MOST_SQUARES).contains(&squares) {
-                return Err(Error::Magnitude {
-                    column: x.variables()[j].clone(),
-                    value: (max / 2.0 - min / 2.0) * 2.0,
-                    least: LEAST_SQUARES.sqrt(),
-                    most: MOST_SQUARES.sqrt(),
-                });
-            }
-        }
-        if constant.len() == x.n_cols() {
-            return Err(Error::NoVariation { n_rows: x.n_rows() });
-        }
-        let scale = match scaling {
-            Scaling::Covariance => DVector::repeat(x.n_cols(), 1.0),
-            Scaling::Correlation if constant.is_empty() => deviation.clone(),
-            Scaling::Correlation => return Err(Error::ConstantColumns { columns: constant }),
-        };
-        Ok(Columns { mean, deviation, scale })
+impl Task<'_> {
+    fn divisor(&self) -> f64 {
+        (self.x.n_rows() - 1) as f64
     }
 
-    fn varies_throughout(&self) -> bool {
-        self.deviation.iter().all(|deviation| *deviation > 0.0)
+    fn columns(&self) -> Result<Columns> {
+        let moments = cross::moments(self.x.values(), self.weights.as_ref());
+        checkpoint();
+        Columns::checked(self.x, moments, self.scaling)
     }
-}
 
-fn by_variables(x: &DataMatrix, scaling: Scaling, weights: Option<&RowWeights>) -> Result<Fitted> {
-    let n = x.n_rows();
-    let CrossProduct { mean, mut lower } = cross::of_columns(x.values(), weights);
-    checkpoint();
-    let sum_squares = lower.diagonal();
-    let columns = Columns::checked(x, Moments { mean, sum_squares: sum_squares.clone() }, scaling)?;
-    if columns.varies_throughout() {
+    fn by_variables(&self, forced: bool) -> Result<Fitted> {
+        let (x, scaling) = (self.x, self.scaling);
+        let CrossProduct { mean, mut lower } = cross::of_columns(x.values(), self.weights.as_ref());
+        checkpoint();
+        let sum_squares = lower.diagonal();
+        let moments = Moments { mean, sum_squares: sum_squares.clone() };
+        let columns = Columns::checked(x, moments, scaling)?;
+        if !(forced || columns.varies_throughout()) {
+            return self.by_singular_values(columns);
+        }
         // Brought near one, so that no product of entries overflows: by each column's own spread
         // for correlations, by the largest one for covariances.
         let unit = match scaling {
@@ -151,160 +151,208 @@ fn by_variables(x: &DataMatrix, scaling: Scaling, weights: Option<&RowWeights>) 
         }
         let Spectrum { roots, vectors } = spectrum::symmetric(lower)?;
         checkpoint();
-        if roots[roots.len() - 1] >= TRUSTED * roots[0] {
-            let variances = match scaling {
-                Scaling::Correlation => roots,
-                Scaling::Covariance => roots * (sum_squares.max() / (n - 1) as f64),
-            };
-            return Ok(Fitted {
-                tolerance: tolerance(x, &columns, (variances[0] * (n - 1) as f64).sqrt()),
-                columns,
-                route: Route::VariableCrossProduct,
-                variances,
-                loadings: vectors,
-                scores: None,
-            });
+        if !(forced || is_trusted(&roots)) {
+            return self.by_singular_values(columns);
+        }
+        let variances = match scaling {
+            Scaling::Correlation => roots,
+            Scaling::Covariance => roots * (sum_squares.max() / self.divisor()),
+        };
+        let mut tolerance = columns.tolerance(x, (variances[0] * self.divisor()).sqrt());
+        if !is_trusted(&variances) {
+            tolerance = tolerance.max(rounding_of_roots(&variances));
+        }
+        let rank = rank(&variances, tolerance).min(x.n_rows() - 1);
+        Ok(Fitted {
+            tolerance,
+            columns,
+            route: Route::VariableCrossProduct,
+            variances: variances.rows(0, rank).into_owned(),
+            loadings: first_columns(vectors, rank),
+            scores: None,
+            approximation: None,
+        })
+    }
+
+    fn by_rows(&self, forced: bool) -> Result<Fitted> {
+        let (x, unit) = (self.x, self.scaling == Scaling::Correlation);
+        let (moments, mut lower) = cross::of_rows(x.values(), unit, self.weights.as_ref());
+        checkpoint();
+        let columns = Columns::checked(x, moments, self.scaling)?;
+        let size = lower.diagonal().max();
+        lower /= size;
+        let Spectrum { roots, vectors } = spectrum::symmetric(lower)?;
+        checkpoint();
+        // Centring takes one dimension away: the last root is zero by construction.
+        let roots = roots.rows(0, x.n_rows() - 1).into_owned();
+        let trusted = is_trusted(&roots);
+        if !(forced || trusted) {
+            return self.by_singular_values(columns);
+        }
+        let mut tolerance = columns.tolerance(x, (roots[0] * size).sqrt());
+        if !trusted {
+            tolerance = tolerance.max(rounding_of_roots(&roots) * (size / self.divisor()));
+        }
+        let variances = roots.map(|root| root * (size / self.divisor()));
+        let rank = rank(&variances, tolerance).min(x.n_cols());
+        let singular = roots.rows(0, rank).map(|root| (root * size).sqrt());
+        let mut left = first_columns(vectors, rank);
+        let mut combination = left.clone();
+        for (k, sigma) in singular.iter().enumerate() {
+            left.column_mut(k).scale_mut(*sigma);
+            combination.column_mut(k).scale_mut(1.0 / sigma);
+        }
+        let mut loadings = self.standardised(&columns).transposed_times(&combination);
+        if !trusted {
+            // What rounding did to vectors of small roots shows as lost perpendicularity.
+            loadings = spectrum::orthonormal(loadings);
+        }
+        // Those of weighted rows carry the roots of the weights, which may be too small to divide
+        // by.
+        let scores = (trusted && self.weights.is_none()).then_some(left);
+        Ok(Fitted {
+            tolerance,
+            variances: variances.rows(0, rank).into_owned(),
+            columns,
+            route: Route::RowCrossProduct,
+            loadings,
+            scores,
+            approximation: None,
+        })
+    }
+
+    fn by_singular_values(&self, columns: Columns) -> Result<Fitted> {
+        let x = self.x;
+        let mut scaled = x.values().clone();
+        for (j, mut column) in scaled.column_iter_mut().enumerate() {
+            if columns.deviation[j] > 0.0 {
+                column.add_scalar_mut(-columns.mean[j]);
+                column /= columns.scale[j];
+            } else {
+                column.fill(0.0);
+            }
+        }
+        if let Some(weights) = &self.weights {
+            weights.weigh_rows(&mut scaled);
+        }
+        let (singular, loadings) = spectrum::singular(&scaled)?;
+        checkpoint();
+        let tolerance = columns.tolerance(x, singular[0]);
+        let variances = singular.map(|sigma| sigma * (sigma / self.divisor()));
+        let rank = rank(&variances, tolerance);
+        if rank == 0 {
+            return Err(Error::NoVariation { n_rows: x.n_rows() });
+        }
+        Ok(Fitted {
+            tolerance,
+            columns,
+            route: Route::SingularValues,
+            variances: variances.rows(0, rank).into_owned(),
+            loadings: first_columns(loadings, rank),
+            scores: None,
+            approximation: None,
+        })
+    }
+
+    fn randomised(&self, keep: Option<usize>, options: super::RandomisedOptions) -> Result<Fitted> {
+        let keep = keep.ok_or(Error::OptionNeeded {
+            option: "keep",
+            needed_by: "a randomised decomposition",
+        })?;
+        let columns = self.columns()?;
+        let sketch = randomised::decompose(&self.standardised(&columns), keep, options)?;
+        let tolerance = columns.tolerance(self.x, sketch.singular[0]);
+        let variances = sketch.singular.map(|sigma| sigma * (sigma / self.divisor()));
+        let rank = rank(&variances, tolerance);
+        if rank < keep {
+            return Err(Error::ComponentOutOfRange { asked: keep, available: rank });
+        }
+        Ok(Fitted {
+            tolerance,
+            columns,
+            route: Route::Randomised,
+            variances: variances.rows(0, keep).into_owned(),
+            loadings: first_columns(sketch.right, keep),
+            scores: self.weights.is_none().then(|| first_columns(sketch.image, keep)),
+            approximation: Some(sketch.approximation),
+        })
+    }
+
+    fn standardised<'a>(&'a self, columns: &'a Columns) -> Standardised<'a> {
+        Standardised {
+            x: self.x.values(),
+            mean: &columns.mean,
+            scale: &columns.scale,
+            weights: self.weights.as_ref(),
         }
     }
-    by_singular_values(x, columns, weights)
-}
 
-fn by_rows(x: &DataMatrix, scaling: Scaling, weights: Option<&RowWeights>) -> Result<Fitted> {
-    let n = x.n_rows();
-    let (moments, mut lower) = cross::of_rows(x.values(), scaling == Scaling::Correlation, weights);
-    checkpoint();
-    let columns = Columns::checked(x, moments, scaling)?;
-    let size = lower.diagonal().max();
-    lower /= size;
-    let Spectrum { roots, vectors } = spectrum::symmetric(lower)?;
-    checkpoint();
-    // Centring takes one dimension away: the last root is zero by construction.
-    let rank = n - 1;
-    if roots[rank - 1] < TRUSTED * roots[0] {
-        return by_singular_values(x, columns, weights);
-    }
-    let singular = roots.rows(0, rank).map(|root| (root * size).sqrt());
-    let mut left = vectors.columns(0, rank).into_owned();
-    let mut combination = left.clone();
-    for (k, sigma) in singular.iter().enumerate() {
-        left.column_mut(k).scale_mut(*sigma);
-        combination.column_mut(k).scale_mut(1.0 / sigma);
-    }
-    if let Some(weights) = weights {
-        weigh_rows(&mut combination, weights);
-    }
-    let loadings =
-        super::scores::combine_rows(x.values(), &columns.mean, &columns.scale, &combination);
-    Ok(Fitted {
-        tolerance: tolerance(x, &columns, singular[0]),
-        variances: singular.map(|sigma| sigma * sigma / rank as f64),
-        columns,
-        route: Route::RowCrossProduct,
-        loadings,
-        // Those of weighted rows carry the roots of the weights, which may be too small to divide by.
-        scores: weights.is_none().then_some(left),
-    })
-}
-
-/// Multiplies each row by the root of its weight.
-fn weigh_rows(matrix: &mut DMatrix<f64>, weights: &RowWeights) {
-    for mut column in matrix.column_iter_mut() {
-        column.iter_mut().zip(weights.roots()).for_each(|(value, root)| *value *= root);
-    }
-}
-
-fn by_singular_values(
-    x: &DataMatrix,
-    columns: Columns,
-    weights: Option<&RowWeights>,
-) -> Result<Fitted> {
-    let n = x.n_rows();
-    let mut scaled = x.values().clone();
-    for (j, mut column) in scaled.column_iter_mut().enumerate() {
-        if columns.deviation[j] > 0.0 {
-            column.add_scalar_mut(-columns.mean[j]);
-            column /= columns.scale[j];
-        } else {
-            column.fill(0.0);
+    fn result(self, mut fitted: Fitted, keep: Option<usize>) -> Result<PrincipalComponents> {
+        let (x, rank) = (self.x, fitted.variances.len());
+        let kept = keep.unwrap_or(rank);
+        if kept > rank {
+            return Err(Error::ComponentOutOfRange { asked: kept, available: rank });
         }
-    }
-    if let Some(weights) = weights {
-        weigh_rows(&mut scaled, weights);
-    }
-    let (singular, mut loadings) = spectrum::singular(&scaled)?;
-    checkpoint();
-    let tolerance = tolerance(x, &columns, singular[0]);
-    let variances = singular.map(|sigma| sigma * (sigma / (n - 1) as f64));
-    let rank = variances.iter().take_while(|variance| **variance > tolerance).count();
-    if rank == 0 {
-        return Err(Error::NoVariation { n_rows: n });
-    }
-    loadings = loadings.columns(0, rank).into_owned();
-    Ok(Fitted {
-        tolerance,
-        columns,
-        route: Route::SingularValues,
-        variances: variances.rows(0, rank).into_owned(),
-        loadings,
-        scores: None,
-    })
-}
-
-/// The variance that a component must exceed; see [`PrincipalComponents::rank`].
-fn tolerance(x: &DataMatrix, columns: &Columns, largest_singular: f64) -> f64 {
-    let (n, p) = (x.n_rows(), x.n_cols());
-    // |mean| + √n times the deviation bounds the largest absolute value without another pass.
-    let reach = columns
-        .mean
-        .iter()
-        .zip(columns.deviation.iter().zip(columns.scale.iter()))
-        .map(|(mean, (deviation, scale))| (mean.abs() + deviation) / scale)
-        .fold(0.0, f64::max);
-    let decomposition = n.max(p) as f64 * largest_singular;
-    let data = ((n * p) as f64).sqrt() * reach;
-    let least = f64::EPSILON * decomposition.max(data);
-    least * (least / (n - 1) as f64)
-}
-
-impl Fitted {
-    fn into_result(
-        mut self,
-        x: &DataMatrix,
-        scaling: Scaling,
-        weights: Option<RowWeights>,
-    ) -> PrincipalComponents {
-        for k in 0..self.loadings.ncols() {
-            if spectrum::sign(self.loadings.column(k).as_slice()) < 0.0 {
-                self.loadings.column_mut(k).neg_mut();
-                if let Some(scores) = &mut self.scores {
+        let mut loadings = first_columns(fitted.loadings, kept);
+        let mut scores = fitted.scores.map(|scores| first_columns(scores, kept));
+        for k in 0..kept {
+            if spectrum::sign(loadings.column(k).as_slice()) < 0.0 {
+                loadings.column_mut(k).neg_mut();
+                if let Some(scores) = &mut scores {
                     scores.column_mut(k).neg_mut();
                 }
             }
         }
-        let names: Arc<[String]> = (1..=self.loadings.ncols()).map(|k| format!("PC{k}")).collect();
+        let names: Arc<[String]> = (1..=kept).map(|k| format!("PC{k}")).collect();
         let named = |values, rows| {
             NamedMatrix::new(values, rows, names.clone()).expect("one name for each column")
         };
-        let total_variance = match scaling {
+        let total_variance = match self.scaling {
             Scaling::Correlation => x.n_cols() as f64,
-            Scaling::Covariance => self.columns.deviation.iter().map(|d| d * d).sum(),
+            Scaling::Covariance => fitted.columns.deviation.iter().map(|d| d * d).sum(),
         };
-        PrincipalComponents {
+        fitted.variances = fitted.variances.rows(0, kept).into_owned();
+        Ok(PrincipalComponents {
             data: x.clone(),
-            weights: weights.map(|weights| weights.weights().into()),
-            scaling,
-            route: self.route,
-            tolerance: self.tolerance,
-            mean: self.columns.mean,
-            scale: self.columns.scale,
-            deviation: self.columns.deviation,
-            variances: self.variances,
-            total_variance,
-            loadings: named(self.loadings, x.shared_variables()),
-            scores: match self.scores {
+            fitted: FittedComponents {
+                scaling: self.scaling,
+                route: fitted.route,
+                approximation: fitted.approximation,
+                n_rows: x.n_rows(),
+                is_weighted: self.weights.is_some(),
+                rank,
+                tolerance: fitted.tolerance,
+                mean: fitted.columns.mean,
+                scale: fitted.columns.scale,
+                deviation: fitted.columns.deviation,
+                variances: fitted.variances,
+                total_variance,
+                loadings: named(loadings, x.shared_variables()),
+                saved_scores: None,
+            },
+            weights: self.weights.map(|weights| weights.weights().into()),
+            scores: match scores {
                 Some(scores) => OnceLock::from(named(scores, x.shared_labels())),
                 None => OnceLock::new(),
             },
-        }
+        })
     }
+}
+
+fn is_trusted(roots: &DVector<f64>) -> bool {
+    roots[roots.len() - 1] >= TRUSTED * roots[0]
+}
+
+/// What rounding may add to each root of a cross-product of this order.
+fn rounding_of_roots(roots: &DVector<f64>) -> f64 {
+    roots.len() as f64 * f64::EPSILON * roots[0]
+}
+
+/// How many variances, which are descending, exceed the tolerance.
+fn rank(variances: &DVector<f64>, tolerance: f64) -> usize {
+    variances.iter().take_while(|variance| **variance > tolerance).count()
+}
+
+fn first_columns(matrix: DMatrix<f64>, count: usize) -> DMatrix<f64> {
+    if count == matrix.ncols() { matrix } else { matrix.columns(0, count).into_owned() }
 }

@@ -6,31 +6,42 @@
 //! size are in no particular order; loadings have unit length; in each component the loading of
 //! largest absolute value is positive, and of loadings tied for largest (to a relative 1e-8) the
 //! first in variable order. Components without variance are not reported: their number is the
-//! numerical rank, by a rule stated at [`PrincipalComponents::rank`].
+//! numerical rank, by a rule stated at [`FittedComponents::rank`].
 //!
 //! Sources: K. Pearson (1901), "On lines and planes of closest fit to systems of points in
 //! space"; H. Hotelling (1933), "Analysis of a complex of statistical variables into principal
 //! components"; I. T. Jolliffe (2002), "Principal Component Analysis", 2nd edition, chapters 1–3.
 //!
 //! In some fields "loading" means the correlation of a variable with a component. Here that is
-//! [`structure`](PrincipalComponents::structure), and loadings are the unit-length coefficients.
+//! [`structure`](FittedComponents::structure), and loadings are the unit-length coefficients.
 
+mod fitted;
 mod options;
 mod result;
 
 mod fit;
+mod randomised;
 
+mod columns;
 mod cross;
 mod exhibit;
+mod meaning;
+mod saved;
 pub(crate) mod scores;
 pub(crate) mod spectrum;
+mod supplementary;
+mod ties;
 pub(crate) mod views;
 
 #[cfg(test)]
 mod tests;
 
-pub use fit::principal_components;
-pub use options::{Route, Scaling};
+pub use fit::{principal_components, principal_components_with};
+pub use fitted::FittedComponents;
+pub use meaning::Communalities;
+pub use options::{ComponentOptions, Decomposition, RandomisedOptions, Route, Scaling};
+pub use randomised::Approximation;
 pub use result::{PrincipalComponents, Reconstruction};
+pub use supplementary::{SupplementaryColumns, SupplementaryGroups};
 
-pub(crate) use result::same_variables;
+pub(crate) use fitted::same_variables;

@@ -1,10 +1,17 @@
 //! Eigenvalues, singular values and the sign rule, on faer's kernels.
 
-use faer::Par;
 use faer::diag::DiagMut;
 use faer::dyn_stack::{MemBuffer, MemStack};
 use faer::linalg::evd::{ComputeEigenvectors, self_adjoint_evd, self_adjoint_evd_scratch};
+use faer::linalg::householder::{
+    apply_block_householder_sequence_on_the_left_in_place_scratch,
+    apply_block_householder_sequence_on_the_left_in_place_with_conj,
+};
+use faer::linalg::qr::no_pivoting::factor::{
+    qr_in_place, qr_in_place_scratch, recommended_block_size,
+};
 use faer::linalg::svd::{ComputeSvdVectors, svd, svd_scratch};
+use faer::{Conj, Par};
 use nalgebra::{DMatrix, DVector};
 
 use super::views::{PIECES, WORTH_CUTTING, view, view_mut};
@@ -100,6 +107,35 @@ pub(crate) fn singular(x: &DMatrix<f64>) -> Result<(DVector<f64>, DMatrix<f64>)>
     )
     .map_err(|_| Error::NoConvergence { method: "the singular value decomposition" })?;
     Ok((values, vectors))
+}
+
+/// Perpendicular columns of unit length that span the columns of a matrix, which has no more of
+/// them than rows, each close to its own where those were nearly perpendicular (Householder's QR).
+/// Columns that depend on those before them are replaced by arbitrary ones.
+pub(crate) fn orthonormal(mut columns: DMatrix<f64>) -> DMatrix<f64> {
+    let (n, p) = columns.shape();
+    let par = par(n.min(4 * p));
+    let block = recommended_block_size::<f64>(n, p);
+    let mut coefficients = DMatrix::zeros(block, p);
+    let scratch = qr_in_place_scratch::<f64>(n, p, block, par, Default::default());
+    qr_in_place(
+        view_mut(&mut columns),
+        view_mut(&mut coefficients),
+        par,
+        MemStack::new(&mut MemBuffer::new(scratch)),
+        Default::default(),
+    );
+    let mut basis = DMatrix::identity(n, p);
+    let scratch = apply_block_householder_sequence_on_the_left_in_place_scratch::<f64>(n, block, p);
+    apply_block_householder_sequence_on_the_left_in_place_with_conj(
+        view(&columns),
+        view(&coefficients),
+        Conj::No,
+        view_mut(&mut basis),
+        par,
+        MemStack::new(&mut MemBuffer::new(scratch)),
+    );
+    basis
 }
 
 /// One when the loading of largest absolute value is positive, minus one when it is negative.

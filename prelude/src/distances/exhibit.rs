@@ -130,7 +130,8 @@ fn limits(found: &TSquaredAndQ) -> Table {
     ))
     .note(
         "T²: Tracy, Young and Mason 1992. Q: Jackson and Mudholkar 1979; Box 1954; Wold and \
-         Sjöström 1977. All take rows as normal and directions as known.",
+         Sjöström 1977 (F ratio); Nomikos and MacGregor 1995 (matched moments). All take rows as \
+         normal and directions as known.",
     )
 }
 

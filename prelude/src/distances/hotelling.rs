@@ -5,7 +5,7 @@ use std::sync::Arc;
 use nalgebra::DVector;
 
 use super::contributions::Contributions;
-use super::limits::{QLimit, QRule, TSquaredRule, USUAL_COVERAGE, check_coverage, q_limits};
+use super::limits::{QLimit, QRule, Residuals, TSquaredRule, USUAL_COVERAGE, check_coverage};
 use super::model::{Plane, Squares};
 use crate::components::PrincipalComponents;
 use crate::error::{Error, Result};
@@ -47,15 +47,32 @@ pub fn t_squared_and_q(pca: &PrincipalComponents, n_components: usize) -> Result
     if pca.is_weighted() {
         return Err(Error::WeightsNotCovered { method: "a limit on T² or Q" });
     }
-    let plane = Arc::new(Plane::of(pca, n_components)?);
+    let plane = Plane::of(pca, n_components)?;
     let squares = plane.squares(pca.data())?;
-    Ok(TSquaredAndQ::new(plane, pca.data().clone(), squares, false, USUAL_COVERAGE))
+    let n = pca.n_rows() as f64;
+    let mean = squares.orthogonal.sum() / n;
+    let spread: f64 = squares.orthogonal.iter().map(|q| (q - mean).powi(2)).sum();
+    let residuals = Residuals {
+        left_out: plane.left_out.clone(),
+        mean,
+        variance: spread / (n - 1.0),
+        n_rows: plane.n_rows,
+        n_components,
+    };
+    let fit = Arc::new(Fit { plane, residuals });
+    Ok(TSquaredAndQ::new(fit, pca.data().clone(), squares, false, USUAL_COVERAGE))
+}
+
+#[derive(Debug)]
+struct Fit {
+    plane: Plane,
+    residuals: Residuals,
 }
 
 /// Hotelling's T² and the residual statistic Q of rows, with limits; made by [`t_squared_and_q`].
 #[derive(Debug, Clone)]
 pub struct TSquaredAndQ {
-    plane: Arc<Plane>,
+    fit: Arc<Fit>,
     rows: DataMatrix,
     new_rows: bool,
     coverage: f64,
@@ -67,18 +84,17 @@ pub struct TSquaredAndQ {
 
 impl TSquaredAndQ {
     fn new(
-        plane: Arc<Plane>,
+        fit: Arc<Fit>,
         rows: DataMatrix,
         squares: Squares,
         new_rows: bool,
         coverage: f64,
     ) -> Self {
-        let (n, k) = (plane.n_rows, plane.n_components());
-        let rule = rule(new_rows);
+        let (n, k) = (fit.plane.n_rows, fit.plane.n_components());
         TSquaredAndQ {
-            t_squared_limit: rule.limit(n, k, coverage),
-            q_limits: q_limits(&plane.left_out, n, k, coverage),
-            plane,
+            t_squared_limit: rule(new_rows).limit(n, k, coverage),
+            q_limits: fit.residuals.limits(coverage),
+            fit,
             rows,
             new_rows,
             coverage,
@@ -98,7 +114,7 @@ impl TSquaredAndQ {
         Ok(TSquaredAndQ {
             coverage,
             t_squared_limit: self.t_squared_rule().limit(n, k, coverage),
-            q_limits: q_limits(&self.plane.left_out, n, k, coverage),
+            q_limits: self.fit.residuals.limits(coverage),
             ..self.clone()
         })
     }
@@ -110,8 +126,8 @@ impl TSquaredAndQ {
     /// [`Error::VariablesDiffer`] unless the rows have the variables of the analysis in the same
     /// order.
     pub fn of(&self, rows: &DataMatrix) -> Result<TSquaredAndQ> {
-        let squares = self.plane.squares(rows)?;
-        Ok(TSquaredAndQ::new(self.plane.clone(), rows.clone(), squares, true, self.coverage))
+        let squares = self.fit.plane.squares(rows)?;
+        Ok(TSquaredAndQ::new(self.fit.clone(), rows.clone(), squares, true, self.coverage))
     }
 
     /// T² of each row. Over fitted rows they sum to K (n − 1).
@@ -141,15 +157,15 @@ impl TSquaredAndQ {
         &self.q_limits
     }
 
-    /// The limit on Q that rows are judged by: Jackson and Mudholkar's, or Box's where that does
-    /// not apply; `None` when no component is left out.
+    /// The limit on Q that rows are judged by: Jackson and Mudholkar's, or where that does not
+    /// apply Box's, or that of matched moments; `None` when no component is left out.
     pub fn q_limit(&self) -> Option<f64> {
         self.q_rule().and_then(|rule| self.q_limit_by(rule))
     }
 
     /// The rule behind [`q_limit`](Self::q_limit).
     pub fn q_rule(&self) -> Option<QRule> {
-        [QRule::JacksonMudholkar, QRule::Box]
+        [QRule::JacksonMudholkar, QRule::Box, QRule::Moments]
             .into_iter()
             .find(|rule| self.q_limit_by(*rule).is_some())
     }
@@ -175,7 +191,7 @@ impl TSquaredAndQ {
     ///
     /// [`Error::UnknownLabel`] with the nearest label.
     pub fn contributions(&self, label: &str) -> Result<Contributions> {
-        Contributions::of(&self.plane, &self.rows, label)
+        Contributions::of(&self.fit.plane, &self.rows, label)
     }
 
     /// The labels of the rows, in order.
@@ -190,12 +206,12 @@ impl TSquaredAndQ {
 
     /// The number n of rows that the components were fitted to.
     pub fn n_fitted_rows(&self) -> usize {
-        self.plane.n_rows
+        self.fit.plane.n_rows
     }
 
     /// The number K of components that are kept.
     pub fn n_components(&self) -> usize {
-        self.plane.n_components()
+        self.fit.plane.n_components()
     }
 
     /// The share of rows that follow the model and stay within a limit.

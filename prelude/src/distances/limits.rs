@@ -133,6 +133,13 @@ pub enum QRule {
     /// here it is given only while h = θ₁²/θ₂ is at least 0.8 q, that is while they scatter by at
     /// most half their mean (our convention).
     F,
+    /// A multiple of χ² matched to Q as the fitted rows have it: with m its mean and v its variance
+    /// (divisor n − 1) over those rows, (v / 2m) χ²_h with h = 2m²/v.
+    ///
+    /// P. Nomikos and J. F. MacGregor (1995), "Multivariate SPC charts for monitoring batch
+    /// processes", Technometrics 37, 41–59. It needs no variances, so that it also serves an
+    /// analysis that kept its first components only; a wild row in the table widens it.
+    Moments,
 }
 
 impl fmt::Display for QRule {
@@ -141,6 +148,7 @@ impl fmt::Display for QRule {
             QRule::JacksonMudholkar => "Jackson and Mudholkar",
             QRule::Box => "Box",
             QRule::F => "F ratio",
+            QRule::Moments => "matched moments",
         })
     }
 }
@@ -149,7 +157,7 @@ impl fmt::Display for QRule {
 #[derive(Debug, Clone, Copy, PartialEq)]
 pub struct QLimit {
     rule: QRule,
-    value: std::result::Result<f64, &'static str>,
+    value: Answer,
 }
 
 impl QLimit {
@@ -169,39 +177,77 @@ impl QLimit {
     }
 }
 
-/// What every rule says, from the variances that are left out.
-pub(crate) fn q_limits(left_out: &[f64], n: usize, k: usize, coverage: f64) -> Vec<QLimit> {
-    let theta = |power: i32| left_out.iter().map(|variance| variance.powi(power)).sum::<f64>();
-    let [one, two, three] = [1, 2, 3].map(theta);
-    let q = left_out.len() as f64;
-    let answer = |rule| {
-        let value = if left_out.is_empty() {
-            Err("no component is left out")
-        } else {
-            match rule {
-                QRule::JacksonMudholkar => jackson_mudholkar(one, two, three, coverage),
-                QRule::Box => Ok(two / one * chi_squared_quantile(coverage, one * (one / two))),
-                QRule::F if n <= k + 1 => Err("no degrees of freedom are left"),
-                QRule::F if one * (one / two) < 0.8 * q => {
-                    Err("the variances left out are too unequal")
-                }
-                QRule::F => {
-                    let left = (n - k - 1) as f64;
-                    Ok(one * (n as f64 - 1.0) / left * f_quantile(coverage, q, q * left))
-                }
-            }
-        };
-        QLimit { rule, value }
-    };
-    [QRule::JacksonMudholkar, QRule::Box, QRule::F].map(answer).to_vec()
+/// What the limits on Q are computed from.
+#[derive(Debug, Clone)]
+pub(crate) struct Residuals {
+    /// The variances that are left out, if they are known one by one.
+    pub(crate) left_out: Option<Vec<f64>>,
+    /// The mean and the variance (divisor n − 1) of Q over the fitted rows.
+    pub(crate) mean: f64,
+    pub(crate) variance: f64,
+    pub(crate) n_rows: usize,
+    pub(crate) n_components: usize,
 }
+
+type Answer = std::result::Result<f64, &'static str>;
+
+impl Residuals {
+    /// What every rule says.
+    pub(crate) fn limits(&self, coverage: f64) -> Vec<QLimit> {
+        [QRule::JacksonMudholkar, QRule::Box, QRule::F, QRule::Moments]
+            .map(|rule| QLimit { rule, value: self.limit(rule, coverage) })
+            .to_vec()
+    }
+
+    fn limit(&self, rule: QRule, coverage: f64) -> Answer {
+        if self.left_out.as_ref().is_some_and(Vec::is_empty) {
+            return Err("no component is left out");
+        }
+        if rule == QRule::Moments {
+            return self.by_moments(coverage);
+        }
+        let Some(left_out) = &self.left_out else {
+            return Err("the analysis kept its first components only");
+        };
+        let theta = |power: i32| left_out.iter().map(|variance| variance.powi(power)).sum::<f64>();
+        let [one, two, three] = [1, 2, 3].map(theta);
+        match rule {
+            QRule::JacksonMudholkar => jackson_mudholkar(one, two, three, coverage),
+            QRule::Box => Ok(two / one * chi_squared_quantile(coverage, one * (one / two))),
+            _ => self.by_ratio(left_out.len() as f64, one, two, coverage),
+        }
+    }
+
+    fn by_ratio(&self, q: f64, one: f64, two: f64, coverage: f64) -> Answer {
+        let Some(left @ 1..) = self.n_rows.checked_sub(self.n_components + 1) else {
+            return Err("no degrees of freedom are left");
+        };
+        if one * (one / two) < EVEN * q {
+            return Err("the variances left out are too unequal");
+        }
+        let (n, left) = (self.n_rows as f64, left as f64);
+        Ok(one * (n - 1.0) / left * f_quantile(coverage, q, q * left))
+    }
+
+    fn by_moments(&self, coverage: f64) -> Answer {
+        // Written so that NaN, of a single row, fails as well.
+        if !(self.mean > 0.0 && self.variance > 0.0) {
+            return Err("Q does not vary over the fitted rows");
+        }
+        let freedom = 2.0 * self.mean * (self.mean / self.variance);
+        Ok(self.mean / freedom * chi_squared_quantile(coverage, freedom))
+    }
+}
+
+/// The least share of q that h must be for variances to pass as equal; see [`QRule::F`].
+const EVEN: f64 = 0.8;
 
 fn jackson_mudholkar(
     one: f64,
     two: f64,
     three: f64,
     coverage: f64,
-) -> std::result::Result<f64, &'static str> {
+) -> Answer {
     let power = 1.0 - 2.0 * (one / two) * (three / two) / 3.0;
     if power.abs() < 1e-6 {
         return Err("its power h₀ is zero");

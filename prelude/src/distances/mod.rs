@@ -33,7 +33,7 @@ mod tests;
 pub use contributions::Contributions;
 pub use hotelling::{TSquaredAndQ, t_squared_and_q};
 pub use limits::{QLimit, QRule, TSquaredRule};
-pub use model::FittedComponents;
+pub use model::ComponentModel;
 pub use result::{Distances, Standing, distances, distances_of};
 
 pub(crate) use exhibit::CAUTION;

@@ -14,7 +14,7 @@ use crate::table::{DataMatrix, NamedMatrix};
 ///
 /// Throughout, p is the number of variables and r that of components. The trait is not meant to be
 /// implemented elsewhere.
-pub trait FittedComponents: sealed::Sealed {
+pub trait ComponentModel: sealed::Sealed {
     /// The rows that the components were fitted to.
     fn data(&self) -> &DataMatrix;
 
@@ -30,6 +30,10 @@ pub trait FittedComponents: sealed::Sealed {
     /// The variances of the components, descending, r values.
     fn variances(&self) -> &DVector<f64>;
 
+    /// Whether no component was left out, by choice or for speed, before the model was made: only
+    /// then are the variances beyond the kept components known one by one.
+    fn is_complete(&self) -> bool;
+
     /// Whether rows that do not belong were kept from deciding on the components.
     fn is_robust(&self) -> bool;
 
@@ -43,25 +47,29 @@ pub(crate) mod sealed {
 
 impl sealed::Sealed for PrincipalComponents {}
 
-impl FittedComponents for PrincipalComponents {
+impl ComponentModel for PrincipalComponents {
     fn data(&self) -> &DataMatrix {
         self.data()
     }
 
     fn centre(&self) -> &DVector<f64> {
-        self.mean()
+        (**self).mean()
     }
 
     fn scale(&self) -> &DVector<f64> {
-        self.scale()
+        (**self).scale()
     }
 
     fn loadings(&self) -> &NamedMatrix {
-        self.loadings()
+        (**self).loadings()
     }
 
     fn variances(&self) -> &DVector<f64> {
-        self.variances()
+        (**self).variances()
+    }
+
+    fn is_complete(&self) -> bool {
+        (**self).is_complete()
     }
 
     fn is_robust(&self) -> bool {
@@ -83,8 +91,8 @@ pub(crate) struct Plane {
     pub(crate) loadings: DMatrix<f64>,
     /// k of them, all above zero.
     pub(crate) variances: DVector<f64>,
-    /// Of the components that are not kept.
-    pub(crate) left_out: Vec<f64>,
+    /// Of the components that are not kept; none when they are not known one by one.
+    pub(crate) left_out: Option<Vec<f64>>,
     /// Rows that the components were fitted to.
     pub(crate) n_rows: usize,
 }
@@ -107,7 +115,7 @@ pub(crate) struct Split {
 
 impl Plane {
     /// The plane of the first `k` components.
-    pub(crate) fn of(model: &impl FittedComponents, k: usize) -> Result<Self> {
+    pub(crate) fn of(model: &impl ComponentModel, k: usize) -> Result<Self> {
         let available = model.variances().len();
         if !(1..=available).contains(&k) {
             return Err(Error::ComponentOutOfRange { asked: k, available });
@@ -118,7 +126,9 @@ impl Plane {
             scale: model.scale().clone(),
             loadings: model.loadings().values().columns(0, k).into_owned(),
             variances: model.variances().rows(0, k).into_owned(),
-            left_out: model.variances().iter().skip(k).copied().collect(),
+            left_out: model
+                .is_complete()
+                .then(|| model.variances().iter().skip(k).copied().collect()),
             n_rows: model.data().n_rows(),
         })
     }
@@ -135,7 +145,7 @@ impl Plane {
     pub(crate) fn squares(&self, x: &DataMatrix) -> Result<Squares> {
         same_variables(&self.variables, x.variables())?;
         let values = x.values();
-        let scores = project_rows(values, &self.centre, &self.scale, &self.loadings);
+        let scores = project_rows(values, &self.centre, &self.scale, &self.loadings, || false);
         let described = product(&scores, &self.loadings);
         let mut score = DVector::zeros(x.n_rows());
         for (column, variance) in scores.column_iter().zip(self.variances.iter()) {

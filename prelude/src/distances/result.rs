@@ -9,7 +9,7 @@ use super::contributions::Contributions;
 use super::limits::{
     USUAL_COVERAGE, check_coverage, orthogonal_limit, orthogonal_moments, score_limit,
 };
-use super::model::{FittedComponents, Plane};
+use super::model::{ComponentModel, Plane};
 use crate::error::Result;
 use crate::table::DataMatrix;
 
@@ -52,7 +52,7 @@ use crate::table::DataMatrix;
 /// # Errors
 ///
 /// [`Error::ComponentOutOfRange`](crate::Error::ComponentOutOfRange) unless 1 ≤ K ≤ r.
-pub fn distances(model: &impl FittedComponents, n_components: usize) -> Result<Distances> {
+pub fn distances(model: &impl ComponentModel, n_components: usize) -> Result<Distances> {
     let plane = Plane::of(model, n_components)?;
     fitted_distances(plane, model.data(), model.trusted_share(), model.is_robust())
 }
@@ -70,7 +70,7 @@ pub(crate) fn fitted_distances(
     } else {
         None
     };
-    let rounding = ROUNDING * (plane.variances.sum() + plane.left_out.iter().sum::<f64>()).sqrt();
+    let rounding = ROUNDING * plane.variances.sum().sqrt();
     let fit = Arc::new(Fit { plane, off, rounding, robust });
     Ok(Distances::new(fit, data.clone(), squares, false, USUAL_COVERAGE))
 }
@@ -96,14 +96,15 @@ pub(crate) fn fitted_distances(
 /// Those of [`distances`]; [`Error::VariablesDiffer`](crate::Error::VariablesDiffer) unless the
 /// rows have the variables of the analysis in the same order.
 pub fn distances_of(
-    model: &impl FittedComponents,
+    model: &impl ComponentModel,
     n_components: usize,
     rows: &DataMatrix,
 ) -> Result<Distances> {
     distances(model, n_components)?.of(rows)
 }
 
-/// An orthogonal distance of up to this share of the root of the total variance counts as rounding.
+/// An orthogonal distance of up to this share of the root of the kept components' variance counts
+/// as rounding.
 const ROUNDING: f64 = 1e-8;
 
 /// How a row stands beside the others.
@@ -232,7 +233,7 @@ impl Distances {
 
     /// The cut-off for orthogonal distances. `None` when the components span all variables, so
     /// that no row can be off them, and when there are fewer than three rows. It is at least 1e-8
-    /// of the root of the total variance, which is what rounding may leave where the kept
+    /// of the root of the variance of the kept components, which is what rounding may leave where the kept
     /// components describe the fitted rows exactly.
     pub fn orthogonal_limit(&self) -> Option<f64> {
         let moments = self.fit.off?;

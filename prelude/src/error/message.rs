@@ -219,6 +219,47 @@ impl fmt::Display for Error {
             Error::ShapeMismatch { what, expected, found } => {
                 write!(f, "{what}: {expected} needed, {found} given")
             }
+            Error::OutsideDomain { action, column, row, label, value, accepted } => {
+                write!(f, "{action}: column {} holds {value} in row {row}", Name(column))?;
+                if *label != row.to_string() {
+                    write!(f, " ({})", Name(label))?;
+                }
+                write!(f, "; accepted: {accepted}")
+            }
+            Error::NoSpread { columns, measure } => {
+                write!(f, "columns without {measure}: ")?;
+                list(f, columns, |f, (name, middle)| write!(f, "{} about {middle}", Name(name)))?;
+                write!(f, "; leave them out, or transform the others by name with `.of([…])`")
+            }
+            Error::TransformationsDiffer { wanted, found } => {
+                let chain = |f: &mut fmt::Formatter<'_>, chain: &[String]| match chain {
+                    [] => write!(f, "none"),
+                    chain => list(f, chain, |f, step| write!(f, "{}", Plain(step))),
+                };
+                write!(f, "the transformations differ; expected: ")?;
+                chain(f, wanted)?;
+                write!(f, "; found: ")?;
+                chain(f, found)?;
+                if wanted == found {
+                    write!(f, ", fitted to other rows")?;
+                }
+                write!(
+                    f,
+                    "; bring rows as they were measured, and repeat the transformations with "
+                )?;
+                write!(f, "`.transformed_as(…)`")
+            }
+            Error::SavedForm { part, found, accepted } => {
+                write!(f, "cannot read back what was saved: {} is ", Plain(part))?;
+                write!(f, "{}; accepted: {}", Plain(found), Plain(accepted))
+            }
+            Error::SavedVersion { format, found, known } => write!(
+                f,
+                "what was saved has version {found} of \"{format}\"; this library knows version {known}"
+            ),
+            Error::NotSaved { what, remedy } => {
+                write!(f, "the analysis was saved without its {what}; {remedy}")
+            }
             Error::TooFewRows { method, needed, found } => {
                 write!(
                     f,
@@ -292,10 +333,29 @@ impl fmt::Display for Error {
                 if let Some((place, wanted, found)) = order {
                     write!(f, "; place {place} holds {} instead of {}", Name(found), Name(wanted))?;
                 }
+                if missing.is_empty() {
+                    write!(f, "; bring them into its order with `x.select(pca.variables())?`")?;
+                }
+                Ok(())
+            }
+            Error::RowsDiffer { missing, extra } => {
+                write!(f, "the rows are not those of the analysis")?;
+                if !missing.is_empty() {
+                    write!(f, "; missing: {}", Names(missing))?;
+                }
+                if !extra.is_empty() {
+                    write!(f, "; unknown to it: {}", Names(extra))?;
+                }
+                if missing.is_empty() {
+                    write!(f, "; bring them into its order with `x.select_rows(pca.labels())?`")?;
+                }
                 Ok(())
             }
             Error::OptionOutOfRange { option, value, accepted } => {
                 write!(f, "the option `{option}` is {value}; accepted: {accepted}")
+            }
+            Error::OptionNeeded { option, needed_by } => {
+                write!(f, "{needed_by} needs the option `{option}`")
             }
             Error::Interrupted => write!(f, "the computation was asked to stop"),
             Error::SettingNotForChart { setting, chart, available } => {

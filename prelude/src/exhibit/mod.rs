@@ -22,7 +22,11 @@ mod text;
 #[cfg(test)]
 mod tests;
 
-pub use chart::{Chart, NUMBERS, Names, Reference, biplot, loading_plot, score_plot, scree};
+pub use chart::{
+    Chart, Intervals, NUMBERS, Names, Reference, Turntable, biplot, correlation_map, loading_bars,
+    loading_plot, pairs, profiles, score_matrix, score_plot, scree, structure_circle, turntable,
+    variance_shares,
+};
 pub use numbers::{fixed, significant, stored};
 pub use tables::{NumberFormat, Table, TableColumn};
 

@@ -10,7 +10,7 @@ use super::options::RobustOptions;
 use super::projection::{Projected, project};
 use crate::components::scores::project_rows;
 use crate::components::{Scaling, same_variables, spectrum};
-use crate::distances::{Distances, FittedComponents, Plane, fitted_distances, sealed};
+use crate::distances::{Distances, ComponentModel, Plane, fitted_distances, sealed};
 use crate::error::{Error, Result};
 use crate::live::seed;
 use crate::quantile::median;
@@ -195,14 +195,14 @@ impl Found {
             }
         }
         let names: Arc<[String]> = (1..=self.variances.len()).map(|k| format!("PC{k}")).collect();
-        let scores = project_rows(x.values(), &self.centre, &self.scale, &self.loadings);
+        let scores = project_rows(x.values(), &self.centre, &self.scale, &self.loadings, || false);
         let plane = Plane {
             variables: x.shared_variables(),
             centre: self.centre.clone(),
             scale: self.scale.clone(),
             loadings: self.loadings.clone(),
             variances: self.variances.clone(),
-            left_out: Vec::new(),
+            left_out: None,
             n_rows: x.n_rows(),
         };
         let trusted = self.subset_size as f64 / x.n_rows() as f64;
@@ -295,7 +295,7 @@ impl RobustComponents {
     pub fn project(&self, x: &DataMatrix) -> Result<NamedMatrix> {
         same_variables(self.variables(), x.variables())?;
         let loadings = self.loadings.values();
-        let scores = project_rows(x.values(), &self.centre, &self.scale, loadings);
+        let scores = project_rows(x.values(), &self.centre, &self.scale, loadings, || false);
         NamedMatrix::new(scores, x.shared_labels(), self.loadings.shared_column_names())
     }
 
@@ -381,7 +381,7 @@ impl RobustComponents {
 
 impl sealed::Sealed for RobustComponents {}
 
-impl FittedComponents for RobustComponents {
+impl ComponentModel for RobustComponents {
     fn data(&self) -> &DataMatrix {
         &self.data
     }
@@ -400,6 +400,10 @@ impl FittedComponents for RobustComponents {
 
     fn variances(&self) -> &DVector<f64> {
         &self.variances
+    }
+
+    fn is_complete(&self) -> bool {
+        self.n_components() == self.n_variables()
     }
 
     fn is_robust(&self) -> bool {

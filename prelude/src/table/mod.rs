@@ -36,3 +36,5 @@ pub use named::NamedMatrix;
 pub use notes::{DroppedRow, LabelSource, LeftOut, LeftOutReason, MatrixNotes};
 pub use options::{Label, MatrixOptions, Missing};
 pub use read::{READABLE, TableOptions, read_table, read_table_with};
+
+pub(crate) use matrix::check_names;

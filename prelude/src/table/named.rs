@@ -67,6 +67,10 @@ impl NamedMatrix {
         &self.column_names
     }
 
+    pub(crate) fn shared_row_names(&self) -> Arc<[String]> {
+        self.row_names.clone()
+    }
+
     pub(crate) fn shared_column_names(&self) -> Arc<[String]> {
         self.column_names.clone()
     }

@@ -6,5 +6,7 @@ mod outliers;
 mod parallel;
 mod robust;
 mod tables;
+mod transform;
+mod weights_and_meaning;
 
 mod files;

@@ -53,6 +53,7 @@ fn limits_are_those_of_thirty_digits() {
             check(found.q_limit_by(QRule::JacksonMudholkar), "jackson_mudholkar");
             check(found.q_limit_by(QRule::Box), "box");
             check(new.q_limit_by(QRule::Box), "box");
+            check(new.q_limit_by(QRule::Moments), "moments");
             assert_eq!(found.q_limit(), found.q_limit_by(QRule::JacksonMudholkar));
             match found.q_limit_by(QRule::F) {
                 Some(limit) => check(Some(limit), "f"),

@@ -61,8 +61,8 @@ fn scatter_of_published_data_sets_is_that_of_another_program() {
         let raw = matrix(&case["raw_covariance"]) * divisor;
         assert_matrix(scatter.raw_covariance(), &raw, close, &what);
         assert_matrix(scatter.covariance(), &matrix(&case["covariance"]), close, &what);
-        let found = scatter.distances().as_slice();
-        assert_all_relative(found, &numbers(&case["distances"]), 1e-8, &what);
+        let found = column(scatter.distances().as_slice());
+        assert_matrix(&found, &column(&numbers(&case["distances"])), close, &what);
         let kept: Vec<f64> =
             scatter.kept().iter().map(|kept| if *kept { 1.0 } else { 0.0 }).collect();
         assert_eq!(kept, numbers(&case["kept"]), "{what}");
@@ -137,7 +137,7 @@ fn rows_that_the_literature_names_are_flagged() {
 
 /// rrcov takes other random directions (5 000 of them, as here) and other moments for the cut-off
 /// of orthogonal distances (a seventh apart at most), so that the rows behind the last step differ
-/// by a few. Directions must agree within three degrees, variances within a twentieth, and for the
+/// by a few. Directions must agree within four degrees, variances within a twentieth, and for the
 /// two tables with published outliers the same rows must lie beyond the cut-offs.
 #[test]
 fn components_by_projections_are_near_those_of_another_program() {
@@ -151,7 +151,7 @@ fn components_by_projections_are_near_those_of_another_program() {
         let cosines = robust.loadings().values().tr_mul(&matrix(&case["loadings"]));
         for component in 0..k {
             let cosine = cosines[(component, component)].abs();
-            assert!(cosine > 3.0_f64.to_radians().cos(), "{what}: {cosine}");
+            assert!(cosine > 4.0_f64.to_radians().cos(), "{what}: {cosine}");
         }
         let found = robust.distances();
         let score_limit = case["score_limit"].as_f64().unwrap();

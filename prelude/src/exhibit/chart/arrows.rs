@@ -23,6 +23,14 @@ pub(super) struct Arrows {
     tips: Vec<(f64, f64)>,
     names: Vec<String>,
     threshold: f64,
+    measure: Measure,
+}
+
+/// What the lengths of arrows along the axes are.
+#[derive(Debug, Clone, Copy, PartialEq, Eq)]
+enum Measure {
+    Loading,
+    Correlation,
 }
 
 impl Arrows {
@@ -38,7 +46,15 @@ impl Arrows {
         // two such components is √(2/p) long.
         let n_drawn = 1.0 + f64::from(u8::from(components.1.is_some()));
         let threshold = (n_drawn / source.variables.len() as f64).sqrt();
-        Arrows { components, tips: x.into_iter().zip(y).collect(), names, threshold }
+        let tips = x.into_iter().zip(y).collect();
+        Arrows { components, tips, names, threshold, measure: Measure::Loading }
+    }
+
+    /// Takes the lengths as correlations; those that describe less than half of their variable's
+    /// variance are small.
+    pub fn as_correlations(self) -> Self {
+        let threshold = std::f64::consts::FRAC_1_SQRT_2;
+        Arrows { threshold, measure: Measure::Correlation, ..self }
     }
 
     pub fn tips(&self) -> &[(f64, f64)] {
@@ -133,12 +149,18 @@ impl Arrows {
         }
         let n_small = drawn.iter().copied().filter(|&variable| self.is_small(variable)).count();
         if n_small > 0 {
-            let limit = if self.components.1.is_some() { "√(2/p)" } else { "√(1/p)" };
-            notes.push(format!(
-                "Thin and grey: {} shorter than {limit} = {}, the length when all variables share equally.",
-                counted(n_small, "arrow"),
-                fixed(self.threshold, 3)
-            ));
+            let what = match (self.measure, self.components.1) {
+                (Measure::Correlation, _) => "√½ = 0.707, the length at which half of the \
+                                              variable's variance is described"
+                    .to_owned(),
+                (Measure::Loading, second) => format!(
+                    "√({}/p) = {}, the length when all variables share equally",
+                    if second.is_some() { 2 } else { 1 },
+                    fixed(self.threshold, 3)
+                ),
+            };
+            notes
+                .push(format!("Thin and grey: {} shorter than {what}.", counted(n_small, "arrow")));
         }
         let n_names = drawn.iter().filter(|&&v| !self.names[v].trim().is_empty()).count();
         let n_unnamed = n_names - n_named;
@@ -170,10 +192,11 @@ impl Arrows {
                     format!("{} ({})", shortened(&self.names[v], 40), fixed(of(&self.tips[v]), 3))
                 })
                 .collect();
-            words.push_str(&format!(
-                " Largest loadings on component {component}: {}.",
-                top.join(", ")
-            ));
+            let what = match self.measure {
+                Measure::Loading => "Largest loadings on",
+                Measure::Correlation => "Largest correlations with",
+            };
+            words.push_str(&format!(" {what} component {component}: {}.", top.join(", ")));
         }
         words
     }
@@ -194,7 +217,8 @@ impl Arrows {
     // The shortest first, so that long arrows are drawn over short ones.
     fn by_length(&self) -> Vec<usize> {
         let length = |variable: usize| self.tips[variable].0.hypot(self.tips[variable].1);
-        let mut order: Vec<usize> = (0..self.tips.len()).collect();
+        let drawable = |variable: &usize| length(*variable).is_finite();
+        let mut order: Vec<usize> = (0..self.tips.len()).filter(drawable).collect();
         order.sort_by(|&a, &b| length(a).total_cmp(&length(b)).then(b.cmp(&a)));
         order
     }
@@ -205,7 +229,11 @@ impl Arrows {
         for (component, value) in [(self.components.0, x), (self.components.1, y)] {
             if let Some(component) = component {
                 let value = typographic(&fixed(value, 3));
-                text.push_str(&format!(" · loading on component {component}: {value}"));
+                let what = match self.measure {
+                    Measure::Loading => "loading on",
+                    Measure::Correlation => "correlation with",
+                };
+                text.push_str(&format!(" · {what} component {component}: {value}"));
             }
         }
         text

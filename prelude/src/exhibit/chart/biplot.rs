@@ -60,7 +60,7 @@ impl Picture for Biplot {
     }
 
     fn takes(&self) -> &'static [Setting] {
-        &[Setting::Components, Setting::Groups, Setting::Labels, Setting::Coverage]
+        &[Setting::Components, Setting::Groups, Setting::Labels, Setting::Coverage, Setting::Hulls]
     }
 
     fn check(&self, settings: &Settings) -> Result<()> {
@@ -68,8 +68,8 @@ impl Picture for Biplot {
         settings.check_units(self.source.scores.nrows())
     }
 
-    fn draw(&self, settings: &Settings) -> Drawing {
-        draw(&self.source, settings)
+    fn draw(&self, settings: &Settings) -> Result<Drawing> {
+        Ok(draw(&self.source, settings))
     }
 }
 

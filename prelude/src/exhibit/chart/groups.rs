@@ -4,6 +4,7 @@ use std::collections::HashMap;
 
 use super::card::{LegendEntry, LegendSign};
 use super::ellipse::{Ellipse, mean};
+use super::hull::hull;
 use super::marks::push_mark;
 use super::palette::{Cue, INK, NO_GROUP, Shape, cue};
 use super::plane::{Extent, Plane};
@@ -29,7 +30,7 @@ pub(super) struct Group {
 }
 
 impl Groups {
-    /// Groups by name, or all units in one; with ellipses where a coverage says so.
+    /// Groups by name, or all units in one; with ellipses where a coverage is given.
     pub fn new(
         names: Option<&[Option<String>]>,
         points: &[(f64, f64)],
@@ -39,7 +40,6 @@ impl Groups {
             Some(names) => by_name(names),
             None => vec![Group::new("", cue(0), (0..points.len()).collect())],
         };
-        let coverage = coverage.or(names.is_some().then_some(0.95));
         for group in &mut list {
             let members: Vec<(f64, f64)> = group.members.iter().map(|&unit| points[unit]).collect();
             group.centre = mean(&members);
@@ -114,14 +114,47 @@ impl Groups {
         }
     }
 
-    /// A larger mark at the mean of each group that has an ellipse.
+    /// The convex hull around each group, or around all units.
+    pub fn draw_hulls(&self, svg: &mut Svg, plane: &Plane, points: &[(f64, f64)]) {
+        for group in self.list.iter().filter(|group| group.cue.color != NO_GROUP) {
+            let corners = hull(group.members.iter().map(|&unit| points[unit]));
+            if corners.len() < 3 {
+                continue;
+            }
+            let mut path = String::new();
+            for (place, (x, y)) in corners.iter().enumerate() {
+                let (x, y) = plane.place(*x, *y);
+                path.push(if place == 0 { 'M' } else { 'L' });
+                path.push_str(&format!("{} {}", tenth(x), tenth(y)));
+            }
+            path.push('z');
+            let name = if self.are_set { &group.name } else { "all units" };
+            svg.element("path")
+                .with("class", "hull")
+                .with("d", &path)
+                .with("fill", group.cue.color)
+                .with("fill-opacity", ".07")
+                .with("stroke", group.cue.color)
+                .with("stroke-width", "1.3")
+                .with("stroke-linejoin", "round")
+                .around(|svg| {
+                    svg.element("title").text(&format!("hull of {}", shortened(name, 60)));
+                });
+        }
+    }
+
+    /// A larger mark at the mean of each group of three and more.
     pub fn draw_centres(&self, svg: &mut Svg, plane: &Plane) {
         if !self.are_set {
             return;
         }
         let centres = svg.element("g").with("class", "centres").with("stroke", INK);
         centres.with("stroke-width", "1.4").around(|svg| {
-            for group in self.list.iter().filter(|group| group.ellipse.is_some()) {
+            for group in self
+                .list
+                .iter()
+                .filter(|group| group.members.len() > 2 && group.cue.color != NO_GROUP)
+            {
                 let title = format!(
                     "centre of {} · {} · {}, {}",
                     shortened(&group.name, 60),

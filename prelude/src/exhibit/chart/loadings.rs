@@ -56,8 +56,8 @@ impl Picture for Loadings {
         settings.check_variables(self.source.variables.len())
     }
 
-    fn draw(&self, settings: &Settings) -> Drawing {
-        draw(&self.source, settings)
+    fn draw(&self, settings: &Settings) -> Result<Drawing> {
+        Ok(draw(&self.source, settings))
     }
 }
 

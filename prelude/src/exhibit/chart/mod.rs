@@ -16,10 +16,18 @@ mod picture;
 mod settings;
 mod source;
 
+mod bars;
 mod biplot;
+mod circle;
+mod correlations;
 mod loadings;
+mod matrix;
+mod pairs;
+mod profiles;
 mod scores;
 mod scree;
+mod shares;
+mod turntable;
 
 mod arrows;
 mod groups;
@@ -28,6 +36,8 @@ mod units;
 
 mod card;
 mod ellipse;
+mod frame;
+mod hull;
 mod labels;
 mod marks;
 mod measure;
@@ -43,12 +53,20 @@ mod tests;
 use std::path::Path;
 use std::sync::Arc;
 
+pub use bars::loading_bars;
 pub use biplot::biplot;
+pub use circle::structure_circle;
+pub use correlations::correlation_map;
 pub use loadings::loading_plot;
+pub use matrix::score_matrix;
 pub use names::Names;
+pub use pairs::pairs;
+pub use profiles::profiles;
 pub use scores::score_plot;
 pub use scree::scree;
-pub use settings::Reference;
+pub use settings::{Intervals, Reference};
+pub use shares::variance_shares;
+pub use turntable::{Turntable, turntable};
 
 use self::card::Card;
 use self::picture::{Drawing, Picture};
@@ -132,6 +150,24 @@ impl Chart {
         self
     }
 
+    /// How many leading components to draw, in charts that draw several side by side.
+    pub fn first(mut self, n_components: usize) -> Self {
+        self.settings.first = Some(n_components);
+        self
+    }
+
+    /// Adds a whisker to each loading.
+    pub fn intervals(mut self, intervals: impl Into<Intervals>) -> Self {
+        self.settings.intervals = Some(intervals.into());
+        self
+    }
+
+    /// Draws the convex hull around the units of each group, or around all units.
+    pub fn hulls(mut self) -> Self {
+        self.settings.hulls = true;
+        self
+    }
+
     /// Whether the settings fit the analysis.
     ///
     /// # Errors
@@ -167,7 +203,7 @@ impl Chart {
 
     fn draw(&self) -> Result<Drawing> {
         self.check()?;
-        Ok(self.picture.draw(&self.settings))
+        self.picture.draw(&self.settings)
     }
 }
 

@@ -37,6 +37,50 @@ pub(super) const COUNTS: [&str; 5] = ["#e6e2d9", "#d0cbc0", "#b5afa3", "#989287"
 pub(super) const SEGMENTS: [(&str, &str); 4] =
     [("#2d2582", CARD), ("#463f9d", CARD), ("#97a9d4", INK), ("#c9d3e6", INK)];
 
+/// Components that add up in one bar, first to fourth.
+pub(super) const LAYERS: [&str; 4] = ["#2d2582", "#7d78bd", "#b3bfe0", "#d9d3c3"];
+
+/// The full colours of what is positive and what is negative, for shades that grow from the card's
+/// ground. They differ in lightness, and a sign or a stroke is always the second cue.
+pub(super) const POSITIVE: &str = "#2d2582";
+/// See [`POSITIVE`].
+pub(super) const NEGATIVE: &str = "#b98a2b";
+
+/// The shade of a value between −1 and 1, from the ground of the card to a full colour, and the
+/// ink that can be read on it.
+pub(super) fn shade(value: f64) -> (String, &'static str) {
+    let full = if value < 0.0 { NEGATIVE } else { POSITIVE };
+    let weight = value.abs().clamp(0.0, 1.0);
+    let mixed = mix(CARD, full, weight);
+    // At this luminance black and white ink have the same contrast, 4.58 (WCAG 2.2).
+    let ink = if luminance(&mixed) > 0.179 { "#000000" } else { "#ffffff" };
+    (mixed, ink)
+}
+
+/// The relative luminance of a colour (WCAG 2.2, after IEC 61966-2-1).
+fn luminance(hex: &str) -> f64 {
+    let linear = |at: usize| {
+        let s = channel(hex, at) / 255.0;
+        if s <= 0.04045 { s / 12.92 } else { ((s + 0.055) / 1.055).powf(2.4) }
+    };
+    0.2126 * linear(1) + 0.7152 * linear(3) + 0.0722 * linear(5)
+}
+
+fn channel(hex: &str, at: usize) -> f64 {
+    let digits = hex.get(at..at + 2).and_then(|digits| u8::from_str_radix(digits, 16).ok());
+    f64::from(digits.unwrap_or(0))
+}
+
+/// A colour between two, each channel in proportion.
+fn mix(from: &str, to: &str, weight: f64) -> String {
+    let mut out = String::from("#");
+    for at in [1, 3, 5] {
+        let (a, b) = (channel(from, at), channel(to, at));
+        out.push_str(&format!("{:02x}", (a + (b - a) * weight).round() as u8));
+    }
+    out
+}
+
 /// The shape of a mark.
 #[derive(Debug, Clone, Copy, PartialEq, Eq)]
 pub(super) enum Shape {
@@ -232,6 +276,33 @@ mod tests {
         }
         // Checked against the definition: black on white is 21 to 1.
         assert!((contrast("#000000", "#ffffff") - 21.0).abs() < 1e-9);
+    }
+
+    #[test]
+    fn numbers_can_be_read_on_every_shade() {
+        for step in -100..=100 {
+            let value = f64::from(step) / 100.0;
+            let (ground, ink) = shade(value);
+            assert!(contrast(&ground, ink) >= 4.5, "{value}: {ink} on {ground}");
+        }
+    }
+
+    #[test]
+    fn shades_of_opposite_sign_differ_in_every_sight() {
+        for sight in [&NORMAL, &PROTANOPIA, &DEUTERANOPIA, &TRITANOPIA] {
+            let colors = [shade(0.8).0, shade(-0.8).0, shade(0.0).0];
+            assert!(smallest_distance(&colors.each_ref().map(String::as_str), sight) > 30.0);
+        }
+    }
+
+    #[test]
+    fn layers_that_touch_differ_in_every_sight() {
+        for sight in [&NORMAL, &PROTANOPIA, &DEUTERANOPIA, &TRITANOPIA] {
+            for pair in LAYERS.windows(2) {
+                let found = smallest_distance(pair, sight);
+                assert!(found > 15.0, "{pair:?}: {found:.1}");
+            }
+        }
     }
 
     #[test]

@@ -26,7 +26,7 @@ pub(super) trait Picture: Debug + Send + Sync {
     fn check(&self, settings: &Settings) -> Result<()>;
 
     /// Draws with settings that were checked.
-    fn draw(&self, settings: &Settings) -> Drawing;
+    fn draw(&self, settings: &Settings) -> Result<Drawing>;
 }
 
 /// Numbers as they are handed on: twelve significant digits, more than a chart can show and fewer

@@ -71,8 +71,8 @@ impl Picture for Scree {
         settings.check_references(&self.source)
     }
 
-    fn draw(&self, settings: &Settings) -> Drawing {
-        draw(&self.source, settings)
+    fn draw(&self, settings: &Settings) -> Result<Drawing> {
+        Ok(draw(&self.source, settings))
     }
 }
 

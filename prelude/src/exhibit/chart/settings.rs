@@ -2,6 +2,8 @@
 
 use std::collections::HashSet;
 
+use nalgebra::DMatrix;
+
 use super::picture::Picture;
 use super::source::Source;
 use crate::components::Scaling;
@@ -51,6 +53,9 @@ pub(super) enum Setting {
     Labels,
     Coverage,
     Reference,
+    First,
+    Intervals,
+    Hulls,
 }
 
 impl Setting {
@@ -62,6 +67,9 @@ impl Setting {
             Setting::Labels => "labels",
             Setting::Coverage => "coverage",
             Setting::Reference => "reference",
+            Setting::First => "first",
+            Setting::Intervals => "intervals",
+            Setting::Hulls => "hulls",
         }
     }
 }
@@ -76,6 +84,43 @@ pub(super) struct Settings {
     pub size: Option<(usize, usize)>,
     pub coverage: Option<f64>,
     pub references: Vec<Reference>,
+    pub first: Option<usize>,
+    pub intervals: Option<Intervals>,
+    pub hulls: bool,
+}
+
+/// The ends of an interval for each loading.
+///
+/// Made from two matrices of the shape of the loadings, or from a result that has intervals.
+#[derive(Debug, Clone, PartialEq)]
+pub struct Intervals {
+    pub(super) low: DMatrix<f64>,
+    pub(super) high: DMatrix<f64>,
+    pub(super) words: String,
+}
+
+impl Intervals {
+    /// Joins the lower and the upper ends, variables by components, and says in words what the
+    /// intervals are ("whiskers: 95 % of 2000 bootstrap samples").
+    ///
+    /// # Errors
+    ///
+    /// [`Error::ShapeMismatch`] when the two matrices differ in shape.
+    pub fn new(low: &DMatrix<f64>, high: &DMatrix<f64>, words: impl Into<String>) -> Result<Self> {
+        check_count("rows of upper ends", low.nrows(), high.nrows())?;
+        check_count("columns of upper ends", low.ncols(), high.ncols())?;
+        Ok(Intervals { low: low.clone(), high: high.clone(), words: words.into() })
+    }
+
+    /// Whether there is an interval for each loading that is drawn.
+    pub(super) fn check(&self, n_variables: usize, n_components: usize) -> Result<()> {
+        check_count("rows of intervals", n_variables, self.low.nrows())?;
+        if self.low.ncols() < n_components {
+            let available = self.low.ncols();
+            return Err(Error::ComponentOutOfRange { asked: n_components, available });
+        }
+        Ok(())
+    }
 }
 
 impl Settings {
@@ -122,13 +167,16 @@ impl Settings {
     }
 
     /// What was set, besides title and size.
-    fn set(&self) -> impl Iterator<Item = Setting> {
+    pub fn set(&self) -> impl Iterator<Item = Setting> {
         [
             (Setting::Components, self.components.is_some()),
             (Setting::Groups, self.groups.is_some()),
             (Setting::Labels, self.labels.is_some()),
             (Setting::Coverage, self.coverage.is_some()),
             (Setting::Reference, !self.references.is_empty()),
+            (Setting::First, self.first.is_some()),
+            (Setting::Intervals, self.intervals.is_some()),
+            (Setting::Hulls, self.hulls),
         ]
         .into_iter()
         .filter_map(|(setting, is_set)| is_set.then_some(setting))
@@ -182,6 +230,14 @@ impl Settings {
     /// Whether the references of a scree fit its components.
     pub fn check_references(&self, source: &Source) -> Result<()> {
         self.references.iter().try_for_each(|reference| check_reference(reference, source))
+    }
+
+    /// The names of the variables: those that were set, or their own.
+    pub fn variable_names(&self, own: &[String]) -> Vec<String> {
+        match &self.labels {
+            Some(labels) => labels.iter().map(|label| label.clone().unwrap_or_default()).collect(),
+            None => own.to_vec(),
+        }
     }
 
     /// Width and height of the card, or the usual ones.

@@ -29,6 +29,7 @@ pub(super) struct Units<'a> {
     names: Vec<Option<&'a str>>,
     names_are_chosen: bool,
     groups: Groups,
+    hulls: bool,
     recede: bool,
 }
 
@@ -41,9 +42,12 @@ impl<'a> Units<'a> {
             Some(labels) => labels.iter().map(Option::as_deref).collect(),
             None => source.labels.iter().map(|label| Some(label.as_str())).collect(),
         };
-        let groups = Groups::new(settings.groups.as_deref(), &points, settings.coverage);
+        let usual = (settings.groups.is_some() && !settings.hulls).then_some(0.95);
+        let coverage = settings.coverage.or(usual);
+        let groups = Groups::new(settings.groups.as_deref(), &points, coverage);
         let names_are_chosen = settings.labels.is_some();
-        Units { source, components, points, names, names_are_chosen, groups, recede: false }
+        let hulls = settings.hulls;
+        Units { source, components, points, names, names_are_chosen, groups, hulls, recede: false }
     }
 
     /// Draws units lightly, as ground for something else.
@@ -76,6 +80,9 @@ impl<'a> Units<'a> {
     pub fn draw(&self, svg: &mut Svg, plane: &Plane) -> Vec<String> {
         let fill_opacity = if self.recede { "0" } else { ".07" };
         let mut notes = Vec::new();
+        if self.hulls {
+            self.groups.draw_hulls(svg, plane, &self.points);
+        }
         if self.count() > MOST_MARKS {
             notes.push(self.draw_counts(svg, plane));
             self.groups.draw_ellipses(svg, plane, "0");
