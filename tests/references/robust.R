@@ -87,7 +87,7 @@ cat(
     scatter("stackloss", stackloss[, 1:3], 0.75, "exact"),
     scatter("milk", milk, 0.75, 5000),
     scatter("stack.loss", stackloss[, 4, drop = FALSE], 0.5, 500),
-    scatter("heights of cherry trees", trees[, 2, drop = FALSE], 0.75, 500)
+    scatter("rivers", matrix(rivers), 0.75, 500)
   )),
   ",\n\"factors\": ", list_of(mapply(factors, grid$n, grid$p, grid$alpha)),
   ",\n\"components\": ",

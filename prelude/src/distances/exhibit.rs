@@ -64,7 +64,9 @@ fn unusual_rows(distances: &Distances) -> Table {
     let labels = distances.labels();
     Table::new("Rows beyond a cut-off, the furthest first")
         .with_rows_left_out(shown.head, shown.left_out)
-        .column(TableColumn::texts("row", listed.iter().map(|&r| labels[r].as_str())).as_row_heads())
+        .column(
+            TableColumn::texts("row", listed.iter().map(|&r| labels[r].as_str())).as_row_heads(),
+        )
         .column(TableColumn::numbers(
             "score distance",
             listed.iter().map(|&row| distances.score_distances()[row]),
@@ -79,8 +81,10 @@ fn unusual_rows(distances: &Distances) -> Table {
             "standing",
             listed.iter().map(|&row| distances.standings()[row].to_string()),
         ))
-        .note("Distances to 4 significant digits, in scaled units; order by the larger of the two \
-               in units of its cut-off.")
+        .note(
+            "Distances to 4 significant digits, in scaled units; order by the larger of the two \
+               in units of its cut-off.",
+        )
         .note(CAUTION)
 }
 
@@ -154,7 +158,9 @@ fn rows_beyond(found: &TSquaredAndQ) -> Table {
     let labels = found.labels();
     Table::new("Rows beyond a limit, the furthest first")
         .with_rows_left_out(shown.head, shown.left_out)
-        .column(TableColumn::texts("row", listed.iter().map(|&r| labels[r].as_str())).as_row_heads())
+        .column(
+            TableColumn::texts("row", listed.iter().map(|&r| labels[r].as_str())).as_row_heads(),
+        )
         .column(TableColumn::numbers("T²", listed.iter().map(|&r| found.t_squared()[r]), DISTANCES))
         .column(TableColumn::numbers("Q", listed.iter().map(|&r| found.q()[r]), DISTANCES))
         .column(TableColumn::texts("beyond", listed.iter().map(|&row| beyond(row))))

@@ -230,8 +230,7 @@ impl Residuals {
     }
 
     fn by_moments(&self, coverage: f64) -> Answer {
-        // Written so that NaN, of a single row, fails as well.
-        if !(self.mean > 0.0 && self.variance > 0.0) {
+        if self.mean == 0.0 || self.variance == 0.0 {
             return Err("Q does not vary over the fitted rows");
         }
         let freedom = 2.0 * self.mean * (self.mean / self.variance);
@@ -242,12 +241,7 @@ impl Residuals {
 /// The least share of q that h must be for variances to pass as equal; see [`QRule::F`].
 const EVEN: f64 = 0.8;
 
-fn jackson_mudholkar(
-    one: f64,
-    two: f64,
-    three: f64,
-    coverage: f64,
-) -> Answer {
+fn jackson_mudholkar(one: f64, two: f64, three: f64, coverage: f64) -> Answer {
     let power = 1.0 - 2.0 * (one / two) * (three / two) / 3.0;
     if power.abs() < 1e-6 {
         return Err("its power h₀ is zero");

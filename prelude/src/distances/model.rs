@@ -168,7 +168,8 @@ impl Plane {
         let deviations = (values - &self.centre).component_div(&self.scale);
         let scores = self.loadings.tr_mul(&deviations);
         let residuals = &deviations - &self.loadings * &scores;
-        let unit_scores = scores.zip_map(&self.variances, |score, variance| score / variance.sqrt());
+        let unit_scores =
+            scores.zip_map(&self.variances, |score, variance| score / variance.sqrt());
         Split { deviations, unit_scores, residuals }
     }
 }

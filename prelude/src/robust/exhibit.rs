@@ -24,7 +24,8 @@ fn centre(scatter: &RobustScatter) -> Table {
     let data = scatter.data().values();
     let spread = scatter.covariance().values().diagonal().map(f64::sqrt);
     let names = scatter.variables().iter().map(String::as_str);
-    let share = NumberFormat::Percent.format(scatter.subset_size() as f64 / scatter.n_rows() as f64);
+    let share =
+        NumberFormat::Percent.format(scatter.subset_size() as f64 / scatter.n_rows() as f64);
     let mut table = Table::new(format!(
         "Robust centre and spread: {} of {} beyond the cut-off",
         scatter.flagged().len(),
@@ -75,7 +76,9 @@ fn far_rows(scatter: &RobustScatter) -> Table {
     let labels = scatter.labels();
     Table::new("Rows beyond the cut-off, the furthest first")
         .with_rows_left_out(shown.head, shown.left_out)
-        .column(TableColumn::texts("row", listed.iter().map(|&r| labels[r].as_str())).as_row_heads())
+        .column(
+            TableColumn::texts("row", listed.iter().map(|&r| labels[r].as_str())).as_row_heads(),
+        )
         .column(TableColumn::numbers("distance", listed.iter().map(|&r| distances[r]), RESULTS))
         .note(format!(
             "Cut-off {}: root of the 97.5 % quantile of χ² with {} of freedom. Of rows that follow \
@@ -124,8 +127,8 @@ fn loadings(robust: &RobustComponents) -> Table {
     let values = robust.loadings().values();
     let n_shown = robust.n_components().min(MOST_COMPONENTS);
     let names = robust.variables().iter().map(String::as_str);
-    let mut table = Table::new("Loadings")
-        .column(TableColumn::texts("variable", names).as_row_heads());
+    let mut table =
+        Table::new("Loadings").column(TableColumn::texts("variable", names).as_row_heads());
     for component in 0..n_shown {
         let column = values.column(component).iter().copied().collect::<Vec<f64>>();
         let heading = (component + 1).to_string();
@@ -151,13 +154,9 @@ fn standings(robust: &RobustComponents) -> Table {
         0 => String::new(),
         count => format!(" and {} more", grouped(count)),
     };
-    Table::new(format!(
-        "{} of {} beyond a cut-off",
-        flagged.len(),
-        counted(robust.n_rows(), "row")
-    ))
-    .column(TableColumn::texts("standing", Standing::ALL.map(|s| s.to_string())).as_row_heads())
-    .column(TableColumn::counts("rows", Standing::ALL.map(|s| distances.count(s))))
-    .note(format!("Beyond: {names}{more}. Distances and cut-offs: `distances()`."))
-    .note(CAUTION)
+    Table::new(format!("{} of {} beyond a cut-off", flagged.len(), counted(robust.n_rows(), "row")))
+        .column(TableColumn::texts("standing", Standing::ALL.map(|s| s.to_string())).as_row_heads())
+        .column(TableColumn::counts("rows", Standing::ALL.map(|s| distances.count(s))))
+        .note(format!("Beyond: {names}{more}. Distances and cut-offs: `distances()`."))
+        .note(CAUTION)
 }

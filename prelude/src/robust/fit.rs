@@ -118,7 +118,9 @@ pub(super) enum Outcome {
     Fitted(Box<Fitted>),
     /// Normal and constant are in the units of the data.
     Hyperplane(Hyperplane),
-    Singular { rank: usize },
+    Singular {
+        rank: usize,
+    },
 }
 
 /// Where columns were moved to and by what they were divided before the search.
@@ -140,7 +142,7 @@ impl Units {
             let spread = median(values.iter().map(|value| (value - centre).abs()).collect());
             let spread = if spread > 0.0 { spread } else { deviation(&values) };
             // A column of equal numbers can have a deviation of a rounding.
-            if column.max() == column.min() || !(spread > 0.0) {
+            if column.max() == column.min() || spread == 0.0 {
                 return Err(j);
             }
             (units.centre[j], units.scale[j]) = (centre, spread);
@@ -215,11 +217,14 @@ pub(super) fn reweighted(
     let raw_squares = squares_of(&scaled, &tightest.estimate, raw_factors);
     let limit = chi_squared_quantile(KEPT, p as f64);
     let kept: Vec<bool> = raw_squares.iter().map(|square| *square <= limit).collect();
-    let rows: Vec<u32> = (0u32..).zip(&kept).filter_map(|(row, kept)| kept.then_some(row)).collect();
+    let rows: Vec<u32> =
+        (0u32..).zip(&kept).filter_map(|(row, kept)| kept.then_some(row)).collect();
     let final_estimate = match estimate(&scaled, &rows, &mut workspace) {
         Ok(estimate) => estimate,
         // Reweighting keeps the subset as a rule, and that has a volume.
-        Err(_) => return Err(Error::NoConvergence { method: "the reweighting of a robust scatter" }),
+        Err(_) => {
+            return Err(Error::NoConvergence { method: "the reweighting of a robust scatter" });
+        }
     };
     let factors = Factors {
         consistency: consistency(p, rows.len() as f64 / n as f64),
@@ -229,7 +234,8 @@ pub(super) fn reweighted(
     let log_scale: f64 = units.scale.iter().map(|scale| scale.ln()).sum();
     Ok(Outcome::Fitted(Box::new(Fitted {
         raw_centre: units.centre_back(&tightest.estimate.centre),
-        raw_covariance: units.covariance_back(&mirrored(tightest.estimate.covariance)) * raw_factors.both(),
+        raw_covariance: units.covariance_back(&mirrored(tightest.estimate.covariance))
+            * raw_factors.both(),
         centre: units.centre_back(&final_estimate.centre),
         covariance: units.covariance_back(&mirrored(final_estimate.covariance)) * factors.both(),
         raw_squares,

@@ -276,26 +276,14 @@ fn advance(
             }
         }
     }
-    candidates.sort_by(|a, b| {
-        a.estimate.log_determinant.total_cmp(&b.estimate.log_determinant)
-    });
+    candidates.sort_by(|a, b| a.estimate.log_determinant.total_cmp(&b.estimate.log_determinant));
     Ok(Advanced::Candidates(candidates))
 }
 
 /// The subset with its own estimate.
-fn finish(
-    x: &DMatrix<f64>,
-    subset: Vec<u32>,
-    n_steps: usize,
-    converged: bool,
-) -> Result<Found> {
+fn finish(x: &DMatrix<f64>, subset: Vec<u32>, n_steps: usize, converged: bool) -> Result<Found> {
     match subsets::estimate(x, &subset, &mut Workspace::new()) {
-        Ok(estimate) => Ok(Found::Tightest(Tightest {
-            subset,
-            estimate,
-            n_steps,
-            converged,
-        })),
+        Ok(estimate) => Ok(Found::Tightest(Tightest { subset, estimate, n_steps, converged })),
         Err(flat) => Ok(Found::Hyperplane(hyperplane(x, &flat)?)),
     }
 }

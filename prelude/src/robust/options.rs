@@ -115,7 +115,7 @@ impl RobustOptions {
     /// ⌊2m − n + 2(n − m)α⌋ with m = ⌊(n + p + 1)/2⌋. It is m for α = 0.5, which stands most
     /// contamination, and n for α = 1.
     pub fn subset_size(&self, n_rows: usize, n_dimensions: usize) -> usize {
-        let least = ((n_rows + n_dimensions + 1) / 2).min(n_rows);
+        let least = (n_rows + n_dimensions).div_ceil(2).min(n_rows);
         let (n, m) = (n_rows as f64, least as f64);
         // The small number keeps a product such as 0.7 · 10, a little below 7, from being cut to 6.
         let size = 2.0 * m - n + 2.0 * (n - m) * self.share + 1e-9;
@@ -123,7 +123,8 @@ impl RobustOptions {
     }
 
     pub(super) fn check(&self) -> Result<()> {
-        let refused = |option, value, accepted| Err(Error::OptionOutOfRange { option, value, accepted });
+        let refused =
+            |option, value, accepted| Err(Error::OptionOutOfRange { option, value, accepted });
         if !(0.5..=1.0).contains(&self.share) {
             return refused("share", self.share, "0.5 to 1");
         }

@@ -100,7 +100,7 @@ impl Memory {
         self.ascending.sort_unstable_by(f64::total_cmp);
         let found = univariate(&self.ascending, h).raw;
         let range = self.ascending.last()? - self.ascending.first()?;
-        if !(found.spread > NO_SPREAD * range) {
+        if found.spread <= NO_SPREAD * range {
             return Some(found.centre);
         }
         for (worst, projected) in worst.iter_mut().zip(self.projected.iter()) {
@@ -117,9 +117,8 @@ fn all_pairs(n: usize, most: usize) -> Option<Vec<(usize, usize)>> {
 
 fn drawn(rows: &DMatrix<f64>, generator: &mut Generator) -> Option<DVector<f64>> {
     let n = rows.ncols();
-    (0..MOST_DRAWS).find_map(|_| {
-        through(rows, (generator.random_range(0..n), generator.random_range(0..n)))
-    })
+    (0..MOST_DRAWS)
+        .find_map(|_| through(rows, (generator.random_range(0..n), generator.random_range(0..n))))
 }
 
 /// The direction from one row to another; none when they are equal.

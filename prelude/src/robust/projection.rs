@@ -52,7 +52,8 @@ pub(super) fn project(y: DMatrix<f64>, options: RobustOptions, seed: u64) -> Res
     if n < needed {
         return Err(Error::TooFewRows { method: "robust components", needed, found: n });
     }
-    let h = ((options.chosen_share() * n as f64 + 1e-9) as usize).max((n + most + 1) / 2).min(n);
+    let h =
+        ((options.chosen_share() * n as f64 + 1e-9) as usize).max((n + most).div_ceil(2)).min(n);
     let worst = loop {
         match outlyingness(&span.rows, h, options.n_directions(), seed)? {
             Outlying::By(worst) => break worst,
@@ -233,7 +234,13 @@ fn within(
                 return Ok((k, projected));
             }
             _ if k > 1 => k -= 1,
-            _ => return Err(Error::SingularScatter { method: "robust components", rank: 0, order: 1 }),
+            _ => {
+                return Err(Error::SingularScatter {
+                    method: "robust components",
+                    rank: 0,
+                    order: 1,
+                });
+            }
         }
     }
 }

@@ -102,8 +102,7 @@ fn factorise(covariance: &DMatrix<f64>) -> Option<(DMatrix<f64>, f64)> {
             }
         }
         let pivot = factor[(j, j)];
-        // Written so that NaN fails as well.
-        if !(pivot > least * covariance[(j, j)]) {
+        if pivot.is_nan() || pivot <= least * covariance[(j, j)] {
             return None;
         }
         log_determinant += pivot.ln();

@@ -79,8 +79,7 @@ pub(crate) fn univariate(ascending: &[f64], h: usize) -> TwoSteps {
     let window = tightest_window(ascending, h);
     let share = h as f64 / n as f64;
     let factor = consistency(1, share) * raw_small_sample(1, n, share);
-    let raw =
-        Univariate { centre: window.mean, spread: (window.variance * factor).sqrt(), window };
+    let raw = Univariate { centre: window.mean, spread: (window.variance * factor).sqrt(), window };
     if raw.spread == 0.0 {
         return TwoSteps { raw, reweighted: raw };
     }
@@ -91,8 +90,7 @@ pub(crate) fn univariate(ascending: &[f64], h: usize) -> TwoSteps {
     let n_kept = kept.len() as f64;
     let centre = raw.centre + kept.iter().map(|value| value - raw.centre).sum::<f64>() / n_kept;
     let squares: f64 = kept.iter().map(|value| (value - centre).powi(2)).sum();
-    let factor =
-        consistency(1, n_kept / n as f64) * reweighted_small_sample(1, n, share);
+    let factor = consistency(1, n_kept / n as f64) * reweighted_small_sample(1, n, share);
     let spread = (squares / (n_kept - 1.0) * factor).sqrt();
     TwoSteps { raw, reweighted: Univariate { centre, spread, window } }
 }
