@@ -15,6 +15,8 @@ use std::path::PathBuf;
 
 use polars::prelude::PolarsError;
 
+use crate::table::NumberType;
+
 /// The prelude's result.
 pub type Result<T, E = Error> = std::result::Result<T, E>;
 
@@ -194,6 +196,34 @@ pub enum Error {
         /// The name.
         name: String,
     },
+    /// A column was asked for by name and was also to be left out.
+    WantedAndUnwanted {
+        /// The name.
+        name: String,
+    },
+    /// No column has a name that fits a pattern.
+    NoColumnLike {
+        /// The pattern.
+        pattern: String,
+        /// The names there are.
+        available: Vec<String>,
+    },
+    /// No column has a type that was asked for.
+    NoColumnOfType {
+        /// The type.
+        number_type: NumberType,
+        /// The columns there are, each with its type.
+        columns: Vec<(String, String)>,
+    },
+    /// Leaving out columns with missing values would leave none.
+    NoColumnLeft {
+        /// The columns, and how many values each misses.
+        columns: Vec<ColumnCount>,
+        /// Rows in the table.
+        n_rows: usize,
+        /// The share of values that a column may miss.
+        share: f64,
+    },
     /// The table has no numeric column.
     NoNumericColumns {
         /// The columns there are, each with its type.
@@ -282,12 +312,23 @@ pub enum Error {
     },
     /// The weight of a row is not a positive finite number.
     BadWeight {
+        /// The column of the table that holds the weights, where there is one.
+        column: Option<String>,
         /// The first such row, counted from 1.
         row: usize,
         /// Its label.
         label: String,
         /// The weight that was given.
         value: f64,
+    },
+    /// A weight column has missing weights.
+    MissingWeights {
+        /// The weight column.
+        column: String,
+        /// The first row without a weight.
+        row: usize,
+        /// How many weights are missing.
+        count: usize,
     },
     /// Counts that should agree do not.
     ShapeMismatch {

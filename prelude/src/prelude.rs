@@ -26,9 +26,9 @@ pub use crate::robust::{
     RobustComponents, RobustOptions, RobustRoute, RobustScatter, robust_components, robust_scatter,
 };
 pub use crate::table::{
-    ColumnDescription, ColumnDescriptions, DataMatrix, FrameToMatrix, GappedMatrix, Label,
-    MatrixOptions, Missing, MissingPattern, MissingValues, NamedMatrix, TableOptions,
-    describe_columns, missing_values, read_table, read_table_with,
+    ColumnCheck, ColumnDescription, ColumnDescriptions, DataMatrix, FrameToMatrix, GappedMatrix,
+    Label, MatrixOptions, Missing, MissingPattern, MissingValues, NamedMatrix, NumberType,
+    TableOptions, describe_columns, missing_values, read_table, read_table_with,
 };
 pub use crate::transform::{Transform, Transformation};
 

@@ -26,12 +26,14 @@ mod columns;
 mod cross;
 mod exhibit;
 mod meaning;
+mod row_weights;
 mod saved;
 pub(crate) mod scores;
 pub(crate) mod spectrum;
 mod supplementary;
 mod ties;
 pub(crate) mod views;
+mod ways;
 
 #[cfg(test)]
 mod tests;

@@ -5,7 +5,7 @@ use faer::{Accum, MatRef, Par};
 use nalgebra::{DMatrix, DVector};
 use rayon::prelude::*;
 
-use super::cross::RowWeights;
+use super::row_weights::RowWeights;
 use super::views::{PIECES, view, view_mut};
 use crate::live::interrupted;
 
@@ -61,7 +61,7 @@ impl Standardised<'_> {
     fn combine_columns(&self, left: &DMatrix<f64>) -> DMatrix<f64> {
         let (n, p) = self.x.shape();
         let mut combined = DMatrix::zeros(p, left.ncols());
-        let block = (BLOCK / n).clamp(64, 4096);
+        let block = (BLOCK / n).clamp(64, 4096).min(p);
         view_mut(&mut combined).par_row_chunks_mut(block).enumerate().for_each_init(
             || vec![0.0; block * n],
             |buffer, (place, target)| {
@@ -88,7 +88,7 @@ impl Standardised<'_> {
     /// Blocks of rows, summed in parts that depend on the shape only.
     fn combine_rows(&self, left: &DMatrix<f64>) -> DMatrix<f64> {
         let (n, p) = self.x.shape();
-        let block = (BLOCK / p).clamp(64, 4096);
+        let block = (BLOCK / p).clamp(64, 4096).min(n);
         let n_blocks = n.div_ceil(block);
         let blocks_per_part = n_blocks.div_ceil(MOST_PARTS);
         let parts: Vec<DMatrix<f64>> = (0..n_blocks.div_ceil(blocks_per_part))
@@ -133,7 +133,7 @@ pub(crate) fn project_rows(
 ) -> DMatrix<f64> {
     let (n, p) = x.shape();
     let mut scores = DMatrix::zeros(n, loadings.ncols());
-    let block = (BLOCK / p).clamp(64, 4096);
+    let block = (BLOCK / p).clamp(64, 4096).min(n);
     view_mut(&mut scores).par_row_chunks_mut(block).enumerate().for_each_init(
         || vec![0.0; block * p],
         |buffer, (place, target)| {

@@ -3,6 +3,8 @@
 
 mod exhibits;
 mod meaning;
+mod new_rows;
+mod randomised;
 mod routes;
 mod saved;
 mod weights;

@@ -124,7 +124,7 @@ impl TSquaredAndQ {
     /// # Errors
     ///
     /// [`Error::VariablesDiffer`] unless the rows have the variables of the analysis in the same
-    /// order.
+    /// order, [`Error::TransformationsDiffer`] unless they went through its transformations.
     pub fn of(&self, rows: &DataMatrix) -> Result<TSquaredAndQ> {
         let squares = self.fit.plane.squares(rows)?;
         Ok(TSquaredAndQ::new(self.fit.clone(), rows.clone(), squares, true, self.coverage))

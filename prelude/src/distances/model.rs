@@ -8,6 +8,7 @@ use crate::components::scores::{product, project_rows};
 use crate::components::{PrincipalComponents, same_variables};
 use crate::error::{Error, Result};
 use crate::table::{DataMatrix, NamedMatrix};
+use crate::transform::Transformation;
 
 /// Components that rows can be measured against: classical ones
 /// ([`PrincipalComponents`]) or robust ones ([`RobustComponents`](crate::robust::RobustComponents)).
@@ -85,6 +86,8 @@ impl ComponentModel for PrincipalComponents {
 #[derive(Debug, Clone)]
 pub(crate) struct Plane {
     pub(crate) variables: Arc<[String]>,
+    /// What the fitted rows went through.
+    pub(crate) transformations: Vec<Transformation>,
     pub(crate) centre: DVector<f64>,
     pub(crate) scale: DVector<f64>,
     /// p × k.
@@ -122,6 +125,7 @@ impl Plane {
         }
         Ok(Plane {
             variables: model.data().shared_variables(),
+            transformations: model.data().transformations().to_vec(),
             centre: model.centre().clone(),
             scale: model.scale().clone(),
             loadings: model.loadings().values().columns(0, k).into_owned(),
@@ -144,6 +148,7 @@ impl Plane {
     /// digits of small ones.
     pub(crate) fn squares(&self, x: &DataMatrix) -> Result<Squares> {
         same_variables(&self.variables, x.variables())?;
+        x.check_transformations(&self.transformations)?;
         let values = x.values();
         let scores = project_rows(values, &self.centre, &self.scale, &self.loadings, || false);
         let described = product(&scores, &self.loadings);

@@ -94,7 +94,9 @@ pub(crate) fn fitted_distances(
 /// # Errors
 ///
 /// Those of [`distances`]; [`Error::VariablesDiffer`](crate::Error::VariablesDiffer) unless the
-/// rows have the variables of the analysis in the same order.
+/// rows have the variables of the analysis in the same order, and
+/// [`Error::TransformationsDiffer`](crate::Error::TransformationsDiffer) unless they went through
+/// its transformations.
 pub fn distances_of(
     model: &impl ComponentModel,
     n_components: usize,
@@ -209,7 +211,8 @@ impl Distances {
     ///
     /// # Errors
     ///
-    /// [`Error::VariablesDiffer`](crate::Error::VariablesDiffer).
+    /// [`Error::VariablesDiffer`](crate::Error::VariablesDiffer) and
+    /// [`Error::TransformationsDiffer`](crate::Error::TransformationsDiffer).
     pub fn of(&self, rows: &DataMatrix) -> Result<Distances> {
         let squares = self.fit.plane.squares(rows)?;
         Ok(Distances::new(self.fit.clone(), rows.clone(), squares, true, self.coverage))

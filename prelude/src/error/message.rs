@@ -130,6 +130,24 @@ impl fmt::Display for Error {
                 }
             }
             Error::RepeatedRequest { name } => write!(f, "{} was asked for twice", Name(name)),
+            Error::WantedAndUnwanted { name } => {
+                write!(f, "{} was asked for by name and was also to be left out", Name(name))
+            }
+            Error::NoColumnLike { pattern, available } => write!(
+                f,
+                "no column has a name like {}, where * stands for any characters and ? for one; the \
+                 columns are {}",
+                Name(pattern),
+                Names(available)
+            ),
+            Error::NoColumnOfType { number_type, columns } => {
+                write!(f, "no column holds {number_type}: ")?;
+                list(f, columns, |f, (name, dtype)| write!(f, "{} is {dtype}", Name(name)))
+            }
+            Error::NoColumnLeft { columns, n_rows, share } => {
+                write!(f, "every column misses more than a share of {share} of {n_rows} values: ")?;
+                list(f, columns, |f, c| write!(f, "{} misses {}", Name(&c.column), c.count))
+            }
             Error::NoNumericColumns { columns } => {
                 write!(f, "no column is numeric: ")?;
                 list(f, columns, |f, (name, dtype)| write!(f, "{} is {dtype}", Name(name)))
@@ -156,8 +174,15 @@ impl fmt::Display for Error {
                 write!(f, "values are missing: ")?;
                 list(f, columns, |f, c| write!(f, "{} in {}", c.count, Name(&c.column)))?;
                 write!(f, "; {n_complete} of {n_rows} rows are complete")?;
-                write!(f, "; leave those columns out, or drop the incomplete rows with ")?;
-                write!(f, "`.data_matrix_with(MatrixOptions::new().missing(Missing::DropRows))`")
+                write!(f, "; leave those columns out, drop the incomplete rows with ")?;
+                write!(
+                    f,
+                    "`.data_matrix_with(MatrixOptions::new().missing(Missing::DropRows))`, "
+                )?;
+                write!(
+                    f,
+                    "or keep the gaps for a method that estimates them with `.gapped_matrix()`"
+                )
             }
             Error::AllMissing { columns } => {
                 let (noun, verb) =
@@ -205,7 +230,10 @@ impl fmt::Display for Error {
                 }
                 write!(f, "rows {} and {} are both labelled {}", rows.0, rows.1, Name(label))
             }
-            Error::BadWeight { row, label, value } => {
+            Error::BadWeight { column, row, label, value } => {
+                if let Some(column) = column {
+                    write!(f, "the weight column {}: ", Name(column))?;
+                }
                 write!(f, "the weight of row {row}")?;
                 if *label != row.to_string() {
                     write!(f, " ({})", Name(label))?;
@@ -216,6 +244,12 @@ impl fmt::Display for Error {
                 )?;
                 write!(f, "not count out with `.rows_where(…)`")
             }
+            Error::MissingWeights { column, row, count } => write!(
+                f,
+                "the weight column {} has {} missing, the first in row {row}",
+                Name(column),
+                plural(*count, "weight")
+            ),
             Error::ShapeMismatch { what, expected, found } => {
                 write!(f, "{what}: {expected} needed, {found} given")
             }
@@ -227,8 +261,8 @@ impl fmt::Display for Error {
                 write!(f, "; accepted: {accepted}")
             }
             Error::NoSpread { columns, measure } => {
-                write!(f, "columns without {measure}: ")?;
-                list(f, columns, |f, (name, middle)| write!(f, "{} about {middle}", Name(name)))?;
+                write!(f, "columns whose {measure} is zero: ")?;
+                list(f, columns, |f, (name, middle)| write!(f, "{}, about {middle}", Name(name)))?;
                 write!(f, "; leave them out, or transform the others by name with `.of([…])`")
             }
             Error::TransformationsDiffer { wanted, found } => {
@@ -247,7 +281,7 @@ impl fmt::Display for Error {
                     f,
                     "; bring rows as they were measured, and repeat the transformations with "
                 )?;
-                write!(f, "`.transformed_as(…)`")
+                write!(f, "`.transformed_as(…)`, or for scores with `.project_raw(…)`")
             }
             Error::SavedForm { part, found, accepted } => {
                 write!(f, "cannot read back what was saved: {} is ", Plain(part))?;

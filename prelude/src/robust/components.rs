@@ -204,6 +204,7 @@ impl Found {
         let scores = project_rows(x.values(), &self.centre, &self.scale, &self.loadings, || false);
         let plane = Plane {
             variables: x.shared_variables(),
+            transformations: x.transformations().to_vec(),
             centre: self.centre.clone(),
             scale: self.scale.clone(),
             loadings: self.loadings.clone(),
@@ -297,9 +298,11 @@ impl RobustComponents {
     ///
     /// # Errors
     ///
-    /// [`Error::VariablesDiffer`] names what is missing, unknown or out of place.
+    /// [`Error::VariablesDiffer`] names what is missing, unknown or out of place;
+    /// [`Error::TransformationsDiffer`] what the rows went through instead.
     pub fn project(&self, x: &DataMatrix) -> Result<NamedMatrix> {
         same_variables(self.variables(), x.variables())?;
+        x.check_transformations(self.data.transformations())?;
         let loadings = self.loadings.values();
         let scores = project_rows(x.values(), &self.centre, &self.scale, loadings, || false);
         NamedMatrix::new(scores, x.shared_labels(), self.loadings.shared_column_names())

@@ -12,14 +12,14 @@ const LIKELIHOODS: NumberFormat = NumberFormat::Decimals(2);
 impl Exhibit for Transformation {
     fn exhibit(&self) -> Bundle {
         let caption = format!("{} of {}", self.name(), counted(self.columns().len(), "column"));
-        let table = Table::new(capitalised(&caption)).column(
+        let table = Table::new(caption).column(
             TableColumn::texts("column", self.columns().iter().map(String::as_str)).as_row_heads(),
         );
         let table = match self.formula() {
             Formula::Log => table.note("y = ln x, the natural logarithm."),
             Formula::Log10 => table.note("y = log x to base 10."),
-            Formula::LogPlus { constant } => {
-                table.note(format!("y = ln(x + {}), the natural logarithm.", stored(*constant, 6)))
+            Formula::LogPlus { .. } => {
+                table.note(format!("y = {}, the natural logarithm.", self.name()))
             }
             Formula::SquareRoot => table.note("y = √x."),
             Formula::CentredLogRatio { total, closed } => log_ratio(table, *total, *closed),
@@ -111,12 +111,4 @@ fn linear(table: Table, kind: Linear, middles: &[f64], spreads: &[f64]) -> Table
         _ => table.column(TableColumn::numbers(spread, spreads.iter().copied(), PARAMETERS)),
     };
     table.note(note).note("Numbers to 5 significant digits.")
-}
-
-fn capitalised(text: &str) -> String {
-    let mut chars = text.chars();
-    match chars.next() {
-        Some(first) => first.to_uppercase().chain(chars).collect(),
-        None => String::new(),
-    }
 }

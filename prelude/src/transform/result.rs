@@ -100,15 +100,16 @@ impl Transformation {
         match &self.formula {
             Formula::Log => "natural logarithm".to_owned(),
             Formula::Log10 => "logarithm to base 10".to_owned(),
+            Formula::LogPlus { constant } if *constant < 0.0 => format!("ln(x − {})", -constant),
             Formula::LogPlus { constant } => format!("ln(x + {constant})"),
             Formula::SquareRoot => "square root".to_owned(),
             Formula::CentredLogRatio { .. } => "centred log-ratio".to_owned(),
             Formula::BoxCox { .. } => "Box–Cox power".to_owned(),
             Formula::Linear { kind, .. } => match kind {
-                Linear::Centred => "centred at the mean",
-                Linear::Standardised => "standardised",
-                Linear::RobustlyStandardised => "standardised by median and deviation from it",
-                Linear::UnitRange => "brought to 0–1",
+                Linear::Centred => "centring",
+                Linear::Standardised => "standardising",
+                Linear::RobustlyStandardised => "robust standardising",
+                Linear::UnitRange => "scaling to 0–1",
             }
             .to_owned(),
         }

@@ -60,6 +60,10 @@ impl<'a> Fields<'a> {
         self.read(name, "a text")
     }
 
+    pub(super) fn list<T: Deserialize<'a>>(&self, name: &str) -> Result<Vec<T>> {
+        self.read(name, "a list")
+    }
+
     pub(super) fn texts(&self, name: &str) -> Result<Vec<String>> {
         self.read(name, "a list of texts")
     }

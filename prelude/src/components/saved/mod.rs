@@ -5,7 +5,7 @@
 //!   "scaling": "correlation" | "covariance",
 //!   "route": "variable-cross-product" | "row-cross-product" | "singular-values" | "randomised",
 //!   "rows": n, "divisor": n − 1, "weighted": true | false, "rank": r, "rank_tolerance": τ² / (n − 1),
-//!   "variables": [p names], "transformations": [what each row went through before],
+//!   "variables": [p names], "transformations": [what each row went through before, as `transform` saves it],
 //!   "mean": [p], "scale": [p], "deviations": [p],
 //!   "total_variance": of all variables, "variances": [one for each component kept],
 //!   "loadings": [for each component [p]],

@@ -14,6 +14,7 @@ use crate::components::randomised::Approximation;
 use crate::components::scores::transposed_product;
 use crate::error::{Error, Result};
 use crate::table::NamedMatrix;
+use crate::transform::Transformation;
 
 const FIELDS: [&str; 19] = [
     "format",
@@ -71,9 +72,6 @@ pub(super) fn fitted(text: &str) -> Result<FittedComponents> {
         let accepted = format!("{}, one less than `rows`", n_rows - 1);
         return Err(fields.fault("divisor", &divisor.to_string(), &accepted));
     }
-    if fields.raw("transformations")? != "[]" {
-        return Err(fields.fault("transformations", "a list", "an empty list"));
-    }
     let variables: Arc<[String]> = names(&fields, "variables")?.into();
     let p = variables.len();
     let variances = variances(&fields, p.min(n_rows - 1))?;
@@ -86,6 +84,7 @@ pub(super) fn fitted(text: &str) -> Result<FittedComponents> {
         route,
         approximation: approximation(&fields, route, r)?,
         n_rows,
+        transformations: transformations(&fields)?,
         is_weighted: fields.truth("weighted")?,
         rank: fields.count("rank")?,
         tolerance: fields.number("rank_tolerance")?,
@@ -128,6 +127,20 @@ fn names(fields: &Fields<'_>, name: &str) -> Result<Vec<String>> {
         }
         None => Ok(names),
     }
+}
+
+fn transformations(fields: &Fields<'_>) -> Result<Arc<[Transformation]>> {
+    let saved: Vec<serde_json::Value> = fields.list("transformations")?;
+    let read = |(place, saved)| {
+        Transformation::from_json(saved).map_err(|error| match error {
+            Error::SavedForm { part, found, accepted } => {
+                let part = format!("`transformations[{place}]`: {part}");
+                Error::SavedForm { part, found, accepted }
+            }
+            other => other,
+        })
+    };
+    saved.iter().enumerate().map(read).collect()
 }
 
 fn variances(fields: &Fields<'_>, most: usize) -> Result<DVector<f64>> {

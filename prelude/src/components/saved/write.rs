@@ -53,7 +53,7 @@ pub(super) fn json(fitted: &FittedComponents) -> String {
         ("rank", json!(fitted.rank)),
         ("rank_tolerance", json!(fitted.tolerance)),
         ("variables", json!(fitted.variables())),
-        ("transformations", json!([])),
+        ("transformations", fitted.transformations.iter().map(|t| t.to_json()).collect()),
         ("mean", numbers(fitted.mean.iter())),
         ("scale", numbers(fitted.scale.iter())),
         ("deviations", numbers(fitted.deviation.iter())),

@@ -140,6 +140,16 @@ fn what_is_not_known_missing_or_of_the_wrong_kind_is_refused_by_name() {
         ("\"V2\"", "2", "`variables`"),
         ("\"V2\",", "", "`variances`"),
         ("\"transformations\": []", "\"transformations\": {}", "`transformations`"),
+        (
+            "\"transformations\": []",
+            "\"transformations\": [3]",
+            "`transformations[0]`: a transformation",
+        ),
+        (
+            "\"transformations\": []",
+            "\"transformations\": [{\"transformation\": \"cube\", \"columns\": [\"V1\"]}]",
+            "`transformations[0]`: `transformation`",
+        ),
         ("\"mean\": [", "\"mean\": [1.0,", "`mean`"),
         ("\"mean\": [", "\"mean\": [1e999,", "`mean`"),
         ("\"mean\": [", "\"mean\": [null,", "`mean`"),
