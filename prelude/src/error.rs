@@ -469,12 +469,56 @@ pub enum Error {
         /// Each such column and its median.
         columns: Vec<(String, f64)>,
     },
+    /// Too many resamples could not be analysed, since columns did not vary in them.
+    DegenerateResamples {
+        /// Resamples that could be analysed.
+        usable: usize,
+        /// Resamples that were drawn.
+        drawn: usize,
+        /// Columns that did not vary, and in how many resamples each.
+        columns: Vec<ColumnCount>,
+    },
     /// More components were asked for than there are.
     ComponentOutOfRange {
         /// How many, or which, was asked for.
         asked: usize,
         /// How many there are.
         available: usize,
+    },
+    /// Columns show one and the same value wherever they show any.
+    ConstantObserved {
+        /// Each such column, the value, and how many cells hold it.
+        columns: Vec<(String, f64, usize)>,
+    },
+    /// A fit would choose as many numbers as there are observed cells, or more.
+    TooFewObserved {
+        /// Components that were asked for.
+        n_components: usize,
+        /// Observed cells.
+        found: usize,
+        /// The cells that are needed.
+        needed: usize,
+    },
+    /// Components describe the observed cells exactly, so that no noise is left to estimate.
+    NoNoise {
+        /// How many components.
+        n_components: usize,
+    },
+    /// A row shows too little to tell its scores.
+    ScoresUndetermined {
+        /// The row.
+        row: usize,
+        /// Its label.
+        label: String,
+        /// Cells that it shows.
+        n_observed: usize,
+        /// Components whose scores are wanted.
+        n_components: usize,
+    },
+    /// A method that takes all rows alike was given rows with weights.
+    WeightsNotTaken {
+        /// The method.
+        method: &'static str,
     },
     /// New rows do not have the variables that an analysis was made with.
     VariablesDiffer {

@@ -5,6 +5,7 @@
 //! `use polars::prelude::*;` in a cell.
 
 // From tables to statistics.
+pub use crate::adequacy::{Adequacy, MultivariateNormality, adequacy, multivariate_normality};
 pub use crate::components::{
     Communalities, ComponentOptions, Decomposition, FittedComponents, PrincipalComponents,
     RandomisedOptions, Reconstruction, Route, Scaling, SupplementaryColumns, SupplementaryGroups,
@@ -20,10 +21,19 @@ pub use crate::exhibit::{
     correlation_map, loading_plot, pairs, profiles, score_matrix, score_plot, scree, significant,
     structure_circle, turntable, variance_shares,
 };
+pub use crate::gaps::{
+    Completed, ComponentChoice, ComponentRule, EstimatedCell, GapMethod, GapOptions,
+    ProbabilisticComponents, ProbabilisticOptions, components_for_gaps, estimate_missing,
+    probabilistic_components,
+};
 pub use crate::parallel::{Noise, ParallelAnalysis, ParallelOptions, parallel_analysis};
 pub use crate::random::{Generator, random_generator, random_normal};
 pub use crate::robust::{
     RobustComponents, RobustOptions, RobustRoute, RobustScatter, robust_components, robust_scatter,
+};
+pub use crate::stability::{
+    Alignment, AsymptoticErrors, AsymptoticOptions, Bootstrap, BootstrapOptions, LeaveOut,
+    LeaveOutOptions, asymptotic_errors, bootstrap, leave_out,
 };
 pub use crate::table::{
     ColumnCheck, ColumnDescription, ColumnDescriptions, DataMatrix, FrameToMatrix, GappedMatrix,

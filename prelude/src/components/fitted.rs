@@ -83,6 +83,18 @@ impl FittedComponents {
     /// ```
     ///
     /// A variable that does not vary has no correlation with anything: its row is NaN.
+    ///
+    /// ```
+    /// use semiaxis::components::{Scaling, principal_components};
+    /// use semiaxis::nalgebra::dmatrix;
+    /// use semiaxis::table::DataMatrix;
+    ///
+    /// let x = DataMatrix::from_unnamed(dmatrix![1.0, 1.0; 2.0, 3.0; 3.0, 2.0])?;
+    /// let pca = principal_components(&x, Scaling::Correlation)?;
+    /// // Loading √(1/2), variance 3/2.
+    /// assert!((pca.structure()[(0, 0)] - 0.75_f64.sqrt()).abs() < 1e-12);
+    /// # Ok::<(), semiaxis::Error>(())
+    /// ```
     pub fn structure(&self) -> NamedMatrix {
         let mut values = self.loadings.values().clone();
         for (mut column, variance) in values.column_iter_mut().zip(self.variances.iter()) {
@@ -105,6 +117,19 @@ impl FittedComponents {
     /// (`x.select(pca.variables())?` brings them into it) and must have gone through the same
     /// transformations with the same numbers; rows as they were measured go through
     /// [`project_raw`](Self::project_raw).
+    ///
+    /// ```
+    /// use semiaxis::components::{Scaling, principal_components};
+    /// use semiaxis::nalgebra::dmatrix;
+    /// use semiaxis::table::DataMatrix;
+    ///
+    /// let x = DataMatrix::from_unnamed(dmatrix![1.0, 1.0; 2.0, 3.0; 3.0, 2.0])?;
+    /// let pca = principal_components(&x, Scaling::Correlation)?;
+    /// let new = DataMatrix::from_unnamed(dmatrix![3.0, 3.0])?;
+    /// // One standard deviation above the mean in both variables.
+    /// assert!((pca.project(&new)?[(0, 0)] - 2.0_f64.sqrt()).abs() < 1e-12);
+    /// # Ok::<(), semiaxis::Error>(())
+    /// ```
     ///
     /// # Errors
     ///

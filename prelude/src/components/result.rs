@@ -49,6 +49,19 @@ impl PrincipalComponents {
     /// x̂_ij = x̄_j + s_j Σ_{k ≤ K} z_ik v_jk
     /// ```
     ///
+    /// ```
+    /// use semiaxis::components::{Scaling, principal_components};
+    /// use semiaxis::nalgebra::dmatrix;
+    /// use semiaxis::table::DataMatrix;
+    ///
+    /// let x = DataMatrix::from_unnamed(dmatrix![1.0, 1.0; 2.0, 3.0; 3.0, 2.0])?;
+    /// let pca = principal_components(&x, Scaling::Correlation)?;
+    /// let one = pca.reconstruct(1)?;
+    /// assert!((one.proportion() - 0.75).abs() < 1e-12);
+    /// assert!((one.residual_sum_of_squares() - 1.0).abs() < 1e-12); // (n − 1) times 1/2
+    /// # Ok::<(), semiaxis::Error>(())
+    /// ```
+    ///
     /// # Errors
     ///
     /// [`Error::ComponentOutOfRange`](crate::Error::ComponentOutOfRange) unless 1 ≤ K ≤ r.

@@ -24,11 +24,11 @@ const SHORT: usize = 4096;
 /// Values are centred before they are multiplied: taking the mean's part off afterwards would lose
 /// the digits of a large common offset. After an interrupt products are left unfinished; whoever
 /// asked for one has to call `checkpoint` before using it.
-pub(super) struct Standardised<'a> {
-    pub(super) x: &'a DMatrix<f64>,
-    pub(super) mean: &'a DVector<f64>,
-    pub(super) scale: &'a DVector<f64>,
-    pub(super) weights: Option<&'a RowWeights>,
+pub(crate) struct Standardised<'a> {
+    pub(crate) x: &'a DMatrix<f64>,
+    pub(crate) mean: &'a DVector<f64>,
+    pub(crate) scale: &'a DVector<f64>,
+    pub(crate) weights: Option<&'a RowWeights>,
 }
 
 impl Standardised<'_> {
@@ -47,7 +47,7 @@ impl Standardised<'_> {
     }
 
     /// The product of the transpose with a matrix that has a row for each row: p × r.
-    pub(super) fn transposed_times(&self, left: &DMatrix<f64>) -> DMatrix<f64> {
+    pub(crate) fn transposed_times(&self, left: &DMatrix<f64>) -> DMatrix<f64> {
         let weighted = self.weights.map(|weights| {
             let mut weighted = left.clone();
             weights.weigh_rows(&mut weighted);

@@ -353,8 +353,55 @@ impl fmt::Display for Error {
                 list(f, columns, |f, (name, value)| write!(f, "{} is often {value}", Name(name)))?;
                 write!(f, "; leave it out or use the covariance")
             }
+            Error::DegenerateResamples { usable, drawn, columns } => {
+                write!(f, "only {usable} of {drawn} resamples could be analysed")?;
+                if !columns.is_empty() {
+                    write!(f, "; columns that did not vary in the others: ")?;
+                    list(f, columns, |f, at| {
+                        write!(f, "{} ({} times)", Name(&at.column), at.count)
+                    })?;
+                    write!(f, "; leave them out, or analyse covariances")?;
+                }
+                Ok(())
+            }
             Error::ComponentOutOfRange { asked, available } => {
                 write!(f, "{asked} components were asked for; accepted: 1 to {available}")
+            }
+            Error::ConstantObserved { columns } => {
+                write!(f, "nothing can be estimated in a column that shows one value only: ")?;
+                list(f, columns, |f, (name, value, count)| {
+                    write!(f, "{} is {value} in {}", Name(name), plural(*count, "cell"))
+                })?;
+                write!(f, "; leave it out")
+            }
+            Error::TooFewObserved { n_components, found, needed } => write!(
+                f,
+                "{} need at least {} with a value, there {}; ask for fewer",
+                plural(*n_components, "component"),
+                plural(*needed, "cell"),
+                are(*found)
+            ),
+            Error::NoNoise { n_components } => write!(
+                f,
+                "{} describe the observed cells exactly, so that no noise is left to estimate; \
+                 ask for fewer",
+                plural(*n_components, "component")
+            ),
+            Error::ScoresUndetermined { row, label, n_observed, n_components } => {
+                write!(f, "row {row}")?;
+                if *label != row.to_string() {
+                    write!(f, " ({})", Name(label))?;
+                }
+                write!(
+                    f,
+                    " shows {}, too little to tell {} without shrinkage; ask for fewer, or for a \
+                     method that shrinks",
+                    plural(*n_observed, "value"),
+                    plural(*n_components, "score")
+                )
+            }
+            Error::WeightsNotTaken { method } => {
+                write!(f, "{method} takes all rows alike; give it the rows without weights")
             }
             Error::VariablesDiffer { missing, extra, order } => {
                 write!(f, "the variables are not those of the analysis")?;

@@ -272,6 +272,16 @@ fn matrix_notes(labels: &LabelSource, weights: Option<&[f64]>, notes: &MatrixNot
             rows(notes.n_table_rows)
         ));
     }
+    if !notes.estimated.is_empty() {
+        let n_cells = notes.estimated.iter().map(|column| column.count).sum();
+        let columns: Vec<String> =
+            notes.estimated.iter().map(|c| format!("{} in {}", c.count, c.column)).collect();
+        lines.push(format!(
+            "{} estimated, not measured: {}.",
+            counted(n_cells, "missing value"),
+            listed(columns.iter().map(String::as_str))
+        ));
+    }
     lines
 }
 

@@ -159,6 +159,7 @@ impl Parts {
             dropped_rows: rows.dropped(&columns, &labels.text),
             n_table_rows: height,
             weights: options.weights.clone(),
+            estimated: Vec::new(),
         };
         Ok(Parts {
             values,

@@ -2,6 +2,8 @@
 
 use std::fmt;
 
+use crate::error::ColumnCount;
+
 /// Where the labels of a matrix's rows come from.
 #[derive(Debug, Clone, PartialEq, Eq)]
 #[non_exhaustive]
@@ -71,6 +73,8 @@ pub struct MatrixNotes {
     pub n_table_rows: usize,
     /// The column that weighs the rows, if one does.
     pub weights: Option<String>,
+    /// Columns in which missing values were replaced by estimates, and how many in each.
+    pub estimated: Vec<ColumnCount>,
 }
 
 impl fmt::Display for LabelSource {

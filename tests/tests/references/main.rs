@@ -2,9 +2,11 @@
 //! family. `tests/references/README.md` says how the values were made.
 
 mod components;
+mod gaps;
 mod outliers;
 mod parallel;
 mod robust;
+mod stability;
 mod tables;
 mod transform;
 mod weights_and_meaning;

@@ -151,7 +151,8 @@ fn variances(fields: &Fields<'_>, most: usize) -> Result<DVector<f64>> {
     }
     let descend = variances.windows(2).all(|pair| pair[0] >= pair[1]);
     if !(descend && variances[variances.len() - 1] > 0.0) {
-        return Err(fields.fault("variances", "not that", "numbers above 0 that do not increase"));
+        let found = "a list that increases, or reaches 0";
+        return Err(fields.fault("variances", found, "numbers above 0 that do not increase"));
     }
     Ok(variances.into())
 }
@@ -162,14 +163,14 @@ fn check_orthonormal(fields: &Fields<'_>, loadings: &DMatrix<f64>) -> Result<()>
         products[(k, k)] -= 1.0;
     }
     // Written so that NaN, from products that overflow, does not pass.
-    if products.iter().all(|product| product.abs() <= CLOSE) {
-        return Ok(());
+    match products.iter().find(|product| !(product.abs() <= CLOSE)) {
+        None => Ok(()),
+        Some(off) => Err(fields.fault(
+            "loadings",
+            &format!("a list of columns whose lengths or angles are off by {off:.1e}"),
+            "columns of unit length, perpendicular to one another",
+        )),
     }
-    Err(fields.fault(
-        "loadings",
-        "not that",
-        "columns of unit length, perpendicular to one another",
-    ))
 }
 
 fn approximation(fields: &Fields<'_>, route: Route, r: usize) -> Result<Option<Approximation>> {
@@ -200,7 +201,11 @@ fn approximation(fields: &Fields<'_>, route: Route, r: usize) -> Result<Option<A
         return Err(fields.fault("norm_bound", &found, "a number not below 0"));
     }
     if approximation.residuals.iter().any(|residual| *residual < 0.0) {
-        return Err(fields.fault("residuals", "with a number below 0", "numbers not below 0"));
+        return Err(fields.fault(
+            "residuals",
+            "a list with a number below 0",
+            "numbers not below 0",
+        ));
     }
     Ok(Some(approximation))
 }
@@ -238,7 +243,11 @@ fn check_whole(fields: &Fields<'_>, fitted: &FittedComponents) -> Result<()> {
         return Err(fields.fault("rank_tolerance", &found, accepted));
     }
     if let Some(below) = deviation.iter().find(|deviation| **deviation < 0.0) {
-        return Err(fields.fault("deviations", &format!("with {below}"), "no number below 0"));
+        return Err(fields.fault(
+            "deviations",
+            &format!("a list with {below}"),
+            "no number below 0",
+        ));
     }
     let scales_fit = match fitted.scaling {
         Scaling::Correlation => scale == deviation && scale.iter().all(|scale| *scale > 0.0),
@@ -246,7 +255,7 @@ fn check_whole(fields: &Fields<'_>, fitted: &FittedComponents) -> Result<()> {
     };
     if !scales_fit {
         let accepted = "`deviations`, all above 0, under correlation; ones under covariance";
-        return Err(fields.fault("scale", "not that", accepted));
+        return Err(fields.fault("scale", "at odds with `scaling`", accepted));
     }
     let total: f64 = match fitted.scaling {
         Scaling::Correlation => p as f64,
@@ -260,7 +269,7 @@ fn check_whole(fields: &Fields<'_>, fitted: &FittedComponents) -> Result<()> {
     let sum = variances.sum();
     if !(if fitted.is_complete() { is_close(sum, total) } else { sum <= total * (1.0 + CLOSE) }) {
         let accepted = "numbers whose sum is `total_variance`, or less when some were left out";
-        return Err(fields.fault("variances", &format!("of sum {sum}"), accepted));
+        return Err(fields.fault("variances", &format!("a list of sum {sum}"), accepted));
     }
     Ok(())
 }
