@@ -1,6 +1,7 @@
 //! What a Semiaxis cell finds preloaded: tables, matrices, multivariate statistics and exhibits.
 
 pub mod adequacy;
+pub mod comparison;
 pub mod components;
 pub mod distances;
 pub mod error;
@@ -11,6 +12,7 @@ pub mod parallel;
 pub mod prelude;
 pub mod random;
 pub mod robust;
+pub mod rotation;
 pub mod stability;
 pub mod table;
 pub mod transform;
