@@ -359,7 +359,7 @@ pub enum Error {
     NoSpread {
         /// Each such column and its middle.
         columns: Vec<(String, f64)>,
-        /// The measure of spread that is zero, or that a transformation was to be judged by.
+        /// The measure of spread that is zero or beyond what a number can hold.
         measure: &'static str,
     },
     /// Rows did not go through the transformations that were expected of them.
@@ -543,6 +543,43 @@ pub enum Error {
         chart: &'static str,
         /// The settings that it has.
         available: Vec<&'static str>,
+    },
+    /// Rows of a matrix are zero and so cannot be brought to unit length.
+    ZeroRows {
+        /// Their names.
+        rows: Vec<String>,
+    },
+    /// Columns of a matrix are combinations of one another.
+    DependentColumns {
+        /// The matrix.
+        what: &'static str,
+        /// Its rank.
+        rank: usize,
+        /// Its columns.
+        n_cols: usize,
+    },
+    /// Columns are zero and so have no direction to compare.
+    ZeroColumns {
+        /// The matrix.
+        what: &'static str,
+        /// Their names.
+        columns: Vec<String>,
+    },
+    /// An oblique rotation let components fall together from every start.
+    RotationCollapsed {
+        /// The rotation.
+        rotation: String,
+        /// The number of starts.
+        n_starts: usize,
+    },
+    /// Two matrices that are compared do not have the same rows.
+    RowNamesDiffer {
+        /// Rows of the first that the second lacks.
+        missing: Vec<String>,
+        /// Rows of the second that the first lacks.
+        extra: Vec<String>,
+        /// The first place, counted from 1, where the order differs: in the first and the second.
+        order: Option<(usize, String, String)>,
     },
     /// An iteration ended without a usable answer.
     NoConvergence {

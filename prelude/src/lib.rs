@@ -1,6 +1,7 @@
 //! What a Semiaxis cell finds preloaded: tables, matrices, multivariate statistics and exhibits.
 
 pub mod adequacy;
+pub mod comparison;
 pub mod components;
 pub mod error;
 pub mod exhibit;
@@ -9,6 +10,7 @@ pub mod live;
 pub mod parallel;
 pub mod prelude;
 pub mod random;
+pub mod rotation;
 pub mod stability;
 pub mod table;
 pub mod transform;

@@ -6,6 +6,11 @@
 
 // From tables to statistics.
 pub use crate::adequacy::{Adequacy, MultivariateNormality, adequacy, multivariate_normality};
+pub use crate::comparison::{
+    Congruence, PrincipalAngles, Procrustes, ProcrustesOptions, ProcrustesTest,
+    ProcrustesTestOptions, Similarity, congruence, principal_angles, procrustes, procrustes_test,
+    procrustes_with,
+};
 pub use crate::components::{
     Communalities, ComponentOptions, Decomposition, FittedComponents, PrincipalComponents,
     RandomisedOptions, Reconstruction, Route, Scaling, SupplementaryColumns, SupplementaryGroups,
@@ -24,6 +29,9 @@ pub use crate::gaps::{
 };
 pub use crate::parallel::{Noise, ParallelAnalysis, ParallelOptions, parallel_analysis};
 pub use crate::random::{Generator, random_generator, random_normal};
+pub use crate::rotation::{
+    Rotated, RotatedComponents, Rotation, RotationOptions, rotate, rotate_with,
+};
 pub use crate::stability::{
     Alignment, AsymptoticErrors, AsymptoticOptions, Bootstrap, BootstrapOptions, LeaveOut,
     LeaveOutOptions, asymptotic_errors, bootstrap, leave_out,

@@ -261,7 +261,7 @@ impl fmt::Display for Error {
                 write!(f, "; accepted: {accepted}")
             }
             Error::NoSpread { columns, measure } => {
-                write!(f, "columns whose {measure} is zero: ")?;
+                write!(f, "columns without a {measure} to divide by: ")?;
                 list(f, columns, |f, (name, middle)| write!(f, "{}, about {middle}", Name(name)))?;
                 write!(f, "; leave them out, or transform the others by name with `.of([…])`")
             }
@@ -425,6 +425,44 @@ impl fmt::Display for Error {
             Error::Interrupted => write!(f, "the computation was asked to stop"),
             Error::SettingNotForChart { setting, chart, available } => {
                 write!(f, "a {chart} has no {setting}; it has {}", available.join(", "))
+            }
+            Error::ZeroRows { rows } => write!(
+                f,
+                "rows of zeros cannot be brought to unit length: {}; leave them out, or do without \
+                 Kaiser normalisation",
+                Names(rows)
+            ),
+            Error::DependentColumns { what, rank, n_cols } => write!(
+                f,
+                "{what} have {} but rank {rank}: some columns can be computed from others, so \
+                 ask for fewer components",
+                plural(*n_cols, "column")
+            ),
+            Error::ZeroColumns { what, columns } => {
+                write!(f, "columns of zeros in {what} have no direction: {}", Names(columns))
+            }
+            Error::RotationCollapsed { rotation, n_starts } => write!(
+                f,
+                "{rotation}: two components fell together from {}; use a smaller γ, 0 being usual",
+                plural(*n_starts, "start")
+            ),
+            Error::RowNamesDiffer { missing, extra, order } => {
+                write!(f, "the rows of the two matrices are not the same")?;
+                if !missing.is_empty() {
+                    write!(f, "; only in the first: {}", Names(missing))?;
+                }
+                if !extra.is_empty() {
+                    write!(f, "; only in the second: {}", Names(extra))?;
+                }
+                if let Some((place, first, second)) = order {
+                    write!(
+                        f,
+                        "; place {place} holds {} in the first and {} in the second",
+                        Name(first),
+                        Name(second)
+                    )?;
+                }
+                Ok(())
             }
             Error::NoConvergence { method } => {
                 write!(f, "{method} did not converge; please report this with the data")
