@@ -449,6 +449,26 @@ pub enum Error {
         /// Its order, which is the number of variables.
         order: usize,
     },
+    /// So many rows satisfy one linear equation exactly that the most compact ones have no volume.
+    ExactFit {
+        /// The method.
+        method: &'static str,
+        /// Rows that satisfy the equation.
+        n_on: usize,
+        /// Rows there are.
+        n_rows: usize,
+        /// Variables of the equation, each with its coefficient.
+        coefficients: Vec<(String, f64)>,
+        /// What the products of coefficients and variables sum to.
+        constant: f64,
+        /// Labels of the rows that do not satisfy it.
+        off: Vec<String>,
+    },
+    /// Half or more of the values of a column are equal, so that it has no robust spread.
+    NoRobustSpread {
+        /// Each such column and its median.
+        columns: Vec<(String, f64)>,
+    },
     /// Too many resamples could not be analysed, since columns did not vary in them.
     DegenerateResamples {
         /// Resamples that could be analysed.

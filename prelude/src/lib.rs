@@ -3,6 +3,7 @@
 pub mod adequacy;
 pub mod comparison;
 pub mod components;
+pub mod distances;
 pub mod error;
 pub mod exhibit;
 pub mod gaps;
@@ -10,6 +11,7 @@ pub mod live;
 pub mod parallel;
 pub mod prelude;
 pub mod random;
+pub mod robust;
 pub mod rotation;
 pub mod stability;
 pub mod table;

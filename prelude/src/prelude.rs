@@ -16,6 +16,10 @@ pub use crate::components::{
     RandomisedOptions, Reconstruction, Route, Scaling, SupplementaryColumns, SupplementaryGroups,
     principal_components, principal_components_with,
 };
+pub use crate::distances::{
+    Contributions, Distances, QRule, Standing, TSquaredAndQ, distances, distances_of,
+    t_squared_and_q,
+};
 pub use crate::error::{Error, Result};
 pub use crate::exhibit::{
     Bundle, Chart, Content, Exhibit, NumberFormat, Reference, Table, TableColumn, biplot,
@@ -29,6 +33,9 @@ pub use crate::gaps::{
 };
 pub use crate::parallel::{Noise, ParallelAnalysis, ParallelOptions, parallel_analysis};
 pub use crate::random::{Generator, random_generator, random_normal};
+pub use crate::robust::{
+    RobustComponents, RobustOptions, RobustRoute, RobustScatter, robust_components, robust_scatter,
+};
 pub use crate::rotation::{
     Rotated, RotatedComponents, Rotation, RotationOptions, rotate, rotate_with,
 };

@@ -337,6 +337,22 @@ impl fmt::Display for Error {
                  {order}, so some variables can be computed from others: leave {} out",
                 order - rank
             ),
+            Error::ExactFit { method, n_on, n_rows, coefficients, constant, off } => {
+                write!(f, "{method}: {n_on} of {n_rows} rows satisfy one equation exactly: ")?;
+                list(f, coefficients, |f, (name, coefficient)| {
+                    write!(f, "{coefficient:.6} × {}", Name(name))
+                })?;
+                write!(f, " sum to {constant:.6}")?;
+                if !off.is_empty() {
+                    write!(f, "; rows that do not: {}", Names(off))?;
+                }
+                write!(f, "; leave one of these variables out, or take a larger subset")
+            }
+            Error::NoRobustSpread { columns } => {
+                write!(f, "half or more of the values of a column are equal: ")?;
+                list(f, columns, |f, (name, value)| write!(f, "{} is often {value}", Name(name)))?;
+                write!(f, "; leave it out or use the covariance")
+            }
             Error::DegenerateResamples { usable, drawn, columns } => {
                 write!(f, "only {usable} of {drawn} resamples could be analysed")?;
                 if !columns.is_empty() {

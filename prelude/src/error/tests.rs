@@ -105,6 +105,17 @@ fn examples() -> Vec<Error> {
         Error::ConstantColumns { columns: vec![("x".into(), 0.5)] },
         Error::NoVariation { n_rows: 9 },
         Error::Magnitude { column: "x".into(), value: 1e200, least: 1e-145, most: 1e145 },
+        Error::WeightsNotCovered { method: "the robust scatter" },
+        Error::SingularScatter { method: "the robust scatter", rank: 3, order: 4 },
+        Error::ExactFit {
+            method: "the robust scatter",
+            n_on: 8,
+            n_rows: 10,
+            coefficients: vec![("x".into(), 0.6), ("y".into(), -0.8)],
+            constant: 2.0,
+            off: names(&["a", "b"]),
+        },
+        Error::NoRobustSpread { columns: vec![("x".into(), 4.0)] },
         Error::ComponentOutOfRange { asked: 9, available: 3 },
         Error::VariablesDiffer {
             missing: names(&["x"]),

@@ -122,6 +122,23 @@ fn leaving_out_a_row_is_the_analysis_of_the_others() {
 }
 
 #[test]
+fn a_row_that_holds_nearly_all_variation_can_be_left_out() {
+    // Without the last row the columns vary a hundred million times less.
+    let mut x = structured(25, 3, 4);
+    x.row_mut(24).iter_mut().for_each(|value| *value += 1e8);
+    let others: Vec<usize> = (0..24).collect();
+    for scaling in BOTH {
+        let pca = analysed(x.clone(), scaling);
+        let expected = naive(&x, &others, scaling);
+        let refit = Refit::new(&pca, 1, Alignment::Matching);
+        let refitted = refit.without(24, &mut refit.workspace()).unwrap().unwrap();
+        // The data themselves are known to 1e8 × 1e-16 of their units only.
+        let roots = expected.variances().as_slice();
+        assert_all_relative(&refitted.variances[..3], roots, 1e-6, &format!("{scaling}"));
+    }
+}
+
+#[test]
 fn angles_of_planes_that_were_built() {
     for angle in [1e-9_f64, 1e-4, 0.3, 0.785, 0.8, 1.2, 1.570_796] {
         let a = dmatrix![1.0, 0.0; 0.0, 1.0; 0.0, 0.0; 0.0, 0.0];

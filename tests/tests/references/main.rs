@@ -4,7 +4,9 @@
 mod comparison;
 mod components;
 mod gaps;
+mod outliers;
 mod parallel;
+mod robust;
 mod rotation;
 mod stability;
 mod tables;
