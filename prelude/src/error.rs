@@ -323,6 +323,20 @@ pub enum Error {
         /// Each such column and the value it holds throughout.
         columns: Vec<(String, f64)>,
     },
+    /// Some variables can be computed from others, and the method needs that none can.
+    RankDeficient {
+        /// What needs full rank.
+        method: &'static str,
+        /// The numerical rank.
+        rank: usize,
+        /// What it would have to be.
+        needed: usize,
+    },
+    /// The method does not cover rows that carry weights.
+    WeightsNotCovered {
+        /// The method.
+        method: &'static str,
+    },
     /// No column varies.
     NoVariation {
         /// Rows there are.

@@ -7,6 +7,7 @@ pub mod live;
 pub mod parallel;
 pub mod prelude;
 pub mod random;
+pub mod retention;
 pub mod table;
 
 mod distributions;

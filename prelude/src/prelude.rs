@@ -16,8 +16,13 @@ pub use crate::exhibit::{
     correlation_map, loading_plot, pairs, profiles, score_matrix, score_plot, scree, significant,
     structure_circle, variance_shares,
 };
-pub use crate::parallel::{Noise, ParallelAnalysis, ParallelOptions, parallel_analysis};
+pub use crate::parallel::{
+    Noise, ParallelAnalysis, ParallelOptions, RootsOf, parallel_analysis,
+};
 pub use crate::random::{Generator, random_generator, random_normal};
+pub use crate::retention::{
+    Effort, Retention, RetentionOptions, Rule, Verdict, retention, retention_with,
+};
 pub use crate::table::{
     ColumnDescription, ColumnDescriptions, DataMatrix, FrameToMatrix, GappedMatrix, Label,
     MatrixOptions, Missing, MissingPattern, MissingValues, NamedMatrix, TableOptions,

@@ -242,6 +242,15 @@ impl fmt::Display for Error {
                 })?;
                 write!(f, "; leave it out or use the covariance")
             }
+            Error::RankDeficient { method, rank, needed } => write!(
+                f,
+                "{method} needs variables of which none can be computed from others: the rank is \
+                 {rank}, it would have to be {needed}; leave redundant columns out"
+            ),
+            Error::WeightsNotCovered { method } => write!(
+                f,
+                "{method} does not cover rows that carry weights; `.without_weights()` takes them off"
+            ),
             Error::NoVariation { n_rows } => {
                 write!(f, "no column varies over the {n_rows} rows")
             }
