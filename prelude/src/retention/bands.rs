@@ -1,6 +1,8 @@
 //! Bootstrap intervals of the variances, and the rules that rest on them.
 
 use faer::dyn_stack::MemBuffer;
+use faer::linalg::matmul::triangular::{self, BlockStructure};
+use faer::{Accum, Par};
 use nalgebra::{DMatrix, DVector};
 use rand::RngExt;
 
@@ -8,6 +10,7 @@ use super::subject::Subject;
 use super::verdict::{Answer, Comparison, Criterion, Reason};
 use crate::components::Scaling;
 use crate::components::spectrum::{roots_workspace, symmetric_roots};
+use crate::components::views::{view, view_mut};
 use crate::error::Result;
 use crate::quantile::{ascending, quantile};
 use crate::repeat::repeat;
@@ -58,6 +61,7 @@ impl VarianceBands {
 /// Memory that one thread keeps from replicate to replicate.
 struct Workspace {
     rows: DMatrix<f64>,
+    cross: DMatrix<f64>,
     ascending: Vec<f64>,
     scratch: MemBuffer,
 }
@@ -69,37 +73,50 @@ pub(super) fn bands(subject: &Subject) -> Result<std::result::Result<VarianceBan
     let (n, p) = (subject.n, subject.p);
     let scaled = subject.scaled_rows();
     let correlations = subject.pca.scaling() == Scaling::Correlation;
+    let divisor = (n - 1) as f64;
     let n_replicates = subject.options.n_replicates();
     let workspace = || Workspace {
         rows: DMatrix::zeros(n, p),
+        cross: DMatrix::zeros(p, p),
         ascending: vec![0.0; p],
         scratch: roots_workspace(p),
     };
-    let drawn = repeat("bootstrap", n_replicates, subject.seed, workspace, |work, generator, _| {
-        let chosen: Vec<usize> = (0..n).map(|_| generator.random_range(0..n)).collect();
-        for (mut into, from) in work.rows.column_iter_mut().zip(scaled.column_iter()) {
-            for (value, row) in into.iter_mut().zip(&chosen) {
-                *value = from[*row];
+    let drawn =
+        repeat("bootstrap", n_replicates, subject.seed, workspace, |work, generator, _| {
+            let chosen: Vec<usize> = (0..n).map(|_| generator.random_range(0..n)).collect();
+            for (mut into, from) in work.rows.column_iter_mut().zip(scaled.column_iter()) {
+                let mut sum = 0.0;
+                for (value, row) in into.iter_mut().zip(&chosen) {
+                    *value = from[*row];
+                    sum += *value;
+                }
+                // The columns were centred before, so no digits of an offset are lost here.
+                let mean = sum / n as f64;
+                into.add_scalar_mut(-mean);
             }
-            // The columns were centred before, so no digits of an offset are lost here.
-            let mean = into.mean();
-            into.add_scalar_mut(-mean);
-        }
-        let mut cross = work.rows.tr_mul(&work.rows) / (n - 1) as f64;
-        if correlations {
-            let variances = cross.diagonal();
-            if variances.iter().any(|variance| !(*variance > f64::EPSILON)) {
-                return Ok(None);
-            }
-            for (j, mut column) in cross.column_iter_mut().enumerate() {
-                for (i, value) in column.iter_mut().enumerate() {
-                    *value /= (variances[i] * variances[j]).sqrt();
+            if correlations {
+                for mut column in work.rows.column_iter_mut() {
+                    let variance = column.norm_squared() / divisor;
+                    if !(variance > f64::EPSILON) {
+                        return Ok(None);
+                    }
+                    column /= variance.sqrt();
                 }
             }
-        }
-        symmetric_roots(&cross, &mut work.ascending, &mut work.scratch)?;
-        Ok(Some(work.ascending.iter().rev().copied().collect::<Vec<f64>>()))
-    })?;
+            triangular::matmul(
+                view_mut(&mut work.cross),
+                BlockStructure::TriangularLower,
+                Accum::Replace,
+                view(&work.rows).transpose(),
+                BlockStructure::Rectangular,
+                view(&work.rows),
+                BlockStructure::Rectangular,
+                1.0 / divisor,
+                Par::Seq,
+            );
+            symmetric_roots(&work.cross, &mut work.ascending, &mut work.scratch)?;
+            Ok(Some(work.ascending.iter().rev().copied().collect::<Vec<f64>>()))
+        })?;
     let roots: Vec<Vec<f64>> = drawn.into_iter().flatten().collect();
     let n_failed = n_replicates - roots.len();
     if n_failed as f64 > MOST_FAILED * n_replicates as f64 {

@@ -69,27 +69,33 @@ pub(super) fn prediction_errors(x: &DMatrix<f64>, n_groups: usize) -> Result<Vec
     let n_kept = (n - most_left_out).saturating_sub(1).min(p).saturating_sub(1);
     // The cross-product of all rows, from which that of a group is taken off.
     let cross = (p < n).then(|| x.transpose() * x);
-    let sums = repeat("cross-validation", n_groups, 0, || (), |_, _, group| {
-        let left_out: Vec<usize> = (group..n).step_by(n_groups).collect();
-        let away = x.select_rows(&left_out);
-        let stay = (n - left_out.len()) as f64;
-        // Columns sum to zero, so the mean of the rows that stay follows from the others.
-        let mean: DVector<f64> = -away.row_sum().transpose() / stay;
-        let loadings = match &cross {
-            Some(cross) => {
-                let mut lower = cross - away.transpose() * &away;
-                lower.ger(-stay, &mean, &mean, 1.0);
-                spectrum::symmetric(lower)?.vectors.columns(0, n_kept).into_owned()
+    let sums = repeat(
+        "cross-validation",
+        n_groups,
+        0,
+        || (),
+        |_, _, group| {
+            let left_out: Vec<usize> = (group..n).step_by(n_groups).collect();
+            let away = x.select_rows(&left_out);
+            let stay = (n - left_out.len()) as f64;
+            // Columns sum to zero, so the mean of the rows that stay follows from the others.
+            let mean: DVector<f64> = -away.row_sum().transpose() / stay;
+            let loadings = match &cross {
+                Some(cross) => {
+                    let mut lower = cross - away.transpose() * &away;
+                    lower.ger(-stay, &mean, &mean, 1.0);
+                    spectrum::symmetric(lower)?.vectors.columns(0, n_kept).into_owned()
+                }
+                None => wide_loadings(x, &left_out, &mean, n_kept)?,
+            };
+            let mut sums = vec![0.0; n_kept + 1];
+            for row in away.row_iter() {
+                let row = row.transpose() - &mean;
+                add_errors(&row, &loadings, &mut sums);
             }
-            None => wide_loadings(x, &left_out, &mean, n_kept)?,
-        };
-        let mut sums = vec![0.0; n_kept + 1];
-        for row in away.row_iter() {
-            let row = row.transpose() - &mean;
-            add_errors(&row, &loadings, &mut sums);
-        }
-        Ok(sums)
-    })?;
+            Ok(sums)
+        },
+    )?;
     let total = |k: usize| sums.iter().map(|sums| sums[k]).sum::<f64>();
     Ok((0..=n_kept).map(|k| total(k) / (n * p) as f64).collect())
 }

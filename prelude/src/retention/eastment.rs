@@ -12,8 +12,10 @@
 //!
 //! with d̄, v̄ from the table without row i and d̃, ũ from the table without column j, each vector
 //! turned to agree in sign with that of the whole table. Columns are centred and scaled once, from
-//! all rows. Leading components with W above one are kept; W. J. Krzanowski (1983) found 0.9 to
-//! serve as well (from memory), and all values of W are in the comparison.
+//! all rows. Components up to the last with W above one are kept: W need not decline, so that the
+//! first below one is no place to stop (Jolliffe 2002, section 6.1.5). The limit is to be taken with
+//! some latitude (0.9 has been used, from memory), and all values of W are in the comparison.
+//! Components of nearly equal variance mix between the decompositions, which makes W erratic.
 
 use nalgebra::{DMatrix, DVector};
 
@@ -31,7 +33,7 @@ pub(super) fn row_column_validation(subject: &Subject) -> Result<Answer> {
     let press = press(&rows, subject.pca.n_components() - 1)?;
     let values = gains(&press, subject.n, subject.p);
     let thresholds = vec![1.0; values.len()];
-    Ok(Ok(Comparison::new("W", Criterion::Above, values, thresholds)))
+    Ok(Ok(Comparison::new("W", Criterion::LastAbove, values, thresholds)))
 }
 
 fn fits(subject: &Subject) -> std::result::Result<(), Reason> {
@@ -72,14 +74,24 @@ pub(super) fn press(x: &DMatrix<f64>, most: usize) -> Result<Vec<f64>> {
     let (n, p) = x.shape();
     let cross = x.transpose() * x;
     let whole = spectrum::symmetric(cross.clone())?.vectors;
-    let without_column = repeat("cross-validation, columns", p, 0, || (), |_, _, column| {
-        scores_without_column(&cross, &whole, column, most)
-    })?;
-    let rows = repeat("cross-validation, rows", n, 0, || (), |_, _, row| {
-        let values = x.row(row).transpose();
-        let loadings = loadings_without_row(&cross, &whole, &values, most)?;
-        Ok(squared_errors(&values, &loadings, &without_column))
-    })?;
+    let without_column = repeat(
+        "cross-validation, columns",
+        p,
+        0,
+        || (),
+        |_, _, column| scores_without_column(&cross, &whole, column, most),
+    )?;
+    let rows = repeat(
+        "cross-validation, rows",
+        n,
+        0,
+        || (),
+        |_, _, row| {
+            let values = x.row(row).transpose();
+            let loadings = loadings_without_row(&cross, &whole, &values, most)?;
+            Ok(squared_errors(&values, &loadings, &without_column))
+        },
+    )?;
     let total = |k: usize| rows.iter().map(|sums| sums[k]).sum::<f64>();
     Ok((0..=most).map(|k| total(k) / (n * p) as f64).collect())
 }
@@ -113,8 +125,7 @@ fn scores_without_column(
 ) -> Result<DMatrix<f64>> {
     let lower = cross.clone().remove_row(column).remove_column(column);
     let spectrum = spectrum::symmetric(lower)?;
-    let mut multipliers =
-        spectrum.vectors.columns(0, most).into_owned().insert_row(column, 0.0);
+    let mut multipliers = spectrum.vectors.columns(0, most).into_owned().insert_row(column, 0.0);
     let tolerance = spectrum.roots[0] * f64::EPSILON * cross.nrows() as f64;
     for (t, mut multiplier) in multipliers.column_iter_mut().enumerate() {
         // ũᵀ u has the sign of ṽᵀ X̃ᵀ X v, since singular values are positive.

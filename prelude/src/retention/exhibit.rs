@@ -1,11 +1,9 @@
 //! Verdicts as a table, and where they agree.
 
 use super::result::{Agreement, Retention};
-use super::verdict::{Outcome, Verdict};
+use super::verdict::Verdict;
 use crate::components::Scaling;
-use crate::exhibit::{
-    Bundle, Exhibit, NumberFormat, Table, TableColumn, counted, stacked, stored,
-};
+use crate::exhibit::{Bundle, Exhibit, NumberFormat, Table, TableColumn, counted, stacked, stored};
 
 /// The rules that apply with what they keep, the numbers they agree on, and the rules that do not
 /// apply with the reason.
@@ -25,6 +23,7 @@ impl Exhibit for Retention {
 fn verdicts(of: &Retention, apply: &[&Verdict]) -> Table {
     let options = of.options();
     let comparisons = || apply.iter().filter_map(|verdict| verdict.comparison());
+    let decided = || comparisons().map(|comparison| comparison.decided_by());
     let mut table = Table::new(match of.span() {
         Some(span) if span.least == span.most => format!(
             "How many components to keep: all {} that apply say {}",
@@ -41,11 +40,17 @@ fn verdicts(of: &Retention, apply: &[&Verdict]) -> Table {
     })
     .column(TableColumn::texts("rule", apply.iter().map(|v| v.rule().name())).as_row_heads())
     .column(TableColumn::counts("keeps", comparisons().map(|c| c.n_components())))
-    .column(TableColumn::texts("what decided", comparisons().map(|c| c.deciding())))
+    .column(TableColumn::texts("by", comparisons().map(|c| c.what())))
+    .column(TableColumn::texts("last kept", decided().map(|(kept, _)| kept)))
+    .column(TableColumn::texts("one more", decided().map(|(_, more)| more)))
     .column(TableColumn::texts("source", apply.iter().map(|v| v.rule().authors())))
+    .note(
+        "Last kept: what speaks for the last component that the rule keeps; one more: what speaks \
+         against the next. Rules that compare place by place count until the first component that \
+         fails, W until the last that passes. Values to 3 significant digits.",
+    )
     .note(format!(
-        "{} and {} {}; divisor n − 1. Rules that compare place by place count until the first \
-         component that fails. Values to 3 significant digits.",
+        "{} and {} {}; divisor n − 1.",
         counted(of.n_rows(), "row"),
         counted(of.n_variables(), "variable"),
         match of.scaling() {
@@ -77,7 +82,7 @@ fn verdicts(of: &Retention, apply: &[&Verdict]) -> Table {
         Some((verdict.rule().name(), remark))
     });
     for (remark, names) in gathered(remarks) {
-        table = table.note(format!("{}: {remark}", names.join(", ")));
+        table = table.note(format!("{}: {remark}", names.join("; ")));
     }
     table.note(
         "Predicting rows that were left out from their own scores is not among the rules: the \
@@ -88,43 +93,51 @@ fn verdicts(of: &Retention, apply: &[&Verdict]) -> Table {
 fn agreement(of: &Retention) -> Table {
     let groups = of.agreement();
     let applying = of.n_applying();
-    let sentence = |group: &Agreement| {
-        let rules = if applying == 1 { "rule" } else { "rules" };
-        format!("{} of {applying} {rules}", group.rules().len())
-    };
-    let names = |group: &Agreement| {
-        group.rules().iter().map(|rule| rule.name()).collect::<Vec<_>>().join("; ")
-    };
+    let share = |group: &Agreement| format!("{} of {applying}", group.rules().len());
     let caption = match groups.first() {
         Some(group) => format!(
-            "Where they agree: {} by {} that apply",
+            "Where they agree: {} by {} rules that apply",
             counted(group.n_components(), "component"),
-            sentence(group)
+            share(group)
         ),
         None => "Where they agree: nowhere, for no rule applies".to_owned(),
     };
-    Table::new(caption)
+    let mut table = Table::new(caption)
         .column(
             TableColumn::counts("components", groups.iter().map(Agreement::n_components))
                 .as_row_heads(),
         )
-        .column(TableColumn::texts("given by", groups.iter().map(sentence)))
-        .column(TableColumn::texts("rules", groups.iter().map(names)))
-        .note(
-            "Rules ask different questions, and several look at the same thing: a majority is no \
-             proof. What the components are for and whether they can be interpreted is for the \
-             analyst to weigh.",
-        )
+        .column(TableColumn::texts("given by", groups.iter().map(share)));
+    for group in &groups {
+        let names: Vec<&str> = group.rules().iter().map(|rule| rule.name()).collect();
+        let components = counted(group.n_components(), "component");
+        table = table.note(format!("{components}: {}.", names.join("; ")));
+    }
+    table.note(
+        "Rules ask different questions, and several look at the same thing: a majority is no \
+         proof. What the components are for and whether they can be interpreted is for the analyst \
+         to weigh.",
+    )
 }
 
+/// Reasons are sentences, so each stands in a note under the rules it silences.
 fn without_answer(silent: &[&Verdict]) -> Table {
-    let reasons = silent.iter().filter_map(|verdict| match verdict.outcome() {
-        Outcome::DoesNotApply(reason) => Some(reason.to_string()),
-        Outcome::Keeps(_) => None,
-    });
-    Table::new("Rules that do not apply")
-        .column(TableColumn::texts("rule", silent.iter().map(|v| v.rule().name())).as_row_heads())
-        .column(TableColumn::texts("because", reasons))
+    let reasons: Vec<(&'static str, String)> = silent
+        .iter()
+        .filter_map(|verdict| Some((verdict.rule().name(), verdict.reason()?.to_string())))
+        .collect();
+    let groups = gathered(reasons.iter().map(|(name, reason)| (*name, reason.as_str())));
+    let mut table = Table::new(format!(
+        "{} not apply",
+        match silent.len() {
+            1 => "1 rule does".to_owned(),
+            more => format!("{more} rules do"),
+        }
+    ));
+    for (reason, names) in groups {
+        table = table.note(format!("{}: {reason}.", names.join("; ")));
+    }
+    table
 }
 
 /// Equal remarks once, with all rules they are about.

@@ -83,9 +83,11 @@ pub fn retention_with(pca: &PrincipalComponents, options: RetentionOptions) -> R
         normal: unless_left_out(&options, [Rule::NoiseMean, Rule::NoisePercentile], || {
             noise::run(&subject, Noise::Normal, RootsOf::Correlation)
         })?,
-        permuted: unless_left_out(&options, [Rule::PermutedMean, Rule::PermutedPercentile], || {
-            noise::run(&subject, Noise::Permuted, RootsOf::Correlation)
-        })?,
+        permuted: unless_left_out(
+            &options,
+            [Rule::PermutedMean, Rule::PermutedPercentile],
+            || noise::run(&subject, Noise::Permuted, RootsOf::Correlation),
+        )?,
         shared: unless_left_out(&options, [Rule::SharedMean, Rule::SharedPercentile], || {
             noise::run(&subject, Noise::Normal, RootsOf::ReducedCorrelation)
         })?,

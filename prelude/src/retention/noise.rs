@@ -36,11 +36,7 @@ pub(super) fn run(
     parallel_analysis(subject.pca.data(), options).map(Ok)
 }
 
-fn fits(
-    subject: &Subject,
-    noise: Noise,
-    roots_of: RootsOf,
-) -> std::result::Result<(), Reason> {
+fn fits(subject: &Subject, noise: Noise, roots_of: RootsOf) -> std::result::Result<(), Reason> {
     subject.needs_correlation()?;
     subject.needs_equal_rows()?;
     subject.needs_components(2)?;

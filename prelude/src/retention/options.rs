@@ -155,7 +155,8 @@ impl RetentionOptions {
     }
 
     pub(super) fn check(&self) -> Result<()> {
-        let refuse = |option, value, accepted| Err(Error::OptionOutOfRange { option, value, accepted });
+        let refuse =
+            |option, value, accepted| Err(Error::OptionOutOfRange { option, value, accepted });
         if !(self.share > 0.0 && self.share < 1.0) {
             return refuse("share", self.share, "above 0 and below 1");
         }

@@ -22,7 +22,7 @@ pub(super) fn average_partial(subject: &Subject, power: i32) -> Answer {
     subject.needs_components(3)?;
     let p = subject.p;
     let rank = subject.pca.n_components();
-    subject.needs_time(rank as f64 * 2.0 * (p * p) as f64)?;
+    subject.needs_usual_time(rank as f64 * 2.0 * (p * p) as f64)?;
     let structure = subject.pca.structure();
     let structure = structure.values();
     let mut left: DMatrix<f64> = structure * structure.transpose();

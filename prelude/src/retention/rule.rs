@@ -101,19 +101,19 @@ impl Rule {
             Rule::BrokenStick => "broken stick",
             Rule::Acceleration => "scree: acceleration factor",
             Rule::OptimalCoordinates => "scree: optimal coordinates",
-            Rule::NoiseMean => "parallel, normal noise: mean",
-            Rule::NoisePercentile => "parallel, normal noise: percentile",
+            Rule::NoiseMean => "parallel, normal: mean",
+            Rule::NoisePercentile => "parallel, normal: percentile",
             Rule::PermutedMean => "parallel, permuted: mean",
             Rule::PermutedPercentile => "parallel, permuted: percentile",
-            Rule::SharedMean => "parallel, reduced correlations: mean",
-            Rule::SharedPercentile => "parallel, reduced correlations: percentile",
+            Rule::SharedMean => "parallel, reduced: mean",
+            Rule::SharedPercentile => "parallel, reduced: percentile",
             Rule::AveragePartial => "minimum average partial",
-            Rule::AveragePartialFourth => "minimum average partial, fourth power",
+            Rule::AveragePartialFourth => "average partial, fourth power",
             Rule::BartlettTest => "equal roots: Bartlett",
             Rule::LawleyTest => "equal roots: Lawley",
             Rule::LikelihoodRatioTest => "equal roots: likelihood ratio",
-            Rule::RowColumnValidation => "cross-validation by row and column",
-            Rule::CellValidation => "cross-validation by cell",
+            Rule::RowColumnValidation => "cross-validation, row and column",
+            Rule::CellValidation => "cross-validation, cell by cell",
             Rule::SingularThreshold => "optimal singular-value threshold",
             Rule::TracyWidom => "Tracy–Widom",
             Rule::Evidence => "evidence (Minka)",
@@ -142,7 +142,7 @@ impl Rule {
             Rule::RowColumnValidation => "Eastment and Krzanowski 1982",
             Rule::CellValidation => "Bro et al. 2008",
             Rule::SingularThreshold => "Gavish and Donoho 2014",
-            Rule::TracyWidom => "Johnstone 2001; Patterson et al. 2006",
+            Rule::TracyWidom => "Patterson et al. 2006",
             Rule::Evidence => "Minka 2000",
             Rule::BootstrapMean | Rule::BootstrapGaps => "Jackson 1993",
         }
@@ -217,7 +217,7 @@ impl Rule {
             Rule::RowColumnValidation => {
                 "H. T. Eastment and W. J. Krzanowski (1982), \"Cross-validatory choice of the \
                  number of components from a principal component analysis\", Technometrics 24, \
-                 73–77"
+                 73–77; the last W above one after Jolliffe (2002), section 6.1.5"
             }
             Rule::CellValidation => {
                 "R. Bro, K. Kjeldahl, A. K. Smilde and H. A. L. Kiers (2008), \"Cross-validation \

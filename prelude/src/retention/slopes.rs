@@ -10,9 +10,9 @@ use super::verdict::{Answer, Comparison, Criterion};
 /// ```
 pub(super) fn acceleration(subject: &Subject) -> Answer {
     subject.needs_components(3)?;
-    // Nothing is said about keeping no component.
+    // Keeping no component is never the answer.
     let bends = subject.roots.windows(3).map(|three| three[2] - 2.0 * three[1] + three[0]);
-    let values: Vec<f64> = std::iter::once(f64::NAN).chain(bends).collect();
+    let values: Vec<f64> = std::iter::once(f64::NEG_INFINITY).chain(bends).collect();
     Ok(Comparison::new("second difference", Criterion::Largest, values, Vec::new())
         .with_remark("It always keeps at least one component, noise or not."))
 }

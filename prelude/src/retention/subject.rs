@@ -86,12 +86,18 @@ impl<'a> Subject<'a> {
 
     /// For rules that simulate, resample or cross-validate.
     pub(super) fn needs_time(&self, operations: f64) -> Result<(), Reason> {
-        match self.options.chosen_effort() {
-            Effort::Full => Ok(()),
-            Effort::Usual if operations <= USUAL => Ok(()),
-            Effort::Usual => Err(Reason::TooLong { operations }),
-            Effort::Formulas => Err(Reason::LeftOut),
+        if self.options.chosen_effort() == Effort::Formulas {
+            return Err(Reason::LeftOut);
         }
+        self.needs_usual_time(operations)
+    }
+
+    /// For formulas that are long where there are many variables.
+    pub(super) fn needs_usual_time(&self, operations: f64) -> Result<(), Reason> {
+        if self.options.chosen_effort() == Effort::Full || operations <= USUAL {
+            return Ok(());
+        }
+        Err(Reason::TooLong { operations })
     }
 
     /// Chi-squared tests of a covariance structure go wrong with the kurtosis of the rows first of

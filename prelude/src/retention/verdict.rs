@@ -60,6 +60,9 @@ pub enum Criterion {
     /// Leading places whose value lies above their threshold are kept. The first place stands for
     /// the first component.
     Above,
+    /// The last place whose value lies above its threshold is kept, with all before it. The first
+    /// place stands for the first component.
+    LastAbove,
     /// Leading places whose value lies below their threshold are kept. The first place stands for
     /// the first component.
     Below,
@@ -142,6 +145,11 @@ impl Comparison {
         };
         match self.criterion {
             Criterion::Above => pairs().take_while(|(value, limit)| value > limit).count(),
+            Criterion::LastAbove => {
+                let last =
+                    self.values.iter().zip(&self.thresholds).rposition(|(v, limit)| v > limit);
+                last.map_or(0, |place| place + 1)
+            }
             Criterion::Below => pairs().take_while(|(value, limit)| value < limit).count(),
             Criterion::Reaches => {
                 let short = pairs().take_while(|(value, limit)| value < limit).count();
@@ -152,40 +160,26 @@ impl Comparison {
         }
     }
 
-    /// What decided, in one line: the last place that was kept and the first that was not.
-    pub(super) fn deciding(&self) -> String {
-        let digits = |value: f64| significant(value, 3);
+    /// What speaks for the last component that is kept, and what against one more.
+    pub(super) fn decided_by(&self) -> (String, String) {
         let kept = self.n_components();
-        let pair = |place: usize, sign: &str| {
-            let (value, limit) = (self.values.get(place)?, self.thresholds.get(place)?);
-            Some(format!("{}: {} {sign} {}", place + 1, digits(*value), digits(*limit)))
-        };
-        let both = |yes: &str, no: &str| {
-            let last = kept.checked_sub(1).and_then(|place| pair(place, yes));
-            let next = pair(kept, no);
-            let parts: Vec<String> = last.into_iter().chain(next).collect();
-            format!("{} {}", self.what, parts.join("; "))
-        };
+        let digits = |value: f64| significant(value, 3);
+        let pair =
+            |place: usize, sign: &str| match (self.values.get(place), self.thresholds.get(place)) {
+                (Some(value), Some(limit)) => {
+                    format!("{} {sign} {}", digits(*value), digits(*limit))
+                }
+                _ => String::new(),
+            };
+        let at =
+            |place: usize| self.values.get(place).map_or(String::new(), |value| digits(*value));
+        let last =
+            |sign: &str| kept.checked_sub(1).map_or(String::new(), |place| pair(place, sign));
         match self.criterion {
-            Criterion::Above => both(">", "≤"),
-            Criterion::Below => both("<", "≥"),
-            Criterion::Reaches => {
-                let last = kept.checked_sub(1).and_then(|place| pair(place, "≥"));
-                format!("{} {}", self.what, last.unwrap_or_default())
-            }
-            Criterion::Smallest | Criterion::Largest => {
-                let word = if self.criterion == Criterion::Smallest { "smallest" } else { "largest" };
-                let value = self.values.get(kept).copied().unwrap_or(f64::NAN);
-                let near: Vec<String> = [kept.checked_sub(1), Some(kept + 1)]
-                    .into_iter()
-                    .flatten()
-                    .filter_map(|place| Some((place, *self.values.get(place)?)))
-                    .filter(|(_, value)| !value.is_nan())
-                    .map(|(place, value)| format!("{} with {place}", digits(value)))
-                    .collect();
-                let near = if near.is_empty() { String::new() } else { format!("; {}", near.join(", ")) };
-                format!("{word} {} {}{near}", self.what, digits(value))
-            }
+            Criterion::Above | Criterion::LastAbove => (last(">"), pair(kept, "≤")),
+            Criterion::Below => (last("<"), pair(kept, "≥")),
+            Criterion::Reaches => (last("≥"), String::new()),
+            Criterion::Smallest | Criterion::Largest => (at(kept), at(kept + 1)),
         }
     }
 }

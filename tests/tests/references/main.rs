@@ -3,6 +3,7 @@
 
 mod components;
 mod parallel;
+mod retention;
 mod tables;
 mod weights_and_meaning;
 
