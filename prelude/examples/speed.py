@@ -1,7 +1,7 @@
 """The peer of `speed.rs`: prints the smallest and the median time in milliseconds of the fastest
 exact way that numpy and scikit-learn have, and the name of that way.
 
-    python speed.py components|noise N P
+    python speed.py components|random|noise N P
 """
 
 import sys
@@ -53,6 +53,11 @@ def main():
         print(*timed(draw, 2000), "numpy, whole tables")
         return
     x = 5 + rng.standard_normal((n, p)) * (1 + numpy.arange(p) / p)
+    if kind == "random":
+        # As many directions and power iterations as ours.
+        pca = PCA(10, svd_solver="randomized", n_oversamples=10, iterated_power=4, random_state=1)
+        print(*timed(lambda: pca.fit(x), 500), "scikit-learn, randomized")
+        return
     # Both memory orders are tried: the peer may have the one that suits it.
     results = []
     for order in "CF":

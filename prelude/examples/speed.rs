@@ -1,4 +1,5 @@
-//! How long decompositions and parallel analyses take, beside another program on the same shapes.
+//! How long decompositions, random searches and parallel analyses take, beside another program on
+//! the same shapes.
 //!
 //! ```text
 //! cargo run --release -p semiaxis --example speed [-- PYTHON]
@@ -14,7 +15,10 @@ use std::time::Instant;
 use nalgebra::DMatrix;
 use rand_distr::{Distribution, StandardNormal};
 use rand_xoshiro::rand_core::SeedableRng;
-use semiaxis::components::{Scaling, principal_components};
+use semiaxis::components::{
+    ComponentOptions, Decomposition, RandomisedOptions, Scaling, principal_components,
+    principal_components_with,
+};
 use semiaxis::parallel::{ParallelOptions, parallel_analysis};
 use semiaxis::random::Generator;
 use semiaxis::table::DataMatrix;
@@ -36,6 +40,15 @@ fn main() {
             python.as_deref(),
             &["components", &n.to_string(), &p.to_string()],
         );
+    }
+    println!("the first 10 components by a random search, milliseconds, smallest (median)");
+    for (n, p) in [(20_000, 200), (200, 20_000), (4000, 4000)] {
+        let x = data(n, p);
+        let search = Decomposition::Randomised(RandomisedOptions::new().seed(1));
+        let options = ComponentOptions::new(Scaling::Covariance).keep(10).decomposition(search);
+        let ours = timed(5, || principal_components_with(&x, options).unwrap());
+        let shape = [&n.to_string()[..], &p.to_string()[..]];
+        report(&format!("{n} x {p}"), ours, python.as_deref(), &["random", shape[0], shape[1]]);
     }
     println!("parallel analysis with 1000 tables, milliseconds, smallest (median)");
     for (n, p) in [(500, 20), (100_000, 20)] {

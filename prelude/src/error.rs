@@ -15,6 +15,8 @@ use std::path::PathBuf;
 
 use polars::prelude::PolarsError;
 
+use crate::table::NumberType;
+
 /// The prelude's result.
 pub type Result<T, E = Error> = std::result::Result<T, E>;
 
@@ -194,6 +196,34 @@ pub enum Error {
         /// The name.
         name: String,
     },
+    /// A column was asked for by name and was also to be left out.
+    WantedAndUnwanted {
+        /// The name.
+        name: String,
+    },
+    /// No column has a name that fits a pattern.
+    NoColumnLike {
+        /// The pattern.
+        pattern: String,
+        /// The names there are.
+        available: Vec<String>,
+    },
+    /// No column has a type that was asked for.
+    NoColumnOfType {
+        /// The type.
+        number_type: NumberType,
+        /// The columns there are, each with its type.
+        columns: Vec<(String, String)>,
+    },
+    /// Leaving out columns with missing values would leave none.
+    NoColumnLeft {
+        /// The columns, and how many values each misses.
+        columns: Vec<ColumnCount>,
+        /// Rows in the table.
+        n_rows: usize,
+        /// The share of values that a column may miss.
+        share: f64,
+    },
     /// The table has no numeric column.
     NoNumericColumns {
         /// The columns there are, each with its type.
@@ -282,12 +312,23 @@ pub enum Error {
     },
     /// The weight of a row is not a positive finite number.
     BadWeight {
+        /// The column of the table that holds the weights, where there is one.
+        column: Option<String>,
         /// The first such row, counted from 1.
         row: usize,
         /// Its label.
         label: String,
         /// The weight that was given.
         value: f64,
+    },
+    /// A weight column has missing weights.
+    MissingWeights {
+        /// The weight column.
+        column: String,
+        /// The first row without a weight.
+        row: usize,
+        /// How many weights are missing.
+        count: usize,
     },
     /// Counts that should agree do not.
     ShapeMismatch {
@@ -297,6 +338,61 @@ pub enum Error {
         expected: usize,
         /// The count that was given.
         found: usize,
+    },
+
+    /// A value lies outside the domain of a transformation, or of the way back from one.
+    OutsideDomain {
+        /// What was attempted.
+        action: String,
+        /// The column.
+        column: String,
+        /// The first such row, counted from 1.
+        row: usize,
+        /// Its label.
+        label: String,
+        /// The value.
+        value: f64,
+        /// What is accepted, in words.
+        accepted: String,
+    },
+    /// Columns have no spread that they could be divided by.
+    NoSpread {
+        /// Each such column and its middle.
+        columns: Vec<(String, f64)>,
+        /// The measure of spread that is zero, or that a transformation was to be judged by.
+        measure: &'static str,
+    },
+    /// Rows did not go through the transformations that were expected of them.
+    TransformationsDiffer {
+        /// The transformations that were expected, in order.
+        wanted: Vec<String>,
+        /// Those that the rows went through, in order.
+        found: Vec<String>,
+    },
+    /// Something that was saved cannot be read back.
+    SavedForm {
+        /// The part at fault.
+        part: String,
+        /// What stands there.
+        found: String,
+        /// What would be accepted.
+        accepted: String,
+    },
+    /// Something was saved in a version that is not known.
+    SavedVersion {
+        /// What was saved.
+        format: &'static str,
+        /// Its version.
+        found: u64,
+        /// The version that is known.
+        known: u64,
+    },
+    /// An analysis that was saved holds no such thing.
+    NotSaved {
+        /// What was asked for.
+        what: &'static str,
+        /// The way out.
+        remedy: &'static str,
     },
 
     // Statistics.
@@ -323,20 +419,6 @@ pub enum Error {
         /// Each such column and the value it holds throughout.
         columns: Vec<(String, f64)>,
     },
-    /// Some variables can be computed from others, and the method needs that none can.
-    RankDeficient {
-        /// What needs full rank.
-        method: &'static str,
-        /// The numerical rank.
-        rank: usize,
-        /// What it would have to be.
-        needed: usize,
-    },
-    /// The method does not cover rows that carry weights.
-    WeightsNotCovered {
-        /// The method.
-        method: &'static str,
-    },
     /// No column varies.
     NoVariation {
         /// Rows there are.
@@ -353,12 +435,70 @@ pub enum Error {
         /// The largest deviation that is accepted.
         most: f64,
     },
+    /// The theory behind a method does not cover rows of unequal weight.
+    WeightsNotCovered {
+        /// The method.
+        method: &'static str,
+    },
+    /// A scatter matrix has no inverse: some variables can be computed from the others.
+    SingularScatter {
+        /// The method.
+        method: &'static str,
+        /// The rank of the matrix.
+        rank: usize,
+        /// Its order, which is the number of variables.
+        order: usize,
+    },
+    /// Too many resamples could not be analysed, since columns did not vary in them.
+    DegenerateResamples {
+        /// Resamples that could be analysed.
+        usable: usize,
+        /// Resamples that were drawn.
+        drawn: usize,
+        /// Columns that did not vary, and in how many resamples each.
+        columns: Vec<ColumnCount>,
+    },
     /// More components were asked for than there are.
     ComponentOutOfRange {
         /// How many, or which, was asked for.
         asked: usize,
         /// How many there are.
         available: usize,
+    },
+    /// Columns show one and the same value wherever they show any.
+    ConstantObserved {
+        /// Each such column, the value, and how many cells hold it.
+        columns: Vec<(String, f64, usize)>,
+    },
+    /// A fit would choose as many numbers as there are observed cells, or more.
+    TooFewObserved {
+        /// Components that were asked for.
+        n_components: usize,
+        /// Observed cells.
+        found: usize,
+        /// The cells that are needed.
+        needed: usize,
+    },
+    /// Components describe the observed cells exactly, so that no noise is left to estimate.
+    NoNoise {
+        /// How many components.
+        n_components: usize,
+    },
+    /// A row shows too little to tell its scores.
+    ScoresUndetermined {
+        /// The row.
+        row: usize,
+        /// Its label.
+        label: String,
+        /// Cells that it shows.
+        n_observed: usize,
+        /// Components whose scores are wanted.
+        n_components: usize,
+    },
+    /// A method that takes all rows alike was given rows with weights.
+    WeightsNotTaken {
+        /// The method.
+        method: &'static str,
     },
     /// New rows do not have the variables that an analysis was made with.
     VariablesDiffer {

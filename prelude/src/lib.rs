@@ -1,14 +1,18 @@
 //! What a Semiaxis cell finds preloaded: tables, matrices, multivariate statistics and exhibits.
 
+pub mod adequacy;
 pub mod components;
 pub mod error;
 pub mod exhibit;
+pub mod gaps;
 pub mod live;
 pub mod parallel;
 pub mod prelude;
 pub mod random;
 pub mod retention;
+pub mod stability;
 pub mod table;
+pub mod transform;
 
 mod distributions;
 mod quantile;

@@ -5,6 +5,7 @@
 //! `use polars::prelude::*;` in a cell.
 
 // From tables to statistics.
+pub use crate::adequacy::{Adequacy, MultivariateNormality, adequacy, multivariate_normality};
 pub use crate::components::{
     Communalities, ComponentOptions, Decomposition, FittedComponents, PrincipalComponents,
     RandomisedOptions, Reconstruction, Route, Scaling, SupplementaryColumns, SupplementaryGroups,
@@ -14,20 +15,28 @@ pub use crate::error::{Error, Result};
 pub use crate::exhibit::{
     Bundle, Chart, Content, Exhibit, NumberFormat, Reference, Table, TableColumn, biplot,
     correlation_map, loading_plot, pairs, profiles, score_matrix, score_plot, scree, significant,
-    structure_circle, variance_shares,
+    structure_circle, turntable, variance_shares,
 };
-pub use crate::parallel::{
-    Noise, ParallelAnalysis, ParallelOptions, RootsOf, parallel_analysis,
+pub use crate::gaps::{
+    Completed, ComponentChoice, ComponentRule, EstimatedCell, GapMethod, GapOptions,
+    ProbabilisticComponents, ProbabilisticOptions, components_for_gaps, estimate_missing,
+    probabilistic_components,
 };
+pub use crate::parallel::{Noise, ParallelAnalysis, ParallelOptions, RootsOf, parallel_analysis};
 pub use crate::random::{Generator, random_generator, random_normal};
 pub use crate::retention::{
     Effort, Retention, RetentionOptions, Rule, Verdict, retention, retention_with,
 };
-pub use crate::table::{
-    ColumnDescription, ColumnDescriptions, DataMatrix, FrameToMatrix, GappedMatrix, Label,
-    MatrixOptions, Missing, MissingPattern, MissingValues, NamedMatrix, TableOptions,
-    describe_columns, missing_values, read_table, read_table_with,
+pub use crate::stability::{
+    Alignment, AsymptoticErrors, AsymptoticOptions, Bootstrap, BootstrapOptions, LeaveOut,
+    LeaveOutOptions, asymptotic_errors, bootstrap, leave_out,
 };
+pub use crate::table::{
+    ColumnCheck, ColumnDescription, ColumnDescriptions, DataMatrix, FrameToMatrix, GappedMatrix,
+    Label, MatrixOptions, Missing, MissingPattern, MissingValues, NamedMatrix, NumberType,
+    TableOptions, describe_columns, missing_values, read_table, read_table_with,
+};
+pub use crate::transform::{Transform, Transformation};
 
 // Showing something in the middle of a cell.
 pub use crate::show;

@@ -24,41 +24,9 @@ use faer::{Accum, MatMut, MatRef, Par};
 use nalgebra::{DMatrix, DVector};
 use rayon::prelude::*;
 
+use super::row_weights::RowWeights;
 use super::views::{PIECES, WORTH_CUTTING, view, view_mut};
 use crate::live::interrupted;
-use crate::table::DataMatrix;
-
-/// How much each row counts, for sums over rows.
-///
-/// Products take each row times the root of its weight, so that a product of two rows carries the
-/// weight itself; means are weighted ones.
-#[derive(Clone)]
-pub(crate) struct RowWeights {
-    // One per row, positive, of sum n.
-    weights: Vec<f64>,
-    roots: Vec<f64>,
-}
-
-impl RowWeights {
-    /// Those of a matrix that make a difference.
-    pub(crate) fn of(x: &DataMatrix) -> Option<Self> {
-        let weights = x.relative_weights()?;
-        let roots = weights.iter().map(|weight| weight.sqrt()).collect();
-        Some(RowWeights { weights, roots })
-    }
-
-    /// The weights, of sum n.
-    pub(crate) fn weights(&self) -> &[f64] {
-        &self.weights
-    }
-
-    /// Multiplies each row by the root of its weight.
-    pub(crate) fn weigh_rows(&self, matrix: &mut DMatrix<f64>) {
-        for mut column in matrix.column_iter_mut() {
-            column.iter_mut().zip(&self.roots).for_each(|(value, root)| *value *= root);
-        }
-    }
-}
 
 /// Column means and the cross-product of deviations from them.
 pub(crate) struct CrossProduct {
@@ -123,40 +91,36 @@ pub(crate) fn of_columns(x: &DMatrix<f64>, weights: Option<&RowWeights>) -> Cros
     let mut rounded = DMatrix::zeros(p, n_blocks);
     let mut left = DMatrix::zeros(p, n_blocks);
     let blocks_per_part = n_blocks.div_ceil(n_parts);
-    let sums: Vec<DMatrix<f64>> = rounded
-        .as_mut_slice()
-        .par_chunks_mut(p * blocks_per_part)
-        .zip(left.as_mut_slice().par_chunks_mut(p * blocks_per_part))
-        .enumerate()
-        .map(|(part, (rounded, left))| {
-            let mut sum = DMatrix::zeros(p, p);
-            let mut buffer = vec![0.0; block * p];
-            let centres = rounded.chunks_mut(p).zip(left.chunks_mut(p));
-            for (place, (rounded, left)) in centres.enumerate() {
-                if interrupted() {
-                    break;
-                }
-                let first = (part * blocks_per_part + place) * block;
-                let n_rows = block.min(n - first);
-                let buffer = &mut buffer[..n_rows * p];
-                for (j, centred) in buffer.chunks_mut(n_rows).enumerate() {
-                    let column = &x.as_slice()[j * n + first..][..n_rows];
-                    let centre = match weights {
-                        None => centre_into(column, centred),
-                        Some(weights) => weights.centre_into(column, centred, first),
-                    };
-                    (rounded[j], left[j]) = (centre.rounded, centre.left);
-                }
-                let block = MatRef::from_column_major_slice(buffer, n_rows, p);
-                add_lower(view_mut(&mut sum), block.transpose(), block, 1.0, par);
+    let sum_of_part = |(part, (rounded, left)): (usize, (&mut [f64], &mut [f64]))| {
+        let mut sum = DMatrix::zeros(p, p);
+        let mut buffer = vec![0.0; block * p];
+        let centres = rounded.chunks_mut(p).zip(left.chunks_mut(p));
+        for (place, (rounded, left)) in centres.enumerate() {
+            if interrupted() {
+                break;
             }
-            sum
-        })
-        .collect();
+            let first = (part * blocks_per_part + place) * block;
+            let n_rows = block.min(n - first);
+            let buffer = &mut buffer[..n_rows * p];
+            for (j, centred) in buffer.chunks_mut(n_rows).enumerate() {
+                let column = &x.as_slice()[j * n + first..][..n_rows];
+                let centre = match weights {
+                    None => centre_into(column, centred),
+                    Some(weights) => weights.centre_into(column, centred, first),
+                };
+                (rounded[j], left[j]) = (centre.rounded, centre.left);
+            }
+            let block = MatRef::from_column_major_slice(buffer, n_rows, p);
+            add_lower(view_mut(&mut sum), block.transpose(), block, 1.0, par);
+        }
+        sum
+    };
+    let sums =
+        on_threads(rounded.as_mut_slice(), left.as_mut_slice(), p * blocks_per_part, sum_of_part);
     let mut lower = add_in_order(sums);
     let weight = |place: usize| {
         let (first, n_rows) = (place * block, block.min(n - place * block));
-        weights.map_or(n_rows as f64, |weights| sum(&weights.weights[first..first + n_rows]))
+        weights.map_or(n_rows as f64, |weights| sum(&weights.weights()[first..first + n_rows]))
     };
     let mean = gather(&mut lower, rounded, left, weight);
     CrossProduct { mean, lower }
@@ -179,57 +143,69 @@ pub(crate) fn of_rows(
     let per_part = n_blocks.div_ceil(n_parts) * block;
     let mut mean = DVector::zeros(p);
     let mut sum_squares = DVector::zeros(p);
-    let sums: Vec<DMatrix<f64>> = mean
-        .as_mut_slice()
-        .par_chunks_mut(per_part)
-        .zip(sum_squares.as_mut_slice().par_chunks_mut(per_part))
-        .enumerate()
-        .map(|(part, (means, squares))| {
-            let mut sum = DMatrix::zeros(n, n);
-            let mut buffer = vec![0.0; n * block];
-            for (place, (means, squares)) in
-                means.chunks_mut(block).zip(squares.chunks_mut(block)).enumerate()
-            {
-                if interrupted() {
-                    break;
-                }
-                let first = part * per_part + place * block;
-                let buffer = &mut buffer[..n * means.len()];
-                for (k, scaled) in buffer.chunks_mut(n).enumerate() {
-                    let column = &x.as_slice()[(first + k) * n..][..n];
-                    let centre = match weights {
-                        None => centre_into(column, scaled),
-                        Some(weights) => weights.centre_into(column, scaled, 0),
-                    };
-                    means[k] = centre.rounded + centre.left;
-                    match weights {
-                        None => scaled.iter_mut().for_each(|deviation| *deviation -= centre.left),
-                        Some(weights) => {
-                            for (deviation, root) in scaled.iter_mut().zip(&weights.roots) {
-                                *deviation -= centre.left * root;
-                            }
+    let sum_of_part = |(part, (means, squares)): (usize, (&mut [f64], &mut [f64]))| {
+        let mut sum = DMatrix::zeros(n, n);
+        let mut buffer = vec![0.0; n * block];
+        for (place, (means, squares)) in
+            means.chunks_mut(block).zip(squares.chunks_mut(block)).enumerate()
+        {
+            if interrupted() {
+                break;
+            }
+            let first = part * per_part + place * block;
+            let buffer = &mut buffer[..n * means.len()];
+            for (k, scaled) in buffer.chunks_mut(n).enumerate() {
+                let column = &x.as_slice()[(first + k) * n..][..n];
+                let centre = match weights {
+                    None => centre_into(column, scaled),
+                    Some(weights) => weights.centre_into(column, scaled, 0),
+                };
+                means[k] = centre.rounded + centre.left;
+                match weights {
+                    None => scaled.iter_mut().for_each(|deviation| *deviation -= centre.left),
+                    Some(weights) => {
+                        for (deviation, root) in scaled.iter_mut().zip(weights.roots()) {
+                            *deviation -= centre.left * root;
                         }
                     }
-                    squares[k] = scaled.iter().map(|d| d * d).sum();
-                    if unit && squares[k] > 0.0 {
-                        let variance: f64 = squares[k] / (n - 1) as f64;
-                        let factor = 1.0 / variance.sqrt();
-                        scaled.iter_mut().for_each(|d| *d *= factor);
-                    }
                 }
-                let block = MatRef::from_column_major_slice(buffer, n, means.len());
-                add_lower(view_mut(&mut sum), block, block.transpose(), 1.0, par);
+                squares[k] = scaled.iter().map(|d| d * d).sum();
+                if unit && squares[k] > 0.0 {
+                    let variance: f64 = squares[k] / (n - 1) as f64;
+                    let factor = 1.0 / variance.sqrt();
+                    scaled.iter_mut().for_each(|d| *d *= factor);
+                }
             }
-            sum
-        })
-        .collect();
+            let block = MatRef::from_column_major_slice(buffer, n, means.len());
+            add_lower(view_mut(&mut sum), block, block.transpose(), 1.0, par);
+        }
+        sum
+    };
+    let sums = on_threads(mean.as_mut_slice(), sum_squares.as_mut_slice(), per_part, sum_of_part);
     (Moments { mean, sum_squares }, add_in_order(sums))
 }
 
+/// Cuts two lists into pieces of the same length and answers for each pair of pieces, in order.
+///
+/// One piece is answered for where the caller stands: waking another thread takes longer than a
+/// small table.
+fn on_threads<T: Send>(
+    one: &mut [f64],
+    other: &mut [f64],
+    length: usize,
+    answer: impl Fn((usize, (&mut [f64], &mut [f64]))) -> T + Sync + Send,
+) -> Vec<T> {
+    if one.len() <= length {
+        return vec![answer((0, (one, other)))];
+    }
+    let pieces = one.par_chunks_mut(length).zip(other.par_chunks_mut(length)).enumerate();
+    pieces.map(answer).collect()
+}
+
 /// A mean in two parts: what a double can hold, and what is left of it.
-struct Centre {
-    rounded: f64,
-    left: f64,
+pub(super) struct Centre {
+    pub(super) rounded: f64,
+    pub(super) left: f64,
 }
 
 /// Writes the deviations of a column from its rounded mean and returns the mean.
@@ -255,31 +231,10 @@ fn centre_into(column: &[f64], centred: &mut [f64]) -> Centre {
     Centre { rounded, left: left / n }
 }
 
-impl RowWeights {
-    /// As [`centre_into`] for rows from `first` on, with deviations times the roots of the weights.
-    fn centre_into(&self, column: &[f64], centred: &mut [f64], first: usize) -> Centre {
-        let rows = first..first + column.len();
-        let (weights, roots) = (&self.weights[rows.clone()], &self.roots[rows]);
-        for ((product, value), weight) in centred.iter_mut().zip(column).zip(weights) {
-            *product = value * weight;
-        }
-        let total = sum(weights);
-        let rounded = sum(centred) / total;
-        for ((product, value), weight) in centred.iter_mut().zip(column).zip(weights) {
-            *product = (value - rounded) * weight;
-        }
-        let left = sum(centred) / total;
-        for ((deviation, value), root) in centred.iter_mut().zip(column).zip(roots) {
-            *deviation = (value - rounded) * root;
-        }
-        Centre { rounded, left }
-    }
-}
-
 /// Running sums kept side by side, so that they vectorise and lose fewer digits than one.
 const LANES: usize = 16;
 
-fn sum(values: &[f64]) -> f64 {
+pub(super) fn sum(values: &[f64]) -> f64 {
     let mut lanes = [0.0; LANES];
     let (chunks, rest) = values.as_chunks::<LANES>();
     for chunk in chunks {

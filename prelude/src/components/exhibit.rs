@@ -97,10 +97,15 @@ fn variances(pca: &FittedComponents) -> Table {
         grouped(pca.divisor()),
         pca.route(),
     ));
-    for note in [left_out(pca), searched(pca), tied(pca)].into_iter().flatten() {
+    for note in [transformed(pca), left_out(pca), searched(pca), tied(pca)].into_iter().flatten() {
         table = table.note(note);
     }
     table
+}
+
+fn transformed(pca: &FittedComponents) -> Option<String> {
+    let chain: Vec<String> = pca.transformations().iter().map(|t| t.to_string()).collect();
+    (!chain.is_empty()).then(|| format!("Transformed beforehand: {}.", chain.join("; then ")))
 }
 
 fn left_out(pca: &FittedComponents) -> Option<String> {

@@ -1,6 +1,8 @@
 //! What a decomposition says that needs no data any more.
 
+use std::collections::HashSet;
 use std::fmt;
+use std::sync::Arc;
 
 use nalgebra::{DMatrix, DVector};
 
@@ -8,7 +10,9 @@ use super::options::{Route, Scaling};
 use super::randomised::Approximation;
 use super::scores::project_rows;
 use crate::error::{Error, Result};
+use crate::live::{checkpoint, interrupted};
 use crate::table::{DataMatrix, NamedMatrix};
+use crate::transform::Transformation;
 
 /// The part of [`PrincipalComponents`](super::PrincipalComponents) that needs no data: means,
 /// scales, variances and loadings, and what follows from them.
@@ -24,6 +28,8 @@ pub struct FittedComponents {
     // There exactly when the route is the randomised one.
     pub(super) approximation: Option<Approximation>,
     pub(super) n_rows: usize,
+    // What the rows went through before they were analysed.
+    pub(super) transformations: Arc<[Transformation]>,
     pub(super) is_weighted: bool,
     pub(super) rank: usize,
     pub(super) tolerance: f64,
@@ -36,6 +42,8 @@ pub struct FittedComponents {
     pub(super) total_variance: f64,
     // p × r.
     pub(super) loadings: NamedMatrix,
+    // n × r; only after loading an analysis that was saved with them.
+    pub(super) saved_scores: Option<NamedMatrix>,
 }
 
 impl FittedComponents {
@@ -75,6 +83,18 @@ impl FittedComponents {
     /// ```
     ///
     /// A variable that does not vary has no correlation with anything: its row is NaN.
+    ///
+    /// ```
+    /// use semiaxis::components::{Scaling, principal_components};
+    /// use semiaxis::nalgebra::dmatrix;
+    /// use semiaxis::table::DataMatrix;
+    ///
+    /// let x = DataMatrix::from_unnamed(dmatrix![1.0, 1.0; 2.0, 3.0; 3.0, 2.0])?;
+    /// let pca = principal_components(&x, Scaling::Correlation)?;
+    /// // Loading √(1/2), variance 3/2.
+    /// assert!((pca.structure()[(0, 0)] - 0.75_f64.sqrt()).abs() < 1e-12);
+    /// # Ok::<(), semiaxis::Error>(())
+    /// ```
     pub fn structure(&self) -> NamedMatrix {
         let mut values = self.loadings.values().clone();
         for (mut column, variance) in values.column_iter_mut().zip(self.variances.iter()) {
@@ -93,14 +113,70 @@ impl FittedComponents {
 
     /// The scores of other rows, measured against the mean and scale of this analysis.
     ///
-    /// The rows must have the variables of the analysis in the same order.
+    /// The rows must have the variables of the analysis in the same order
+    /// (`x.select(pca.variables())?` brings them into it) and must have gone through the same
+    /// transformations with the same numbers; rows as they were measured go through
+    /// [`project_raw`](Self::project_raw).
+    ///
+    /// ```
+    /// use semiaxis::components::{Scaling, principal_components};
+    /// use semiaxis::nalgebra::dmatrix;
+    /// use semiaxis::table::DataMatrix;
+    ///
+    /// let x = DataMatrix::from_unnamed(dmatrix![1.0, 1.0; 2.0, 3.0; 3.0, 2.0])?;
+    /// let pca = principal_components(&x, Scaling::Correlation)?;
+    /// let new = DataMatrix::from_unnamed(dmatrix![3.0, 3.0])?;
+    /// // One standard deviation above the mean in both variables.
+    /// assert!((pca.project(&new)?[(0, 0)] - 2.0_f64.sqrt()).abs() < 1e-12);
+    /// # Ok::<(), semiaxis::Error>(())
+    /// ```
     ///
     /// # Errors
     ///
-    /// [`Error::VariablesDiffer`] names what is missing, unknown or out of place.
+    /// [`Error::VariablesDiffer`] names what is missing, unknown or out of place;
+    /// [`Error::TransformationsDiffer`] what the rows went through instead.
     pub fn project(&self, x: &DataMatrix) -> Result<NamedMatrix> {
         self.check_variables(x)?;
+        x.check_transformations(&self.transformations)?;
         Ok(self.scores_of(x))
+    }
+
+    /// The scores of other rows as they were measured: they are put through the transformations of
+    /// the analysis, with the numbers fitted to its rows, and projected.
+    ///
+    /// Columns are taken by name, and others are left aside. Transformations that the rows went
+    /// through already must be the first of the analysis, and are not repeated.
+    ///
+    /// ```
+    /// use semiaxis::components::{Scaling, principal_components};
+    /// use semiaxis::nalgebra::dmatrix;
+    /// use semiaxis::table::DataMatrix;
+    /// use semiaxis::transform::Transform;
+    ///
+    /// let x = DataMatrix::from_unnamed(dmatrix![1.0, 4.0; 9.0, 1.0; 4.0, 9.0])?;
+    /// let pca = principal_components(&x.transformed(Transform::square_root())?, Scaling::Covariance)?;
+    /// assert!(pca.project(&x).is_err()); // the roots were analysed
+    /// assert!(pca.project_raw(&x)? == *pca.scores());
+    /// # Ok::<(), semiaxis::Error>(())
+    /// ```
+    ///
+    /// # Errors
+    ///
+    /// [`Error::VariablesDiffer`] names columns that are missing; [`Error::TransformationsDiffer`]
+    /// when the rows went through something else; [`Error::OutsideDomain`] names a value that cannot
+    /// be transformed.
+    pub fn project_raw(&self, x: &DataMatrix) -> Result<NamedMatrix> {
+        let x = x.through(&self.transformations)?;
+        let missing = lacking(self.variables(), x.variables());
+        if !missing.is_empty() {
+            return Err(Error::VariablesDiffer { missing, extra: Vec::new(), order: None });
+        }
+        self.project(&x.select(self.variables())?)
+    }
+
+    /// What the rows went through before they were analysed, in order.
+    pub fn transformations(&self) -> &[Transformation] {
+        &self.transformations
     }
 
     /// The names of the variables, in order.
@@ -208,8 +284,15 @@ impl FittedComponents {
     }
 
     pub(super) fn scores_of(&self, x: &DataMatrix) -> NamedMatrix {
-        let loadings = self.loadings.values();
-        let values = project_rows(x.values(), &self.mean, &self.scale, loadings, || false);
+        let project = |stop: fn() -> bool| {
+            project_rows(x.values(), &self.mean, &self.scale, self.loadings.values(), stop)
+        };
+        let mut values = project(interrupted);
+        checkpoint();
+        if interrupted() {
+            // Only the thread of the cell leaves it; on others the scores must be whole.
+            values = project(|| false);
+        }
         NamedMatrix::new(values, x.shared_labels(), self.loadings.shared_column_names())
             .expect("as many rows and columns as the rows and loadings that made them")
     }
@@ -226,10 +309,6 @@ impl FittedComponents {
         if wanted == found {
             return Ok(());
         }
-        let lacking = |from: &[String], of: &[String]| -> Vec<String> {
-            let known: std::collections::HashSet<&String> = of.iter().collect();
-            from.iter().filter(|name| !known.contains(name)).cloned().collect()
-        };
         let (missing, extra) = (lacking(wanted, found), lacking(found, wanted));
         let order = if missing.is_empty() && extra.is_empty() {
             wanted
@@ -243,6 +322,12 @@ impl FittedComponents {
         };
         Err(Error::VariablesDiffer { missing, extra, order })
     }
+}
+
+/// The names that are not among others.
+pub(super) fn lacking(names: &[String], others: &[String]) -> Vec<String> {
+    let known: HashSet<&String> = others.iter().collect();
+    names.iter().filter(|name| !known.contains(name)).cloned().collect()
 }
 
 impl fmt::Debug for FittedComponents {

@@ -29,7 +29,30 @@ const N_TESTS: usize = 10;
 
 /// How good the components of a randomised decomposition are.
 ///
-/// Nothing here is assumed of the data: all of it is measured after the decomposition.
+/// Nothing here is assumed of the data: all of it is measured after the decomposition. The variance
+/// left out is [`left_out_variance`](super::FittedComponents::left_out_variance).
+///
+/// ```
+/// use semiaxis::components::{
+///     ComponentOptions, Decomposition, RandomisedOptions, Scaling, principal_components_with,
+/// };
+/// use semiaxis::nalgebra::DMatrix;
+/// use semiaxis::table::DataMatrix;
+///
+/// // Two hidden sequences make all 40 columns: nothing is left outside the first two components.
+/// let x = DMatrix::from_fn(60, 40, |i, j| {
+///     let (i, j) = (i as f64, j as f64);
+///     (0.1 * i).sin() * (1.0 + j) + (0.3 * i).cos() * (10.0 - j)
+/// });
+/// let search = Decomposition::Randomised(RandomisedOptions::new().seed(1));
+/// let options = ComponentOptions::new(Scaling::Correlation).keep(2).decomposition(search);
+/// let pca = principal_components_with(&DataMatrix::from_unnamed(x)?, options)?;
+/// let approximation = pca.approximation().expect("the search was random");
+/// assert_eq!(approximation.n_directions(), 12);
+/// assert!(approximation.norm_bound() < 1e-10);
+/// assert!(pca.left_out_variance() < 1e-10);
+/// # Ok::<(), semiaxis::Error>(())
+/// ```
 #[derive(Debug, Clone, PartialEq)]
 pub struct Approximation {
     pub(super) n_directions: usize,

@@ -36,17 +36,30 @@ impl PrincipalComponents {
     /// ```
     ///
     /// Each column has mean zero and variance λ (divisor n − 1), and no two are correlated: with
-    /// row weights, by the weighted formulas of [`DataMatrix::with_weights`]. They are in the units of the variables under covariance and without unit under correlation.
-    /// Computed on first use.
+    /// row weights, by the weighted formulas of [`DataMatrix::with_weights`]. They are in the units
+    /// of the variables under covariance and without unit under correlation. Computed on first use.
     pub fn scores(&self) -> &NamedMatrix {
         self.scores.get_or_init(|| self.scores_of(&self.data))
     }
 
-    /// The rows as the first `n_components` components alone describe them, in the original
-    /// units, with what that leaves unexplained.
+    /// The rows as the first `n_components` components alone describe them, in the units that were
+    /// analysed, with what that leaves unexplained.
     ///
     /// ```text
     /// x̂_ij = x̄_j + s_j Σ_{k ≤ K} z_ik v_jk
+    /// ```
+    ///
+    /// ```
+    /// use semiaxis::components::{Scaling, principal_components};
+    /// use semiaxis::nalgebra::dmatrix;
+    /// use semiaxis::table::DataMatrix;
+    ///
+    /// let x = DataMatrix::from_unnamed(dmatrix![1.0, 1.0; 2.0, 3.0; 3.0, 2.0])?;
+    /// let pca = principal_components(&x, Scaling::Correlation)?;
+    /// let one = pca.reconstruct(1)?;
+    /// assert!((one.proportion() - 0.75).abs() < 1e-12);
+    /// assert!((one.residual_sum_of_squares() - 1.0).abs() < 1e-12); // (n − 1) times 1/2
+    /// # Ok::<(), semiaxis::Error>(())
     /// ```
     ///
     /// # Errors
@@ -67,15 +80,7 @@ impl PrincipalComponents {
             }
         }
         let proportion = self.variances.rows(0, n_components).sum() / self.total_variance;
-        let values = DataMatrix::from_values(
-            values,
-            self.variables().iter().cloned(),
-            self.labels().iter().cloned(),
-        )?;
-        let values = match self.data.weights() {
-            Some(weights) => values.with_weights(weights.iter().copied())?,
-            None => values,
-        };
+        let values = self.data.with_values(values)?;
         let residual_sum_of_squares = match self.row_weights() {
             Some(weights) => row_residuals.iter().zip(weights).map(|(r, w)| r * w).sum(),
             None => row_residuals.sum(),

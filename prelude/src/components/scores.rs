@@ -5,7 +5,7 @@ use faer::{Accum, MatRef, Par};
 use nalgebra::{DMatrix, DVector};
 use rayon::prelude::*;
 
-use super::cross::RowWeights;
+use super::row_weights::RowWeights;
 use super::views::{PIECES, view, view_mut};
 use crate::live::interrupted;
 
@@ -24,11 +24,11 @@ const SHORT: usize = 4096;
 /// Values are centred before they are multiplied: taking the mean's part off afterwards would lose
 /// the digits of a large common offset. After an interrupt products are left unfinished; whoever
 /// asked for one has to call `checkpoint` before using it.
-pub(super) struct Standardised<'a> {
-    pub(super) x: &'a DMatrix<f64>,
-    pub(super) mean: &'a DVector<f64>,
-    pub(super) scale: &'a DVector<f64>,
-    pub(super) weights: Option<&'a RowWeights>,
+pub(crate) struct Standardised<'a> {
+    pub(crate) x: &'a DMatrix<f64>,
+    pub(crate) mean: &'a DVector<f64>,
+    pub(crate) scale: &'a DVector<f64>,
+    pub(crate) weights: Option<&'a RowWeights>,
 }
 
 impl Standardised<'_> {
@@ -47,7 +47,7 @@ impl Standardised<'_> {
     }
 
     /// The product of the transpose with a matrix that has a row for each row: p × r.
-    pub(super) fn transposed_times(&self, left: &DMatrix<f64>) -> DMatrix<f64> {
+    pub(crate) fn transposed_times(&self, left: &DMatrix<f64>) -> DMatrix<f64> {
         let weighted = self.weights.map(|weights| {
             let mut weighted = left.clone();
             weights.weigh_rows(&mut weighted);
@@ -61,7 +61,7 @@ impl Standardised<'_> {
     fn combine_columns(&self, left: &DMatrix<f64>) -> DMatrix<f64> {
         let (n, p) = self.x.shape();
         let mut combined = DMatrix::zeros(p, left.ncols());
-        let block = (BLOCK / n).clamp(64, 4096);
+        let block = (BLOCK / n).clamp(64, 4096).min(p);
         view_mut(&mut combined).par_row_chunks_mut(block).enumerate().for_each_init(
             || vec![0.0; block * n],
             |buffer, (place, target)| {
@@ -88,7 +88,7 @@ impl Standardised<'_> {
     /// Blocks of rows, summed in parts that depend on the shape only.
     fn combine_rows(&self, left: &DMatrix<f64>) -> DMatrix<f64> {
         let (n, p) = self.x.shape();
-        let block = (BLOCK / p).clamp(64, 4096);
+        let block = (BLOCK / p).clamp(64, 4096).min(n);
         let n_blocks = n.div_ceil(block);
         let blocks_per_part = n_blocks.div_ceil(MOST_PARTS);
         let parts: Vec<DMatrix<f64>> = (0..n_blocks.div_ceil(blocks_per_part))
@@ -133,7 +133,7 @@ pub(super) fn project_rows(
 ) -> DMatrix<f64> {
     let (n, p) = x.shape();
     let mut scores = DMatrix::zeros(n, loadings.ncols());
-    let block = (BLOCK / p).clamp(64, 4096);
+    let block = (BLOCK / p).clamp(64, 4096).min(n);
     view_mut(&mut scores).par_row_chunks_mut(block).enumerate().for_each_init(
         || vec![0.0; block * p],
         |buffer, (place, target)| {
@@ -171,6 +171,14 @@ fn centre_block(
             centred.iter_mut().for_each(|deviation| *deviation /= scale);
         }
     }
+}
+
+/// The product of the transpose of a matrix with the matrix.
+pub(super) fn transposed_product(a: &DMatrix<f64>) -> DMatrix<f64> {
+    let mut result = DMatrix::zeros(a.ncols(), a.ncols());
+    let into = view_mut(&mut result);
+    matmul(into, Accum::Replace, view(a).transpose(), view(a), 1.0, PIECES);
+    result
 }
 
 /// The product of a matrix with the transpose of another.

@@ -69,6 +69,35 @@ pub(crate) fn symmetric_roots(
     .map_err(|_| Error::NoConvergence { method: "the decomposition of a symmetric matrix" })
 }
 
+/// The roots of a symmetric matrix of which the lower triangle is filled, written ascending, and
+/// the unit-length vectors that belong to them, on one thread; `workspace` is kept between calls.
+pub(crate) fn symmetric_pairs(
+    lower: &DMatrix<f64>,
+    ascending: &mut [f64],
+    vectors: &mut DMatrix<f64>,
+    workspace: &mut MemBuffer,
+) -> Result<()> {
+    self_adjoint_evd(
+        view(lower),
+        DiagMut::from_slice_mut(ascending),
+        Some(view_mut(vectors)),
+        Par::Seq,
+        MemStack::new(workspace),
+        Default::default(),
+    )
+    .map_err(|_| Error::NoConvergence { method: "the decomposition of a symmetric matrix" })
+}
+
+/// Memory for [`symmetric_pairs`] of matrices of this order.
+pub(crate) fn pairs_workspace(order: usize) -> MemBuffer {
+    MemBuffer::new(self_adjoint_evd_scratch::<f64>(
+        order,
+        ComputeEigenvectors::Yes,
+        Par::Seq,
+        Default::default(),
+    ))
+}
+
 /// Memory for [`symmetric_roots`] of matrices of this order.
 pub(crate) fn roots_workspace(order: usize) -> MemBuffer {
     MemBuffer::new(self_adjoint_evd_scratch::<f64>(

@@ -6,14 +6,16 @@
 //! values; L. Kish (1965), "Survey Sampling", section 11.7, for the effective count of weighted
 //! rows (both from memory).
 
-use std::collections::{HashMap, HashSet};
+use std::collections::HashMap;
 
 use nalgebra::{DMatrix, DVector};
 
 use super::columns::Columns;
-use super::cross::{self, RowWeights};
+use super::cross;
+use super::fitted::lacking;
 use super::options::Scaling;
 use super::result::PrincipalComponents;
+use super::row_weights::RowWeights;
 use super::scores::Standardised;
 use crate::distributions::normal_upper_tail;
 use crate::error::{Error, Result};
@@ -204,10 +206,6 @@ fn check_rows(wanted: &[String], found: &[String]) -> Result<()> {
     if wanted == found {
         return Ok(());
     }
-    let lacking = |from: &[String], of: &[String]| -> Vec<String> {
-        let known: HashSet<&String> = of.iter().collect();
-        from.iter().filter(|label| !known.contains(label)).cloned().collect()
-    };
     Err(Error::RowsDiffer { missing: lacking(wanted, found), extra: lacking(found, wanted) })
 }
 

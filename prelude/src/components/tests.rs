@@ -3,7 +3,10 @@
 
 mod exhibits;
 mod meaning;
+mod new_rows;
+mod randomised;
 mod routes;
+mod saved;
 mod weights;
 
 use nalgebra::{DMatrix, DVector, dmatrix};

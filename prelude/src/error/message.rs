@@ -130,6 +130,24 @@ impl fmt::Display for Error {
                 }
             }
             Error::RepeatedRequest { name } => write!(f, "{} was asked for twice", Name(name)),
+            Error::WantedAndUnwanted { name } => {
+                write!(f, "{} was asked for by name and was also to be left out", Name(name))
+            }
+            Error::NoColumnLike { pattern, available } => write!(
+                f,
+                "no column has a name like {}, where * stands for any characters and ? for one; the \
+                 columns are {}",
+                Name(pattern),
+                Names(available)
+            ),
+            Error::NoColumnOfType { number_type, columns } => {
+                write!(f, "no column holds {number_type}: ")?;
+                list(f, columns, |f, (name, dtype)| write!(f, "{} is {dtype}", Name(name)))
+            }
+            Error::NoColumnLeft { columns, n_rows, share } => {
+                write!(f, "every column misses more than a share of {share} of {n_rows} values: ")?;
+                list(f, columns, |f, c| write!(f, "{} misses {}", Name(&c.column), c.count))
+            }
             Error::NoNumericColumns { columns } => {
                 write!(f, "no column is numeric: ")?;
                 list(f, columns, |f, (name, dtype)| write!(f, "{} is {dtype}", Name(name)))
@@ -156,8 +174,15 @@ impl fmt::Display for Error {
                 write!(f, "values are missing: ")?;
                 list(f, columns, |f, c| write!(f, "{} in {}", c.count, Name(&c.column)))?;
                 write!(f, "; {n_complete} of {n_rows} rows are complete")?;
-                write!(f, "; leave those columns out, or drop the incomplete rows with ")?;
-                write!(f, "`.data_matrix_with(MatrixOptions::new().missing(Missing::DropRows))`")
+                write!(f, "; leave those columns out, drop the incomplete rows with ")?;
+                write!(
+                    f,
+                    "`.data_matrix_with(MatrixOptions::new().missing(Missing::DropRows))`, "
+                )?;
+                write!(
+                    f,
+                    "or keep the gaps for a method that estimates them with `.gapped_matrix()`"
+                )
             }
             Error::AllMissing { columns } => {
                 let (noun, verb) =
@@ -205,7 +230,10 @@ impl fmt::Display for Error {
                 }
                 write!(f, "rows {} and {} are both labelled {}", rows.0, rows.1, Name(label))
             }
-            Error::BadWeight { row, label, value } => {
+            Error::BadWeight { column, row, label, value } => {
+                if let Some(column) = column {
+                    write!(f, "the weight column {}: ", Name(column))?;
+                }
                 write!(f, "the weight of row {row}")?;
                 if *label != row.to_string() {
                     write!(f, " ({})", Name(label))?;
@@ -216,8 +244,55 @@ impl fmt::Display for Error {
                 )?;
                 write!(f, "not count out with `.rows_where(…)`")
             }
+            Error::MissingWeights { column, row, count } => write!(
+                f,
+                "the weight column {} has {} missing, the first in row {row}",
+                Name(column),
+                plural(*count, "weight")
+            ),
             Error::ShapeMismatch { what, expected, found } => {
                 write!(f, "{what}: {expected} needed, {found} given")
+            }
+            Error::OutsideDomain { action, column, row, label, value, accepted } => {
+                write!(f, "{action}: column {} holds {value} in row {row}", Name(column))?;
+                if *label != row.to_string() {
+                    write!(f, " ({})", Name(label))?;
+                }
+                write!(f, "; accepted: {accepted}")
+            }
+            Error::NoSpread { columns, measure } => {
+                write!(f, "columns whose {measure} is zero: ")?;
+                list(f, columns, |f, (name, middle)| write!(f, "{}, about {middle}", Name(name)))?;
+                write!(f, "; leave them out, or transform the others by name with `.of([…])`")
+            }
+            Error::TransformationsDiffer { wanted, found } => {
+                let chain = |f: &mut fmt::Formatter<'_>, chain: &[String]| match chain {
+                    [] => write!(f, "none"),
+                    chain => list(f, chain, |f, step| write!(f, "{}", Plain(step))),
+                };
+                write!(f, "the transformations differ; expected: ")?;
+                chain(f, wanted)?;
+                write!(f, "; found: ")?;
+                chain(f, found)?;
+                if wanted == found {
+                    write!(f, ", fitted to other rows")?;
+                }
+                write!(
+                    f,
+                    "; bring rows as they were measured, and repeat the transformations with "
+                )?;
+                write!(f, "`.transformed_as(…)`, or for scores with `.project_raw(…)`")
+            }
+            Error::SavedForm { part, found, accepted } => {
+                write!(f, "cannot read back what was saved: {} is ", Plain(part))?;
+                write!(f, "{}; accepted: {}", Plain(found), Plain(accepted))
+            }
+            Error::SavedVersion { format, found, known } => write!(
+                f,
+                "what was saved has version {found} of \"{format}\"; this library knows version {known}"
+            ),
+            Error::NotSaved { what, remedy } => {
+                write!(f, "the analysis was saved without its {what}; {remedy}")
             }
             Error::TooFewRows { method, needed, found } => {
                 write!(
@@ -242,15 +317,6 @@ impl fmt::Display for Error {
                 })?;
                 write!(f, "; leave it out or use the covariance")
             }
-            Error::RankDeficient { method, rank, needed } => write!(
-                f,
-                "{method} needs variables of which none can be computed from others: the rank is \
-                 {rank}, it would have to be {needed}; leave redundant columns out"
-            ),
-            Error::WeightsNotCovered { method } => write!(
-                f,
-                "{method} does not cover rows that carry weights; `.without_weights()` takes them off"
-            ),
             Error::NoVariation { n_rows } => {
                 write!(f, "no column varies over the {n_rows} rows")
             }
@@ -260,8 +326,66 @@ impl fmt::Display for Error {
                  squares stay exact only between {least:e} and {most:e}, so change its unit",
                 Name(column)
             ),
+            Error::WeightsNotCovered { method } => write!(
+                f,
+                "{method} is not defined for rows of unequal weight; \
+                 take the weights off with `without_weights()`"
+            ),
+            Error::SingularScatter { method, rank, order } => write!(
+                f,
+                "{method} needs a scatter matrix of full rank; this one has rank {rank} and order \
+                 {order}, so some variables can be computed from others: leave {} out",
+                order - rank
+            ),
+            Error::DegenerateResamples { usable, drawn, columns } => {
+                write!(f, "only {usable} of {drawn} resamples could be analysed")?;
+                if !columns.is_empty() {
+                    write!(f, "; columns that did not vary in the others: ")?;
+                    list(f, columns, |f, at| {
+                        write!(f, "{} ({} times)", Name(&at.column), at.count)
+                    })?;
+                    write!(f, "; leave them out, or analyse covariances")?;
+                }
+                Ok(())
+            }
             Error::ComponentOutOfRange { asked, available } => {
                 write!(f, "{asked} components were asked for; accepted: 1 to {available}")
+            }
+            Error::ConstantObserved { columns } => {
+                write!(f, "nothing can be estimated in a column that shows one value only: ")?;
+                list(f, columns, |f, (name, value, count)| {
+                    write!(f, "{} is {value} in {}", Name(name), plural(*count, "cell"))
+                })?;
+                write!(f, "; leave it out")
+            }
+            Error::TooFewObserved { n_components, found, needed } => write!(
+                f,
+                "{} need at least {} with a value, there {}; ask for fewer",
+                plural(*n_components, "component"),
+                plural(*needed, "cell"),
+                are(*found)
+            ),
+            Error::NoNoise { n_components } => write!(
+                f,
+                "{} describe the observed cells exactly, so that no noise is left to estimate; \
+                 ask for fewer",
+                plural(*n_components, "component")
+            ),
+            Error::ScoresUndetermined { row, label, n_observed, n_components } => {
+                write!(f, "row {row}")?;
+                if *label != row.to_string() {
+                    write!(f, " ({})", Name(label))?;
+                }
+                write!(
+                    f,
+                    " shows {}, too little to tell {} without shrinkage; ask for fewer, or for a \
+                     method that shrinks",
+                    plural(*n_observed, "value"),
+                    plural(*n_components, "score")
+                )
+            }
+            Error::WeightsNotTaken { method } => {
+                write!(f, "{method} takes all rows alike; give it the rows without weights")
             }
             Error::VariablesDiffer { missing, extra, order } => {
                 write!(f, "the variables are not those of the analysis")?;

@@ -33,6 +33,14 @@ fn examples() -> Vec<Error> {
         Error::UnknownColumn { name: "x".into(), nearest: None, available: names(&["y"]) },
         Error::UnknownLabel { label: "x".into(), nearest: Some("y".into()) },
         Error::RepeatedRequest { name: "x".into() },
+        Error::WantedAndUnwanted { name: "x".into() },
+        Error::NoColumnLike { pattern: "colour_*".into(), available: names(&["x"]) },
+        Error::NoColumnOfType {
+            number_type: crate::table::NumberType::Float,
+            columns: vec![("x".into(), "i64".into())],
+        },
+        Error::NoColumnLeft { columns: counts(), n_rows: 9, share: 0.2 },
+        Error::MissingWeights { column: "w".into(), row: 2, count: 1 },
         Error::NoNumericColumns { columns: vec![("x".into(), "str".into())] },
         Error::NotNumeric {
             column: "x".into(),
@@ -60,10 +68,24 @@ fn examples() -> Vec<Error> {
         Error::NoColumns,
         Error::OptionNeeded { option: "keep", needed_by: "a randomised decomposition" },
         Error::RowsDiffer { missing: vec![], extra: vec![] },
-        Error::BadWeight { row: 2, label: "b".into(), value: -1.0 },
+        Error::SavedForm { part: "`mean`".into(), found: "x".into(), accepted: "y".into() },
+        Error::SavedVersion { format: "semiaxis components", found: 2, known: 1 },
+        Error::NotSaved { what: "scores", remedy: "project the rows" },
+        Error::BadWeight { column: Some("w".into()), row: 2, label: "b".into(), value: -1.0 },
         Error::MissingLabels { column: "x".into(), row: 2, count: 1 },
         Error::RepeatedLabel { column: Some("x".into()), label: "a".into(), rows: (1, 2) },
         Error::ShapeMismatch { what: "labels of rows", expected: 2, found: 1 },
+        Error::OutsideDomain {
+            action: "the transformation (natural logarithm)".into(),
+            column: "x".into(),
+            row: 2,
+            label: "b".into(),
+            value: -1.0,
+            accepted: "numbers above 0".into(),
+        },
+        Error::NoSpread { columns: vec![("x".into(), 0.5)], measure: "range" },
+        Error::TransformationsDiffer { wanted: names(&["square root of x"]), found: vec![] },
+        Error::SavedForm { part: "`total`".into(), found: "a list".into(), accepted: "1".into() },
         Error::TooFewRows { method: "parallel analysis", needed: 3, found: 1 },
         Error::TooFewColumns { method: "parallel analysis", needed: 2, found: 1 },
         Error::ConstantColumns { columns: vec![("x".into(), 0.5)] },
@@ -97,9 +119,10 @@ fn messages_name_the_offender_and_the_way_out() {
     let all: Vec<String> = examples().iter().map(message).collect();
     for expected in [
         "`tiles.csv`, line 3: 1 field where the header has 2; 4 of 9 rows differ from the header",
-        "values are missing: 3 in `length`; 6 of 9 rows are complete; leave those columns out, or \
+        "values are missing: 3 in `length`; 6 of 9 rows are complete; leave those columns out, \
          drop the incomplete rows with \
-         `.data_matrix_with(MatrixOptions::new().missing(Missing::DropRows))`",
+         `.data_matrix_with(MatrixOptions::new().missing(Missing::DropRows))`, \
+         or keep the gaps for a method that estimates them with `.gapped_matrix()`",
         "column `x` holds inf in row 2 (`b`) and has 1 more value not finite; only \
          finite numbers are accepted",
         "parallel analysis needs at least 3 rows, there is 1",

@@ -6,8 +6,8 @@ use super::numbers::{counted, grouped};
 use super::tables::{Abridged, NumberFormat, Table, TableColumn, stacked};
 use super::{Bundle, Exhibit};
 use crate::table::{
-    ColumnDescription, ColumnDescriptions, DataMatrix, MissingValues, NamedMatrix,
-    NumberDescription,
+    ColumnCheck, ColumnDescription, ColumnDescriptions, DataMatrix, GappedMatrix, LabelSource,
+    MatrixNotes, MissingValues, NamedMatrix, NumberDescription,
 };
 
 const DATA: NumberFormat = NumberFormat::Stored(6);
@@ -21,7 +21,7 @@ impl Exhibit for DMatrix<f64> {
     fn exhibit(&self) -> Bundle {
         let caption = format!("matrix, {} × {}", rows(self.nrows()), columns(self.ncols()));
         let number = |idx: usize| (idx + 1).to_string();
-        matrix_table(caption, "", self, number, number, DATA)
+        matrix_table(caption, "", self, number, number, DATA, false)
             .note("Numbers to at most 6 significant digits; rows and columns counted from 1.")
             .exhibit()
     }
@@ -45,7 +45,7 @@ impl Exhibit for NamedMatrix {
         let caption = format!("matrix, {} × {}", rows(self.n_rows()), columns(self.n_cols()));
         let row_name = |idx: usize| self.row_names()[idx].clone();
         let column_name = |idx: usize| self.column_names()[idx].clone();
-        matrix_table(caption, "", self.values(), row_name, column_name, RESULTS)
+        matrix_table(caption, "", self.values(), row_name, column_name, RESULTS, false)
             .note("Numbers to 4 significant digits.")
             .exhibit()
     }
@@ -60,13 +60,89 @@ impl Exhibit for DataMatrix {
         );
         let label = |idx: usize| self.labels()[idx].clone();
         let variable = |idx: usize| self.variables()[idx].clone();
-        let mut table = matrix_table(caption, "row", self.values(), label, variable, DATA).note(
-            format!("Numbers to at most 6 significant digits; rows {}.", self.label_source()),
+        let mut table = matrix_table(caption, "row", self.values(), label, variable, DATA, false);
+        for note in matrix_notes(self.label_source(), self.weights(), self.notes()) {
+            table = table.note(note);
+        }
+        if !self.transformations().is_empty() {
+            let steps: Vec<String> = self.transformations().iter().map(|t| t.to_string()).collect();
+            table = table.note(format!("Transformed, in this order: {}.", steps.join("; ")));
+        }
+        table.exhibit()
+    }
+}
+
+impl Exhibit for GappedMatrix {
+    fn exhibit(&self) -> Bundle {
+        let caption = format!(
+            "matrix with gaps, {} × {}; {} missing ({})",
+            rows(self.n_rows()),
+            counted(self.n_cols(), "variable"),
+            counted(self.n_missing(), "value"),
+            NumberFormat::Percent.format(self.share_missing())
         );
-        for note in matrix_notes(self) {
+        let label = |idx: usize| self.labels()[idx].clone();
+        let variable = |idx: usize| self.variables()[idx].clone();
+        let mut table = matrix_table(caption, "row", self.values(), label, variable, DATA, true);
+        let holed: Vec<String> = self
+            .variables()
+            .iter()
+            .zip(self.missing_by_column())
+            .filter(|(_, count)| **count > 0)
+            .map(|(name, count)| format!("{count} in {name}"))
+            .collect();
+        if !holed.is_empty() {
+            table = table.note(format!(
+                "Missing: {}; {} complete.",
+                listed(holed.iter().map(String::as_str)),
+                rows(self.n_complete_rows())
+            ));
+        }
+        for note in matrix_notes(self.label_source(), self.weights(), self.notes()) {
             table = table.note(note);
         }
         table.exhibit()
+    }
+}
+
+impl Exhibit for ColumnCheck {
+    fn exhibit(&self) -> Bundle {
+        if self.is_sound() {
+            let caption = format!(
+                "{} over {}: each varies, and no two are perfectly correlated",
+                counted(self.n_cols(), "column"),
+                rows(self.n_rows())
+            );
+            return Table::new(caption).exhibit();
+        }
+        let n_odd = self.constant().len() + self.equal().len() + self.linear().len();
+        let number = |value: f64| DATA.format(value);
+        let mut lines: Vec<(String, String)> = Vec::new();
+        for (column, value) in self.constant() {
+            lines.push((column.clone(), format!("{} in every row", number(*value))));
+        }
+        for (column, earlier) in self.equal() {
+            lines.push((column.clone(), format!("equal to {earlier}")));
+        }
+        for pair in self.linear() {
+            let (shift, sign) = (number(pair.shift), if pair.factor < 0.0 { "−" } else { "+" });
+            let factor = number(pair.factor.abs());
+            lines
+                .push((pair.column.clone(), format!("{shift} {sign} {factor} × {}", pair.earlier)));
+        }
+        let (names, findings): (Vec<String>, Vec<String>) = lines.into_iter().unzip();
+        Table::new(format!(
+            "{} of {} say nothing of their own",
+            n_odd,
+            counted(self.n_cols(), "column")
+        ))
+        .column(TableColumn::texts("column", names).as_row_heads())
+        .column(TableColumn::texts("finding", findings))
+        .note(
+            "Perfectly correlated: a correlation within 5 × 10⁻¹³ of 1 or −1. Such columns count \
+             twice in an analysis; a column that does not vary cannot be standardised.",
+        )
+        .exhibit()
     }
 }
 
@@ -144,6 +220,7 @@ fn matrix_table(
     row_name: impl Fn(usize) -> String,
     column_name: impl Fn(usize) -> String,
     format: NumberFormat,
+    is_gapped: bool,
 ) -> Table {
     let shown_rows = Abridged::of(values.nrows(), ROWS.0, ROWS.1, ROWS.2);
     let shown = Abridged::of(values.ncols(), COLUMNS.0, COLUMNS.1, COLUMNS.2);
@@ -157,15 +234,31 @@ fn matrix_table(
             table = table.column(TableColumn::left_out(shown.left_out, n_rows));
         }
         let cells = shown_rows.indices().map(|row| values[(row, idx)]);
-        table = table.column(TableColumn::numbers(column_name(idx), cells, format));
+        table = table.column(if is_gapped {
+            let cells = cells.map(|value| (!value.is_nan()).then(|| format.format(value)));
+            TableColumn::written(column_name(idx), true, cells)
+        } else {
+            TableColumn::numbers(column_name(idx), cells, format)
+        });
     }
     table
 }
 
-// What was left out on the way from the table, so that nobody takes the matrix for all of it.
-fn matrix_notes(matrix: &DataMatrix) -> Vec<String> {
-    let notes = matrix.notes();
-    let mut lines = Vec::new();
+// What a reader must know to read the numbers, and what was left out on the way from the table, so
+// that nobody takes the matrix for all of it.
+fn matrix_notes(labels: &LabelSource, weights: Option<&[f64]>, notes: &MatrixNotes) -> Vec<String> {
+    let mut lines = vec![format!("Numbers to at most 6 significant digits; rows {labels}.")];
+    if let Some(weights) = weights {
+        let by =
+            notes.weights.as_ref().map_or(String::new(), |column| format!(" by column {column}"));
+        let least = weights.iter().fold(f64::INFINITY, |least, weight| least.min(*weight));
+        let most = weights.iter().fold(0.0, |most: f64, weight| most.max(*weight));
+        lines.push(format!(
+            "Rows weighted{by}, from {} to {}.",
+            DATA.format(least),
+            DATA.format(most)
+        ));
+    }
     if !notes.left_out.is_empty() {
         let columns: Vec<String> =
             notes.left_out.iter().map(|left| format!("{}: {}", left.column, left.reason)).collect();
@@ -177,6 +270,16 @@ fn matrix_notes(matrix: &DataMatrix) -> Vec<String> {
             "{} of {} dropped for missing values: {labels}.",
             grouped(notes.dropped_rows.len()),
             rows(notes.n_table_rows)
+        ));
+    }
+    if !notes.estimated.is_empty() {
+        let n_cells = notes.estimated.iter().map(|column| column.count).sum();
+        let columns: Vec<String> =
+            notes.estimated.iter().map(|c| format!("{} in {}", c.count, c.column)).collect();
+        lines.push(format!(
+            "{} estimated, not measured: {}.",
+            counted(n_cells, "missing value"),
+            listed(columns.iter().map(String::as_str))
         ));
     }
     lines

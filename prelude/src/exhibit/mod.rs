@@ -23,8 +23,8 @@ mod text;
 mod tests;
 
 pub use chart::{
-    Chart, Intervals, NUMBERS, Names, Reference, biplot, correlation_map, loading_bars,
-    loading_plot, pairs, profiles, score_matrix, score_plot, scree, structure_circle,
+    Chart, Intervals, NUMBERS, Names, Reference, Turntable, biplot, correlation_map, loading_bars,
+    loading_plot, pairs, profiles, score_matrix, score_plot, scree, structure_circle, turntable,
     variance_shares,
 };
 pub use numbers::{fixed, significant, stored};

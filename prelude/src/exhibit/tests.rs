@@ -1,12 +1,15 @@
 //! Exhibits of data frames, matrices and results: what is shown is what they hold.
 
-use nalgebra::{DMatrix, DVector};
+use nalgebra::{DMatrix, DVector, dmatrix};
 use polars::prelude::{Column, DataFrame, IntoLazy, NamedFrom, Series, col, df, lit};
 
 use super::{Exhibit, significant};
 use crate::components::{Scaling, principal_components};
 use crate::parallel::{ParallelOptions, parallel_analysis};
-use crate::table::{DataMatrix, FrameToMatrix, describe_columns, missing_values};
+use crate::table::{
+    DataMatrix, FrameToMatrix, MatrixOptions, Missing, describe_columns, missing_values,
+};
+use crate::transform::Transform;
 
 fn plain(value: &impl Exhibit) -> String {
     value.exhibit().text("text/plain").unwrap_or_default().to_owned()
@@ -127,6 +130,50 @@ fn data_matrices_say_what_was_left_out() {
     let frame = df!["tile" => ["a", "b", "c"], "x" => [1.0, 2.0, 4.0]].unwrap();
     let text = plain(&frame.data_matrix().unwrap());
     assert!(text.contains("Columns left out: tile"), "{text}");
+}
+
+#[test]
+fn data_matrices_say_how_rows_count_and_what_values_went_through() {
+    let options = MatrixOptions::new()
+        .columns_like("*e*")
+        .without(["tile"])
+        .weights("batch")
+        .missing(Missing::DropRows);
+    let x = tiles().data_matrix_with(options).unwrap();
+    let text = plain(&x.transformed(Transform::log10().of(["length"])).unwrap());
+    for part in [
+        "Rows weighted by column batch, from 7 to 9.",
+        "Columns left out: tile: labels the rows, cracked: not numeric (bool).",
+        "1 of 3 rows dropped for missing values: T2.",
+        "Transformed, in this order: logarithm to base 10 of length.",
+    ] {
+        assert!(text.contains(part), "{part}: {text}");
+    }
+}
+
+#[test]
+fn gaps_are_shown_and_counted() {
+    let text = plain(&tiles().gapped_matrix().unwrap());
+    assert!(
+        text.starts_with("matrix with gaps, 3 rows × 2 variables; 1 value missing (16.7 %)"),
+        "{text}"
+    );
+    assert!(text.contains("Missing: 1 in length; 2 rows complete."), "{text}");
+    assert!(text.contains(" missing ") && !text.contains("NaN"), "{text}");
+}
+
+#[test]
+fn columns_that_say_nothing_of_their_own_are_listed() {
+    let values = dmatrix![1.0, 10.0, 7.0, 1.0; 3.0, 30.0, 7.0, 3.0; 4.0, 40.0, 7.0, 4.0];
+    let x =
+        DataMatrix::from_values(values, ["cm", "mm", "kiln", "again"], ["a", "b", "c"]).unwrap();
+    let text = plain(&x.check_columns());
+    assert!(text.starts_with("3 of 4 columns say nothing of their own"), "{text}");
+    for part in ["7 in every row", "equal to cm", "0 + 10 × cm"] {
+        assert!(text.contains(part), "{part}: {text}");
+    }
+    let text = plain(&x.select(["cm"]).unwrap().check_columns());
+    assert!(text.starts_with("1 column over 3 rows: each varies"), "{text}");
 }
 
 #[test]

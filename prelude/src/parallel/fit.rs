@@ -53,7 +53,7 @@ use crate::table::DataMatrix;
 /// fewer than three rows and [`Error::TooFewColumns`] for fewer than two columns;
 /// [`Error::WeightsNotCovered`] for rows that carry weights; [`Error::OptionOutOfRange`]. For
 /// reduced correlations, [`Error::TooFewRows`] unless there are more rows than variables, and
-/// [`Error::RankDeficient`] when some variables can be computed from others.
+/// [`Error::SingularScatter`] when some variables can be computed from others.
 pub fn parallel_analysis(x: &DataMatrix, options: ParallelOptions) -> Result<ParallelAnalysis> {
     options.check()?;
     let method = "parallel analysis";

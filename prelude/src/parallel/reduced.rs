@@ -14,7 +14,7 @@ pub(super) fn reduced_roots(pca: &PrincipalComponents) -> Result<DVector<f64>> {
     let p = pca.n_variables();
     if pca.n_components() < p {
         let rank = pca.n_components();
-        return Err(Error::RankDeficient { method: METHOD, rank, needed: p });
+        return Err(Error::SingularScatter { method: METHOD, rank, order: p });
     }
     let structure = pca.structure();
     let mut correlation = structure.values() * structure.values().transpose();
@@ -55,7 +55,7 @@ impl Reduction {
             }
             let pivot = lower[(j, j)];
             if !(pivot > f64::EPSILON * p as f64) {
-                return Err(Error::RankDeficient { method: METHOD, rank: j, needed: p });
+                return Err(Error::SingularScatter { method: METHOD, rank: j, order: p });
             }
             let root = pivot.sqrt();
             lower.column_mut(j).rows_range_mut(j..).scale_mut(1.0 / root);

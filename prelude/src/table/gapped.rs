@@ -248,16 +248,16 @@ impl GappedMatrix {
         }
     }
 
-    /// The same rows, variables, weights and notes with these values, which have no gaps: how an
-    /// estimate of the missing values becomes a matrix. Whoever calls it says which values it
-    /// estimated.
+    /// The same rows, variables and weights with these values, which have no gaps: how an estimate
+    /// of the missing values becomes a matrix. Its notes say in which columns, and how many.
     pub(crate) fn with_gaps_filled(&self, values: DMatrix<f64>) -> Result<DataMatrix> {
+        let notes = MatrixNotes { estimated: self.gaps(), ..(*self.notes).clone() };
         let filled = DataMatrix::checked(
             values,
             self.variables.to_vec(),
             self.labels.to_vec(),
             self.label_source.clone(),
-            Some((*self.notes).clone()),
+            Some(notes),
         )?;
         match &self.weights {
             Some(weights) => filled.with_weights(weights.iter().copied()),
@@ -288,6 +288,13 @@ impl From<&DataMatrix> for GappedMatrix {
             notes: Arc::new(x.notes().clone()),
             n_missing: vec![0; x.n_cols()].into(),
         }
+    }
+}
+
+impl From<&GappedMatrix> for GappedMatrix {
+    /// The same matrix; nothing is copied.
+    fn from(x: &GappedMatrix) -> Self {
+        x.clone()
     }
 }
 

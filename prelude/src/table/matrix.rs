@@ -9,6 +9,7 @@ use nalgebra::DMatrix;
 use super::nearest::nearest;
 use super::notes::{LabelSource, MatrixNotes};
 use crate::error::{ColumnCount, Error, Result};
+use crate::transform::Transformation;
 
 /// Finite numbers, rows being observations and columns being variables, with their names.
 ///
@@ -26,6 +27,8 @@ pub struct DataMatrix {
     // Positive and finite, one per row; see `weights.rs`.
     weights: Option<Arc<[f64]>>,
     notes: Arc<MatrixNotes>,
+    // What the values went through, in order.
+    transformations: Arc<[Transformation]>,
 }
 
 impl DataMatrix {
@@ -100,6 +103,7 @@ impl DataMatrix {
             label_source,
             weights: None,
             notes: Arc::new(notes),
+            transformations: Arc::new([]),
         };
         matrix.check_finite()?;
         Ok(matrix)
@@ -138,6 +142,12 @@ impl DataMatrix {
     /// What happened on the way from the table: columns left out, rows dropped.
     pub fn notes(&self) -> &MatrixNotes {
         &self.notes
+    }
+
+    /// The transformations that the values went through, in order; none when they are as they were
+    /// in the table.
+    pub fn transformations(&self) -> &[Transformation] {
+        &self.transformations
     }
 
     /// The values of one variable, in row order.
@@ -179,9 +189,16 @@ impl DataMatrix {
         if places.is_empty() {
             return Err(Error::NoColumns);
         }
+        let variables: Arc<[String]> =
+            places.iter().map(|&place| self.variables[place].clone()).collect();
         Ok(DataMatrix {
             values: Arc::new(self.values.select_columns(&places)),
-            variables: places.iter().map(|&place| self.variables[place].clone()).collect(),
+            transformations: self
+                .transformations
+                .iter()
+                .filter_map(|transformation| transformation.restricted_to(&variables))
+                .collect(),
+            variables,
             ..self.clone()
         })
     }
@@ -245,6 +262,29 @@ impl DataMatrix {
         check_count("labels of rows", self.n_rows(), labels.len())?;
         check_labels(&labels, &LabelSource::Given)?;
         Ok(DataMatrix { labels: labels.into(), label_source: LabelSource::Given, ..self.clone() })
+    }
+
+    /// The same rows and variables, with their weights, notes and transformations, and other
+    /// values: a description of these rows in the same units, such as a reconstruction.
+    ///
+    /// # Errors
+    ///
+    /// [`Error::ShapeMismatch`] and [`Error::NonFinite`].
+    pub fn with_values(&self, values: DMatrix<f64>) -> Result<DataMatrix> {
+        check_count("rows", self.n_rows(), values.nrows())?;
+        check_count("columns", self.n_cols(), values.ncols())?;
+        let matrix = DataMatrix { values: Arc::new(values), ..self.clone() };
+        matrix.check_finite()?;
+        Ok(matrix)
+    }
+
+    /// As [`with_values`](Self::with_values), the values having gone through this chain.
+    pub(crate) fn in_other_units(
+        &self,
+        values: DMatrix<f64>,
+        transformations: Arc<[Transformation]>,
+    ) -> Result<DataMatrix> {
+        Ok(DataMatrix { transformations, ..self.with_values(values)? })
     }
 
     pub(crate) fn shared_variables(&self) -> Arc<[String]> {
@@ -329,7 +369,7 @@ pub(super) fn check_count(what: &'static str, expected: usize, found: usize) -> 
 }
 
 /// Refuses names that stand there more than once.
-pub(super) fn check_names(names: &[String]) -> Result<()> {
+pub(crate) fn check_names(names: &[String]) -> Result<()> {
     let mut counts: HashMap<&str, usize> = HashMap::new();
     for name in names {
         *counts.entry(name).or_default() += 1;

@@ -11,12 +11,14 @@
 
 mod read;
 
+mod check;
 mod frame;
 mod gapped;
 mod matrix;
 mod named;
 mod notes;
 mod options;
+mod pattern;
 mod weights;
 
 mod describe;
@@ -25,6 +27,7 @@ mod nearest;
 #[cfg(test)]
 mod tests;
 
+pub use check::{ColumnCheck, LinearPair};
 pub use describe::{
     ColumnDescription, ColumnDescriptions, MissingPattern, MissingValues, NumberDescription,
     describe_columns, missing_values,
@@ -34,5 +37,7 @@ pub use gapped::GappedMatrix;
 pub use matrix::DataMatrix;
 pub use named::NamedMatrix;
 pub use notes::{DroppedRow, LabelSource, LeftOut, LeftOutReason, MatrixNotes};
-pub use options::{Label, MatrixOptions, Missing};
+pub use options::{Label, MatrixOptions, Missing, NumberType};
 pub use read::{READABLE, TableOptions, read_table, read_table_with};
+
+pub(crate) use matrix::check_names;

@@ -2,6 +2,8 @@
 
 use std::fmt;
 
+use crate::error::ColumnCount;
+
 /// Where the labels of a matrix's rows come from.
 #[derive(Debug, Clone, PartialEq, Eq)]
 #[non_exhaustive]
@@ -33,6 +35,17 @@ pub enum LeftOutReason {
     Empty,
     /// It labels the rows.
     Labels,
+    /// It holds the weights of the rows.
+    Weights,
+    /// It was to be left out.
+    Unwanted,
+    /// It misses more values than columns were allowed to miss.
+    Missing {
+        /// Values that it misses.
+        n_missing: usize,
+        /// Rows in the table.
+        n_rows: usize,
+    },
 }
 
 /// A row of the table that was dropped because it misses values.
@@ -48,16 +61,20 @@ pub struct DroppedRow {
 
 /// What happened on the way from a table to a matrix.
 ///
-/// Columns that were not asked for by name are not listed: only those that were passed over when
-/// every numeric column was wanted.
+/// Columns that no choice of columns fits are not listed: only those that were passed over when
+/// every numeric column was wanted, or those of a pattern or type, and those that miss too much.
 #[derive(Debug, Clone, Default, PartialEq, Eq)]
 pub struct MatrixNotes {
-    /// Columns that were passed over, in table order.
+    /// Columns that were passed over.
     pub left_out: Vec<LeftOut>,
     /// Rows that were dropped, in table order.
     pub dropped_rows: Vec<DroppedRow>,
     /// Rows in the table.
     pub n_table_rows: usize,
+    /// The column that weighs the rows, if one does.
+    pub weights: Option<String>,
+    /// Columns in which missing values were replaced by estimates, and how many in each.
+    pub estimated: Vec<ColumnCount>,
 }
 
 impl fmt::Display for LabelSource {
@@ -76,6 +93,11 @@ impl fmt::Display for LeftOutReason {
             LeftOutReason::NotNumeric(dtype) => write!(f, "not numeric ({dtype})"),
             LeftOutReason::Empty => write!(f, "holds no value"),
             LeftOutReason::Labels => write!(f, "labels the rows"),
+            LeftOutReason::Weights => write!(f, "weighs the rows"),
+            LeftOutReason::Unwanted => write!(f, "not wanted"),
+            LeftOutReason::Missing { n_missing, n_rows } => {
+                write!(f, "misses {n_missing} of {n_rows} values")
+            }
         }
     }
 }

@@ -1,24 +1,73 @@
-//! The choices between a table and its matrix: which columns, which labels, what of missing values.
+//! The choices between a table and its matrix: which columns, labels and weights, and what of missing
+//! values.
+
+use std::fmt;
+
+use crate::error::{Error, Result};
 
 /// How a table becomes a matrix.
 ///
 /// The default takes every numeric column, labels rows by the first column of text whose values
-/// are complete and all different (else by row numbers from 1), and refuses missing values.
+/// are complete and all different (else by row numbers from 1), weighs all rows alike, and refuses
+/// missing values.
+///
+/// Columns can be chosen [by name](MatrixOptions::columns), [by
+/// pattern](MatrixOptions::columns_like) and [by type](MatrixOptions::columns_of_type), more than
+/// once and together: the matrix has them in the order of the choices, a column that several
+/// choices fit stands where the first put it. Others can be [left
+/// out](MatrixOptions::without) whatever was chosen.
 ///
 /// ```
-/// use semiaxis::table::{MatrixOptions, Missing};
+/// use semiaxis::polars::prelude::*;
+/// use semiaxis::table::{FrameToMatrix, MatrixOptions, Missing};
 ///
+/// let table = df! {
+///     "tile" => ["a", "b", "c"],
+///     "batch" => [7, 7, 8],
+///     "colour_red" => [Some(0.41), Some(0.44), None],
+///     "colour_green" => [0.22, 0.20, 0.23],
+///     "length" => [40.1, 40.3, 39.8],
+///     "pieces" => [10, 20, 10],
+/// }?;
 /// let options = MatrixOptions::new()
-///     .columns(["length", "width"])
-///     .label("tile")
+///     .columns(["length"])
+///     .columns_like("colour_*")
+///     .weights("pieces")
 ///     .missing(Missing::DropRows);
-/// assert_eq!(options.chosen_columns().unwrap().len(), 2);
+/// let x = table.data_matrix_with(options)?;
+/// assert_eq!(x.variables(), ["length", "colour_red", "colour_green"]);
+/// assert_eq!(x.labels(), ["a", "b"]);
+/// assert_eq!(x.weights(), Some(&[10.0, 20.0][..]));
+/// # Ok::<(), Box<dyn std::error::Error>>(())
 /// ```
-#[derive(Debug, Clone, Default, PartialEq, Eq)]
+#[derive(Debug, Clone, Default, PartialEq)]
 pub struct MatrixOptions {
-    pub(super) columns: Option<Vec<String>>,
+    // None means every numeric column.
+    pub(super) chosen: Option<Vec<Choice>>,
+    pub(super) left_out: Vec<Choice>,
     pub(super) label: Label,
+    pub(super) weights: Option<String>,
+    pub(super) most_missing: Option<f64>,
     pub(super) missing: Missing,
+}
+
+/// One way in which columns were asked for.
+#[derive(Debug, Clone, PartialEq)]
+pub(super) enum Choice {
+    Named(Vec<String>),
+    Like(String),
+    OfType(NumberType),
+}
+
+/// A type of numeric columns, as the table stores them.
+#[derive(Debug, Clone, Copy, PartialEq, Eq)]
+#[non_exhaustive]
+pub enum NumberType {
+    /// Whole numbers: counts, codes, years. A column of a text file has this type when every
+    /// value in it is written without a decimal point.
+    Integer,
+    /// Floating-point numbers: measurements.
+    Float,
 }
 
 /// What rows of a matrix are labelled by.
@@ -35,7 +84,11 @@ pub enum Label {
     RowNumbers,
 }
 
-/// What happens to missing values. Nothing happens to them silently.
+/// What happens to rows that miss a value in a column of the matrix. Nothing happens to them
+/// silently.
+///
+/// Estimating what is missing needs a matrix that keeps its gaps: see
+/// [`gapped_matrix`](super::FrameToMatrix::gapped_matrix).
 #[derive(Debug, Clone, Copy, Default, PartialEq, Eq)]
 #[non_exhaustive]
 pub enum Missing {
@@ -52,9 +105,37 @@ impl MatrixOptions {
         Self::default()
     }
 
-    /// Takes these columns, in this order, instead of every numeric one.
-    pub fn columns<S: Into<String>>(mut self, names: impl IntoIterator<Item = S>) -> Self {
-        self.columns = Some(names.into_iter().map(Into::into).collect());
+    /// Takes these columns, in this order, instead of every numeric one. Each must exist and be
+    /// numeric.
+    pub fn columns<S: Into<String>>(self, names: impl IntoIterator<Item = S>) -> Self {
+        self.choose(Choice::Named(names.into_iter().map(Into::into).collect()))
+    }
+
+    /// Takes the numeric columns whose whole name fits a pattern, in table order, instead of every
+    /// numeric one.
+    ///
+    /// In a pattern `*` stands for any run of characters, also none, and `?` for one character;
+    /// every other character stands for itself, capitals included. Columns that fit but are not
+    /// numeric are listed in the notes.
+    pub fn columns_like(self, pattern: impl Into<String>) -> Self {
+        self.choose(Choice::Like(pattern.into()))
+    }
+
+    /// Takes the columns of a numeric type, in table order, instead of every numeric one.
+    pub fn columns_of_type(self, number_type: NumberType) -> Self {
+        self.choose(Choice::OfType(number_type))
+    }
+
+    /// Leaves these columns out. Each must exist, and must not also be asked for by name.
+    pub fn without<S: Into<String>>(mut self, names: impl IntoIterator<Item = S>) -> Self {
+        self.left_out.push(Choice::Named(names.into_iter().map(Into::into).collect()));
+        self
+    }
+
+    /// Leaves out the columns whose name fits a pattern, as in
+    /// [`columns_like`](Self::columns_like).
+    pub fn without_like(mut self, pattern: impl Into<String>) -> Self {
+        self.left_out.push(Choice::Like(pattern.into()));
         self
     }
 
@@ -70,14 +151,49 @@ impl MatrixOptions {
         self
     }
 
-    /// Says what happens to missing values.
+    /// Weighs rows by this column, which then is not a variable: positive finite numbers, of which
+    /// only ratios matter (see [`DataMatrix::with_weights`](super::DataMatrix::with_weights)).
+    pub fn weights(mut self, name: impl Into<String>) -> Self {
+        self.weights = Some(name.into());
+        self
+    }
+
+    /// Leaves out columns that miss more than this share of their values, from 0 to below 1; the
+    /// matrix lists them. What the remaining columns miss is then a matter of
+    /// [`missing`](Self::missing), and so refused unless that says otherwise.
+    pub fn without_missing_above(mut self, share: f64) -> Self {
+        self.most_missing = Some(share);
+        self
+    }
+
+    /// Says what happens to rows that miss values.
     pub fn missing(mut self, missing: Missing) -> Self {
         self.missing = missing;
         self
     }
 
-    /// The columns that were chosen by name, if any were.
-    pub fn chosen_columns(&self) -> Option<&[String]> {
-        self.columns.as_deref()
+    pub(super) fn check(&self) -> Result<()> {
+        match self.most_missing {
+            Some(value) if !(0.0..1.0).contains(&value) => Err(Error::OptionOutOfRange {
+                option: "without_missing_above",
+                value,
+                accepted: "a share from 0 to below 1",
+            }),
+            _ => Ok(()),
+        }
+    }
+
+    fn choose(mut self, choice: Choice) -> Self {
+        self.chosen.get_or_insert_default().push(choice);
+        self
+    }
+}
+
+impl fmt::Display for NumberType {
+    fn fmt(&self, f: &mut fmt::Formatter<'_>) -> fmt::Result {
+        f.write_str(match self {
+            NumberType::Integer => "whole numbers",
+            NumberType::Float => "floating-point numbers",
+        })
     }
 }

@@ -10,7 +10,7 @@ use proptest::prelude::*;
 use super::nearest::nearest;
 use super::{
     DataMatrix, FrameToMatrix, LabelSource, LeftOutReason, MatrixOptions, Missing, NamedMatrix,
-    TableOptions, describe_columns, missing_values, read_table, read_table_with,
+    NumberType, TableOptions, describe_columns, missing_values, read_table, read_table_with,
 };
 use crate::error::{Error, Result};
 
@@ -316,6 +316,150 @@ fn requests_that_cannot_be_met_are_typed_errors() {
     assert_eq!(empty.data_matrix().unwrap().notes().left_out[0].reason, LeftOutReason::Empty);
     let empty = empty.drop("b").unwrap();
     assert!(matches!(empty.data_matrix(), Err(Error::AllMissing { .. })));
+}
+
+#[test]
+fn columns_are_chosen_by_pattern_and_type_and_left_out() {
+    let table = df! {
+        "tile" => ["a", "b", "c"],
+        "colour_name" => ["red", "red", "brown"],
+        "colour_L" => [41.0, 44.0, 39.0],
+        "colour_a" => [22.0, 20.0, 23.0],
+        "cracks" => [0_i64, 1, 0],
+        "length" => [40.1, 40.3, 39.8],
+        "width" => [20.3, 20.1, 20.2],
+    }
+    .unwrap();
+    let chosen =
+        |options: MatrixOptions| table.data_matrix_with(options).unwrap().variables().join(" ");
+    let new = MatrixOptions::new;
+    assert_eq!(chosen(new().columns_like("colour_*")), "colour_L colour_a");
+    assert_eq!(chosen(new().columns_like("*t*")), "length width");
+    assert_eq!(
+        chosen(new().columns_like("colour_?").columns(["length"])),
+        "colour_L colour_a length"
+    );
+    // A column stands where the first choice that fits it puts it, and once.
+    assert_eq!(chosen(new().columns(["width"]).columns_like("*th")), "width length");
+    assert_eq!(chosen(new().columns_of_type(NumberType::Integer)), "cracks");
+    assert_eq!(
+        chosen(new().columns_of_type(NumberType::Float).without(["length"])),
+        "colour_L colour_a width"
+    );
+    assert_eq!(chosen(new().without_like("colour_*").without(["cracks"])), "length width");
+    let x = table.data_matrix_with(new().columns_like("*").without(["cracks", "tile"])).unwrap();
+    let left_out: Vec<_> = x.notes().left_out.iter().map(|l| (&*l.column, &l.reason)).collect();
+    assert_eq!(left_out[0], ("tile", &LeftOutReason::Labels));
+    assert_eq!(left_out[1], ("colour_name", &LeftOutReason::NotNumeric("str".to_owned())));
+    assert_eq!(left_out[2], ("cracks", &LeftOutReason::Unwanted));
+    let refused = |options: MatrixOptions| table.data_matrix_with(options).unwrap_err();
+    assert!(matches!(
+        refused(new().columns_like("color_*")),
+        Error::NoColumnLike { pattern, .. } if pattern == "color_*"
+    ));
+    assert!(matches!(refused(new().without_like("x*")), Error::NoColumnLike { .. }));
+    assert!(matches!(refused(new().without(["lenght"])), Error::UnknownColumn { .. }));
+    assert!(matches!(
+        refused(new().columns(["length"]).without_like("len*")),
+        Error::WantedAndUnwanted { name } if name == "length"
+    ));
+    assert!(matches!(refused(new().columns_like("colour_n*")), Error::NoColumns));
+    assert!(matches!(refused(new().without_like("*")), Error::NoColumns));
+    let whole = table.select(["tile", "cracks"]).unwrap();
+    assert!(matches!(
+        whole.data_matrix_with(new().columns_of_type(NumberType::Float)),
+        Err(Error::NoColumnOfType { number_type: NumberType::Float, .. })
+    ));
+}
+
+#[test]
+fn a_weight_column_is_no_variable_and_is_checked() {
+    let with = |weights: [Option<f64>; 4]| {
+        tiles().with_column(polars::prelude::Column::new("pieces".into(), weights)).unwrap().clone()
+    };
+    let options =
+        || MatrixOptions::new().columns(["width"]).weights("pieces").missing(Missing::DropRows);
+    // The fourth row misses its width, so that its weight does not matter.
+    let x = with([Some(1.0), Some(2.5), Some(1.0), None]).data_matrix_with(options()).unwrap();
+    assert_eq!((x.weights(), x.n_rows()), (Some(&[1.0, 2.5, 1.0][..]), 3));
+    assert_eq!(x.notes().weights.as_deref(), Some("pieces"));
+    let refused = |weights| with(weights).data_matrix_with(options()).unwrap_err();
+    assert!(matches!(
+        refused([Some(1.0), None, Some(1.0), None]),
+        Error::MissingWeights { row: 2, count: 1, column } if column == "pieces"
+    ));
+    for bad in [0.0, -1.0, f64::NAN, f64::INFINITY] {
+        match refused([Some(1.0), Some(2.0), Some(bad), None]) {
+            Error::BadWeight { column: Some(column), row: 3, label, .. } => {
+                assert_eq!((column.as_str(), label.as_str()), ("pieces", "c"));
+            }
+            other => panic!("{other}"),
+        }
+    }
+    let options = MatrixOptions::new().weights("fired").missing(Missing::DropRows);
+    let x = tiles().data_matrix_with(options).unwrap();
+    assert_eq!(
+        (x.variables().join(" "), x.weights()),
+        ("length width".into(), Some(&[3.0, 2.0][..]))
+    );
+    let with_weights = |name: &str| MatrixOptions::new().columns(["fired"]).weights(name);
+    let refused = |name: &str| tiles().data_matrix_with(with_weights(name)).unwrap_err();
+    assert!(matches!(refused("fired"), Error::RepeatedRequest { .. }));
+    assert!(matches!(refused("kiln"), Error::NotNumeric { .. }));
+    assert!(matches!(refused("weight"), Error::UnknownColumn { .. }));
+    let both = with_weights("width").label("width");
+    assert!(tiles().data_matrix_with(both).is_err());
+}
+
+#[test]
+fn columns_with_too_many_gaps_go_first_and_rows_after() {
+    let table = df! {
+        "a" => [Some(1.0), Some(2.0), None, Some(4.0), Some(5.0)],
+        "b" => [None, None, Some(3.0), Some(4.0), Some(5.0)],
+        "c" => [1.0, 2.0, 3.0, 5.0, 4.0],
+    }
+    .unwrap();
+    let options = |share: f64| MatrixOptions::new().without_missing_above(share);
+    let x = table.data_matrix_with(options(0.2).missing(Missing::DropRows)).unwrap();
+    assert_eq!((x.variables().join(" "), x.n_rows()), ("a c".to_owned(), 4));
+    assert_eq!(
+        (x.notes().left_out[0].column.as_str(), &x.notes().left_out[0].reason),
+        ("b", &LeftOutReason::Missing { n_missing: 2, n_rows: 5 })
+    );
+    // What is left is refused as ever.
+    match table.data_matrix_with(options(0.2)) {
+        Err(Error::MissingValues { columns, n_complete: 4, .. }) => assert_eq!(columns.len(), 1),
+        other => panic!("{other:?}"),
+    }
+    assert_eq!(table.data_matrix_with(options(0.0)).unwrap().variables(), ["c"]);
+    assert_eq!(table.gapped_matrix_with(options(0.4)).unwrap().n_missing(), 3);
+    match table.data_matrix_with(options(0.1).columns(["a", "b"])) {
+        Err(Error::NoColumnLeft { columns, n_rows: 5, .. }) => assert_eq!(columns[1].count, 2),
+        other => panic!("{other:?}"),
+    }
+    for share in [-0.1, 1.0, f64::NAN] {
+        assert!(matches!(
+            table.data_matrix_with(options(share)),
+            Err(Error::OptionOutOfRange { option: "without_missing_above", .. })
+        ));
+    }
+}
+
+#[test]
+fn gaps_are_kept_for_those_who_ask() {
+    let options = || MatrixOptions::new().label("tile").weights("fired");
+    let x = tiles().gapped_matrix_with(options()).unwrap();
+    assert_eq!((x.variables().join(" "), x.labels().len()), ("length width".to_owned(), 4));
+    assert!(x.is_missing(1, 0) && x.is_missing(3, 1) && x.n_missing() == 2);
+    assert_eq!((x.values()[(2, 0)], x.weights()), (39.8, Some(&[3.0, 1.0, 2.0, 4.0][..])));
+    assert_eq!(x.complete_rows().unwrap().weights(), Some(&[3.0, 2.0][..]));
+    let dropped = tiles().gapped_matrix_with(options().missing(Missing::DropRows)).unwrap();
+    assert_eq!((dropped.n_missing(), dropped.notes().dropped_rows.len()), (0, 2));
+    // Not a number is not missing, beside values that are.
+    let nan = df! { "x" => [Some(1.0), None, Some(f64::NAN)], "y" => [1.0, 2.0, 3.0] }.unwrap();
+    assert!(matches!(nan.gapped_matrix(), Err(Error::NonFinite { row: 3, count: 1, .. })));
+    let empty = df! { "x" => [Some(1.0), None], "y" => [Some(1.0), None] }.unwrap();
+    assert!(matches!(empty.gapped_matrix(), Err(Error::EmptyRows { labels }) if labels == ["2"]));
 }
 
 #[test]

@@ -61,6 +61,7 @@ impl DataMatrix {
         }
         match weights.iter().position(|weight| !(*weight > 0.0 && weight.is_finite())) {
             Some(row) => Err(Error::BadWeight {
+                column: None,
                 row: row + 1,
                 label: self.labels()[row].clone(),
                 value: weights[row],
@@ -136,7 +137,7 @@ mod tests {
     fn what_is_no_weight_is_refused() {
         for bad in [0.0, -1.0, f64::NAN, f64::INFINITY] {
             match three().with_weights([1.0, bad, bad]) {
-                Err(Error::BadWeight { row: 2, label, value }) => {
+                Err(Error::BadWeight { row: 2, label, value, column: None }) => {
                     assert_eq!(label, "b");
                     assert!(value == bad || value.is_nan());
                 }

@@ -1,7 +1,10 @@
 //! Components of open data, of ill-conditioned data in many digits, and of a handbook's example.
 
 use nalgebra::dmatrix;
-use semiaxis::components::{Scaling, principal_components};
+use semiaxis::components::{
+    ComponentOptions, Decomposition, RandomisedOptions, Scaling, principal_components,
+    principal_components_with,
+};
 use semiaxis::table::DataMatrix;
 use semiaxis_tests::compare::{
     assert_all_relative, assert_columns_up_to_sign, assert_relative, assert_zero,
@@ -77,6 +80,36 @@ fn open_data_by_a_full_singular_value_decomposition() {
         n_cases += 1;
     }
     assert_eq!(n_cases, 8);
+}
+
+#[test]
+fn a_randomised_search_keeps_within_its_error_of_exact_components() {
+    let file = load("components.json");
+    for case in cases(&file).filter(|case| case["name"] == "breast_cancer") {
+        let exact = numbers(&case["variances"]);
+        for power_iterations in [0, 1, 8] {
+            let search = RandomisedOptions::new().seed(5).power_iterations(power_iterations);
+            let options = ComponentOptions::new(scaling(case))
+                .keep(4)
+                .decomposition(Decomposition::Randomised(search));
+            let pca = principal_components_with(&data(case), options).unwrap();
+            let quality = pca.approximation().unwrap();
+            let rounding = 1e-12 * exact[0];
+            for (k, variance) in pca.variances().iter().enumerate() {
+                let short = exact[k] - variance;
+                assert!((-rounding..=quality.norm_bound().powi(2)).contains(&short), "{short:e}");
+                let distance = |other: &f64| (other - variance).abs();
+                let nearest = exact.iter().map(distance).fold(f64::INFINITY, f64::min);
+                assert!(nearest <= quality.residuals()[k] + rounding, "{nearest:e}");
+            }
+            if power_iterations == 8 {
+                let what = format!("{} after 8 iterations", scaling(case));
+                assert_all_relative(pca.variances().as_slice(), &exact[..4], 1e-8, &what);
+                let loadings = matrix(&case["loadings"]).columns(0, 4).into_owned();
+                assert_columns_up_to_sign(pca.loadings(), &loadings, 1e-4, &what);
+            }
+        }
+    }
 }
 
 #[test]

@@ -2,9 +2,12 @@
 //! family. `tests/references/README.md` says how the values were made.
 
 mod components;
+mod gaps;
 mod parallel;
 mod retention;
+mod stability;
 mod tables;
+mod transform;
 mod weights_and_meaning;
 
 mod files;

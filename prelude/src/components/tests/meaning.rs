@@ -166,7 +166,7 @@ fn test_values_of_groups_are_those_of_drawing_without_putting_back() {
         let pca = principal_components(&x, Scaling::Correlation).unwrap();
         let weight = |row: usize| pca.row_weights().map_or(1.0, |weights| weights[row]);
         let product = |row: usize| weight(row) * pca.scores()[(row, 0)];
-        let (mut squares, mut count) = (0.0, 0.0);
+        let (mut squares, mut count) = (0.0, 0.0_f64);
         for chosen in (0..1024_u32).filter(|chosen| chosen.count_ones() == 4) {
             let inside = (0..10).filter(|row| chosen & (1 << row) != 0);
             squares += inside.map(product).sum::<f64>().powi(2);
@@ -175,7 +175,7 @@ fn test_values_of_groups_are_those_of_drawing_without_putting_back() {
         let groups = (0..10).map(|row| if row < 4 { "first" } else { "rest" });
         let groups = pca.supplementary_groups(groups).unwrap();
         let sum: f64 = (0..4).map(product).sum();
-        let expected = sum / (squares / count as f64).sqrt();
+        let expected = sum / (squares / count).sqrt();
         assert_relative(groups.test_values()[(0, 0)], expected, 1e-10, "test value");
         assert_relative(groups.test_values()[(1, 0)], -expected, 1e-10, "of the rest");
         let weights: f64 = (0..4).map(weight).sum();

@@ -27,6 +27,7 @@ mod profiles;
 mod scores;
 mod scree;
 mod shares;
+mod turntable;
 
 mod arrows;
 mod groups;
@@ -65,6 +66,7 @@ pub use scores::score_plot;
 pub use scree::scree;
 pub use settings::{Intervals, Reference};
 pub use shares::variance_shares;
+pub use turntable::{Turntable, turntable};
 
 use self::card::Card;
 use self::picture::{Drawing, Picture};

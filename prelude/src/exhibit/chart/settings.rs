@@ -167,7 +167,7 @@ impl Settings {
     }
 
     /// What was set, besides title and size.
-    fn set(&self) -> impl Iterator<Item = Setting> {
+    pub fn set(&self) -> impl Iterator<Item = Setting> {
         [
             (Setting::Components, self.components.is_some()),
             (Setting::Groups, self.groups.is_some()),

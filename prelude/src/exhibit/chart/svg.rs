@@ -103,7 +103,7 @@ pub(super) fn tenth(value: f64) -> String {
 
 // Fowler, Noll and Vo's hash, variant 1a, 64 bits. It need not resist attacks: a
 // collision costs no more than a shared name.
-fn fnv1a(bytes: &[u8]) -> u64 {
+pub(super) fn fnv1a(bytes: &[u8]) -> u64 {
     bytes.iter().fold(0xcbf2_9ce4_8422_2325, |hash, &byte| {
         (hash ^ u64::from(byte)).wrapping_mul(0x0000_0100_0000_01b3)
     })

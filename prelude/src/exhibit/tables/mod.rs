@@ -5,16 +5,17 @@
 //! column is made, with a stated rule, and stand aligned at the decimal point. Long tables are
 //! abridged when they are drawn: the head and the tail are shown, and how many rows lie between.
 //!
-//! The same table is drawn as HTML, which follows the colours of the page it stands on, and as
-//! plain text for consoles.
+//! The same table is drawn as HTML, which follows the colours of the page it stands on, as Markdown
+//! for reports, and as plain text for consoles.
 
 mod html;
+mod markdown;
 mod plain;
 #[cfg(test)]
 mod tests;
 
 use super::numbers::{fixed, grouped, percent, significant, stored};
-use super::{Bundle, Exhibit};
+use super::{Bundle, Content, Exhibit};
 
 // A table of up to MOST_ROWS rows is shown whole, a longer one by its head and tail.
 const MOST_ROWS: usize = 24;
@@ -136,6 +137,11 @@ impl Table {
         html::draw(self)
     }
 
+    /// The table as Markdown, for reports that are written as text.
+    pub fn markdown(&self) -> String {
+        markdown::draw(self)
+    }
+
     /// The table as text for consoles.
     pub fn plain(&self) -> String {
         plain::draw(self)
@@ -166,15 +172,19 @@ impl Table {
 
 impl Exhibit for Table {
     fn exhibit(&self) -> Bundle {
-        Bundle::new().with_html(self.html()).with_plain(self.plain())
+        stacked(&[self])
     }
 }
 
 /// Several tables in one exhibit, one under the other.
 pub(crate) fn stacked(tables: &[&Table]) -> Bundle {
     let html: String = tables.iter().map(|table| table.html()).collect();
+    let markdown: Vec<String> = tables.iter().map(|table| table.markdown()).collect();
     let plain: Vec<String> = tables.iter().map(|table| table.plain()).collect();
-    Bundle::new().with_html(html).with_plain(plain.join("\n\n"))
+    Bundle::new()
+        .with_html(html)
+        .with("text/markdown", Content::Text(markdown.join("\n")))
+        .with_plain(plain.join("\n\n"))
 }
 
 impl TableColumn {
