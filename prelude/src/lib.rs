@@ -11,6 +11,7 @@ pub mod live;
 pub mod parallel;
 pub mod prelude;
 pub mod random;
+pub mod retention;
 pub mod robust;
 pub mod rotation;
 pub mod stability;

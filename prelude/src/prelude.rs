@@ -31,8 +31,11 @@ pub use crate::gaps::{
     ProbabilisticComponents, ProbabilisticOptions, components_for_gaps, estimate_missing,
     probabilistic_components,
 };
-pub use crate::parallel::{Noise, ParallelAnalysis, ParallelOptions, parallel_analysis};
+pub use crate::parallel::{Noise, ParallelAnalysis, ParallelOptions, RootsOf, parallel_analysis};
 pub use crate::random::{Generator, random_generator, random_normal};
+pub use crate::retention::{
+    Effort, Retention, RetentionOptions, Rule, Verdict, retention, retention_with,
+};
 pub use crate::robust::{
     RobustComponents, RobustOptions, RobustRoute, RobustScatter, robust_components, robust_scatter,
 };

@@ -6,6 +6,7 @@ mod components;
 mod gaps;
 mod outliers;
 mod parallel;
+mod retention;
 mod robust;
 mod rotation;
 mod stability;
