@@ -22,9 +22,10 @@ pub use crate::distances::{
 };
 pub use crate::error::{Error, Result};
 pub use crate::exhibit::{
-    Bundle, Chart, Content, Exhibit, NumberFormat, Reference, Table, TableColumn, biplot,
-    correlation_map, loading_plot, pairs, profiles, score_matrix, score_plot, scree, significant,
-    structure_circle, turntable, variance_shares,
+    Bundle, Chart, Content, Exhibit, Intervals, NumberFormat, Reference, Table, TableColumn,
+    Turntable, VarianceBand, biplot, contribution_plot, correlation_map, distance_plot,
+    loading_bars, loading_plot, pairs, profiles, rotation_plot, score_matrix, score_plot, scree,
+    sequence_plot, significant, structure_circle, turntable, variance_shares,
 };
 pub use crate::gaps::{
     Completed, ComponentChoice, ComponentRule, EstimatedCell, GapMethod, GapOptions,

@@ -292,4 +292,4 @@ impl fmt::Display for Reason {
 }
 
 /// What a rule hands over: a comparison, or why there is none.
-pub(super) type Answer = std::result::Result<Comparison, Reason>;
+pub(super) type Answer = Result<Comparison, Reason>;

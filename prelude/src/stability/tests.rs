@@ -302,11 +302,11 @@ fn accelerations_are_those_of_the_jackknife() {
         let x = structured(300, 4, 31).map(|value| value + 1e-3 * value * value % 1.0);
         let pca = analysed(x, scaling);
         let refit = Refit::new(&pca, 2, Alignment::Matching);
-        let ours = super::influence::accelerations(&pca, &refit, 2);
+        let ours = influence::accelerations(&pca, &refit, 2);
         let mut workspace = refit.workspace();
         let refits: Vec<_> =
             (0..300).map(|row| refit.without(row, &mut workspace).unwrap().unwrap()).collect();
-        let jackknife = |of: &dyn Fn(&super::refit::Refitted) -> f64| {
+        let jackknife = |of: &dyn Fn(&refit::Refitted) -> f64| {
             let values: Vec<f64> = refits.iter().map(of).collect();
             let mean = values.iter().sum::<f64>() / 300.0;
             let cubes: f64 = values.iter().map(|v| (mean - v).powi(3)).sum();
