@@ -80,7 +80,8 @@ fn no_text_of_any_chart_is_cut_or_covered_in_a_browser() {
     let (x, kilns) = tiles();
     let mut charts = charts_of("tiles", &x, &kilns);
     let odd = hostile();
-    let groups: Vec<String> = odd.labels().iter().map(|label| label[..1].to_owned()).collect();
+    let groups: Vec<String> =
+        (0..odd.n_rows()).map(|unit| odd.variables()[unit % 3].clone()).collect();
     charts.extend(charts_of("hostile", &odd, &groups));
     let wide = DataMatrix::from_unnamed(mixture(30, 90)).unwrap();
     charts.extend(charts_of("wide", &wide, &vec!["all".to_owned(); 30]));

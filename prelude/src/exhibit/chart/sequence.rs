@@ -22,7 +22,7 @@ use crate::exhibit::text::shortened;
 
 const MOST_UNITS: usize = 20_000;
 const MOST_NAMED: usize = 12;
-/// Marks with a hover text each; beyond, only units over a limit have one.
+/// Marks with a hover text each; with more units only those beyond a limit have one.
 const MOST_HOVERS: usize = 1_200;
 const BETWEEN: f64 = 34.0;
 
@@ -171,12 +171,7 @@ fn draw_track(
     let frame = Frame::fit(room, Axis::Numbers(0.5, n as f64 + 0.5), Axis::Numbers(0.0, top));
     frame.draw(svg, if is_last { "Row" } else { "" }, track.name);
     let place = |unit: usize| frame.place(unit as f64 + 1.0, track.values[unit]);
-    let mut path = String::with_capacity(n * 10);
-    for unit in 0..n {
-        let (x, y) = place(unit);
-        path.push(if unit == 0 { 'M' } else { 'L' });
-        path.push_str(&format!("{} {}", tenth(x), tenth(y)));
-    }
+    let path = track_path(&frame, track.values);
     svg.element("path")
         .with("class", "track")
         .with("d", &path)
@@ -185,11 +180,13 @@ fn draw_track(
         .with("stroke-opacity", ".6")
         .done();
     let beyond = track.beyond();
+    let n_marked = beyond.len().min(MOST_HOVERS);
     let group_of = groups.of_units(n);
     let radius = mark_radius(n) * 0.7;
     svg.element("g").with("class", "marks").around(|svg| {
         let is_beyond = |unit: usize| track.limit.is_some_and(|limit| track.values[unit] > limit);
-        for unit in (0..n).filter(|&unit| n <= MOST_HOVERS || is_beyond(unit)) {
+        let marked = |unit: &usize| n <= MOST_HOVERS || beyond[..n_marked].contains(unit);
+        for unit in (0..n).filter(marked) {
             let mut cue = group_of[unit].cue;
             if !groups.are_set() {
                 // One colour for all would hide what the chart is about.
@@ -231,6 +228,9 @@ fn draw_track(
     if track.limit.is_none() {
         notes.push(format!("{} has no limit: {}.", track.name, track.rule));
     }
+    if n_marked < beyond.len() {
+        notes.push(format!("{}: the {n_marked} largest are marked.", track.name));
+    }
     if placed.len() < beyond.len() {
         notes.push(format!(
             "{}: {} of {} beyond the limit named, the largest first.",
@@ -240,6 +240,23 @@ fn draw_track(
         ));
     }
     notes
+}
+
+/// A line through all values; where several rows share a pixel, from the least to the largest.
+fn track_path(frame: &Frame, values: &[f64]) -> String {
+    let per_pixel = (values.len() as f64 / frame.area.width().max(1.0)).ceil().max(1.0) as usize;
+    let mut path = String::new();
+    for (place, chunk) in values.chunks(per_pixel).enumerate() {
+        let middle = (place * per_pixel) as f64 + (chunk.len() as f64 + 1.0) / 2.0;
+        let least = chunk.iter().copied().fold(f64::INFINITY, f64::min);
+        let largest = chunk.iter().copied().fold(f64::NEG_INFINITY, f64::max);
+        for value in [least, largest].into_iter().take(if per_pixel == 1 { 1 } else { 2 }) {
+            let (x, y) = frame.place(middle, value);
+            path.push(if path.is_empty() { 'M' } else { 'L' });
+            path.push_str(&format!("{} {}", tenth(x), tenth(y)));
+        }
+    }
+    path
 }
 
 fn draw_limit(svg: &mut Svg, frame: &Frame, track: &Track) {
