@@ -359,7 +359,7 @@ pub enum Error {
     NoSpread {
         /// Each such column and its middle.
         columns: Vec<(String, f64)>,
-        /// The measure of spread that is zero, or that a transformation was to be judged by.
+        /// The measure of spread that is zero or beyond what a number can hold.
         measure: &'static str,
     },
     /// Rows did not go through the transformations that were expected of them.
@@ -448,6 +448,26 @@ pub enum Error {
         rank: usize,
         /// Its order, which is the number of variables.
         order: usize,
+    },
+    /// So many rows satisfy one linear equation exactly that the most compact ones have no volume.
+    ExactFit {
+        /// The method.
+        method: &'static str,
+        /// Rows that satisfy the equation.
+        n_on: usize,
+        /// Rows there are.
+        n_rows: usize,
+        /// Variables of the equation, each with its coefficient.
+        coefficients: Vec<(String, f64)>,
+        /// What the products of coefficients and variables sum to.
+        constant: f64,
+        /// Labels of the rows that do not satisfy it.
+        off: Vec<String>,
+    },
+    /// Half or more of the values of a column are equal, so that it has no robust spread.
+    NoRobustSpread {
+        /// Each such column and its median.
+        columns: Vec<(String, f64)>,
     },
     /// Too many resamples could not be analysed, since columns did not vary in them.
     DegenerateResamples {
@@ -543,6 +563,43 @@ pub enum Error {
         chart: &'static str,
         /// The settings that it has.
         available: Vec<&'static str>,
+    },
+    /// Rows of a matrix are zero and so cannot be brought to unit length.
+    ZeroRows {
+        /// Their names.
+        rows: Vec<String>,
+    },
+    /// Columns of a matrix are combinations of one another.
+    DependentColumns {
+        /// The matrix.
+        what: &'static str,
+        /// Its rank.
+        rank: usize,
+        /// Its columns.
+        n_cols: usize,
+    },
+    /// Columns are zero and so have no direction to compare.
+    ZeroColumns {
+        /// The matrix.
+        what: &'static str,
+        /// Their names.
+        columns: Vec<String>,
+    },
+    /// An oblique rotation let components fall together from every start.
+    RotationCollapsed {
+        /// The rotation.
+        rotation: String,
+        /// The number of starts.
+        n_starts: usize,
+    },
+    /// Two matrices that are compared do not have the same rows.
+    RowNamesDiffer {
+        /// Rows of the first that the second lacks.
+        missing: Vec<String>,
+        /// Rows of the second that the first lacks.
+        extra: Vec<String>,
+        /// The first place, counted from 1, where the order differs: in the first and the second.
+        order: Option<(usize, String, String)>,
     },
     /// An iteration ended without a usable answer.
     NoConvergence {

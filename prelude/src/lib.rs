@@ -1,7 +1,9 @@
 //! What a Semiaxis cell finds preloaded: tables, matrices, multivariate statistics and exhibits.
 
 pub mod adequacy;
+pub mod comparison;
 pub mod components;
+pub mod distances;
 pub mod error;
 pub mod exhibit;
 pub mod gaps;
@@ -9,6 +11,9 @@ pub mod live;
 pub mod parallel;
 pub mod prelude;
 pub mod random;
+pub mod retention;
+pub mod robust;
+pub mod rotation;
 pub mod stability;
 pub mod table;
 pub mod transform;

@@ -6,24 +6,43 @@
 
 // From tables to statistics.
 pub use crate::adequacy::{Adequacy, MultivariateNormality, adequacy, multivariate_normality};
+pub use crate::comparison::{
+    Congruence, PrincipalAngles, Procrustes, ProcrustesOptions, ProcrustesTest,
+    ProcrustesTestOptions, Similarity, congruence, principal_angles, procrustes, procrustes_test,
+    procrustes_with,
+};
 pub use crate::components::{
     Communalities, ComponentOptions, Decomposition, FittedComponents, PrincipalComponents,
     RandomisedOptions, Reconstruction, Route, Scaling, SupplementaryColumns, SupplementaryGroups,
     principal_components, principal_components_with,
 };
+pub use crate::distances::{
+    Contributions, Distances, QRule, Standing, TSquaredAndQ, distances, distances_of,
+    t_squared_and_q,
+};
 pub use crate::error::{Error, Result};
 pub use crate::exhibit::{
-    Bundle, Chart, Content, Exhibit, NumberFormat, Reference, Table, TableColumn, biplot,
-    correlation_map, loading_plot, pairs, profiles, score_matrix, score_plot, scree, significant,
-    structure_circle, turntable, variance_shares,
+    Bundle, Chart, Content, Exhibit, Intervals, NumberFormat, Reference, Table, TableColumn,
+    Turntable, VarianceBand, biplot, contribution_plot, correlation_map, distance_plot,
+    loading_bars, loading_plot, pairs, profiles, rotation_plot, score_matrix, score_plot, scree,
+    sequence_plot, significant, structure_circle, turntable, variance_shares,
 };
 pub use crate::gaps::{
     Completed, ComponentChoice, ComponentRule, EstimatedCell, GapMethod, GapOptions,
     ProbabilisticComponents, ProbabilisticOptions, components_for_gaps, estimate_missing,
     probabilistic_components,
 };
-pub use crate::parallel::{Noise, ParallelAnalysis, ParallelOptions, parallel_analysis};
+pub use crate::parallel::{Noise, ParallelAnalysis, ParallelOptions, RootsOf, parallel_analysis};
 pub use crate::random::{Generator, random_generator, random_normal};
+pub use crate::retention::{
+    Effort, Retention, RetentionOptions, Rule, Verdict, retention, retention_with,
+};
+pub use crate::robust::{
+    RobustComponents, RobustOptions, RobustRoute, RobustScatter, robust_components, robust_scatter,
+};
+pub use crate::rotation::{
+    Rotated, RotatedComponents, Rotation, RotationOptions, rotate, rotate_with,
+};
 pub use crate::stability::{
     Alignment, AsymptoticErrors, AsymptoticOptions, Bootstrap, BootstrapOptions, LeaveOut,
     LeaveOutOptions, asymptotic_errors, bootstrap, leave_out,

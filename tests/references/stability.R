@@ -4,9 +4,10 @@
 #
 #     Rscript stability.R
 #
-# Needs the package psych. It is never run by the tests; they read the file it wrote.
+# Needs the packages psych and boot. It is never run by the tests; they read the file it wrote.
 
 suppressMessages(library(psych))
+library(boot)
 
 number <- function(x) paste(sprintf("%.17g", x), collapse = ", ")
 vector <- function(x) sprintf("[%s]", number(x))
@@ -82,12 +83,29 @@ bootstrap <- function(name, data, correlation, replicates = 20000) {
   )
 }
 
+# Intervals of the two largest variances by the package boot, with influence values by the jackknife.
+corrected <- function(name, data, correlation, replicates = 20000) {
+  fit <- function(d, i) prcomp(d[i, ], scale. = correlation)$sdev[1:2]^2
+  drawn <- boot(data, fit, R = replicates)
+  ends <- sapply(1:2, function(k) {
+    influences <- empinf(drawn, index = k, type = "jack")
+    boot.ci(drawn, type = "bca", index = k, L = influences)$bca[4:5]
+  })
+  paste0(
+    "{\"name\": \"", name, "\", \"by\": \"boot boot.ci(type = 'bca')\", \"scaling\": \"",
+    if (correlation) "correlation" else "covariance", "\", \"replicates\": ", replicates,
+    ", \"error\": ", vector(apply(drawn$t, 2, sd)), ", \"ends\": ", rows(ends), "}"
+  )
+}
+
 set.seed(20)
 cat(
   "{\"versions\": {\"R\": \"", as.character(getRversion()), "\", \"psych\": \"",
-  as.character(packageVersion("psych")), "\"}, \"adequacy\": [",
+  as.character(packageVersion("psych")), "\", \"boot\": \"",
+  as.character(packageVersion("boot")), "\"}, \"adequacy\": [",
   adequacy("USArrests", USArrests), ", ", adequacy("attitude", attitude), ", ",
   adequacy("trees", log(trees)), "], \"bootstrap\": [",
-  bootstrap("attitude", attitude, TRUE), ", ", bootstrap("USArrests", USArrests, FALSE), "]}\n",
+  bootstrap("attitude", attitude, TRUE), ", ", bootstrap("USArrests", USArrests, FALSE), "], \"corrected\": [",
+  corrected("attitude", attitude, TRUE), ", ", corrected("USArrests", USArrests, FALSE), "]}\n",
   file = "stability.json", sep = ""
 )

@@ -305,23 +305,27 @@ impl FittedComponents {
     }
 
     fn check_variables(&self, x: &DataMatrix) -> Result<()> {
-        let (wanted, found) = (self.variables(), x.variables());
-        if wanted == found {
-            return Ok(());
-        }
-        let (missing, extra) = (lacking(wanted, found), lacking(found, wanted));
-        let order = if missing.is_empty() && extra.is_empty() {
-            wanted
-                .iter()
-                .zip(found)
-                .enumerate()
-                .find(|(_, (a, b))| a != b)
-                .map(|(place, (a, b))| (place + 1, a.clone(), b.clone()))
-        } else {
-            None
-        };
-        Err(Error::VariablesDiffer { missing, extra, order })
+        same_variables(self.variables(), x.variables())
     }
+}
+
+/// Refuses rows whose variables are not those that an analysis was made with, in their order.
+pub(crate) fn same_variables(wanted: &[String], found: &[String]) -> Result<()> {
+    if wanted == found {
+        return Ok(());
+    }
+    let (missing, extra) = (lacking(wanted, found), lacking(found, wanted));
+    let order = if missing.is_empty() && extra.is_empty() {
+        wanted
+            .iter()
+            .zip(found)
+            .enumerate()
+            .find(|(_, (a, b))| a != b)
+            .map(|(place, (a, b))| (place + 1, a.clone(), b.clone()))
+    } else {
+        None
+    };
+    Err(Error::VariablesDiffer { missing, extra, order })
 }
 
 /// The names that are not among others.

@@ -53,3 +53,5 @@ pub use options::{ComponentOptions, Decomposition, RandomisedOptions, Route, Sca
 pub use randomised::Approximation;
 pub use result::{PrincipalComponents, Reconstruction};
 pub use supplementary::{SupplementaryColumns, SupplementaryGroups};
+
+pub(crate) use fitted::same_variables;

@@ -124,7 +124,7 @@ impl Standardised<'_> {
 
 /// The coordinates of rows along loadings, after centring and scaling; blocks that are not begun
 /// when `stop` holds stay zero.
-pub(super) fn project_rows(
+pub(crate) fn project_rows(
     x: &DMatrix<f64>,
     mean: &DVector<f64>,
     scale: &DVector<f64>,
@@ -182,7 +182,7 @@ pub(super) fn transposed_product(a: &DMatrix<f64>) -> DMatrix<f64> {
 }
 
 /// The product of a matrix with the transpose of another.
-pub(super) fn product(a: &DMatrix<f64>, b: &DMatrix<f64>) -> DMatrix<f64> {
+pub(crate) fn product(a: &DMatrix<f64>, b: &DMatrix<f64>) -> DMatrix<f64> {
     let mut result = DMatrix::zeros(a.nrows(), b.nrows());
     let into = view_mut(&mut result);
     matmul(into, Accum::Replace, view(a), view(b).transpose(), 1.0, PIECES);

@@ -261,7 +261,7 @@ impl fmt::Display for Error {
                 write!(f, "; accepted: {accepted}")
             }
             Error::NoSpread { columns, measure } => {
-                write!(f, "columns whose {measure} is zero: ")?;
+                write!(f, "columns without a {measure} to divide by: ")?;
                 list(f, columns, |f, (name, middle)| write!(f, "{}, about {middle}", Name(name)))?;
                 write!(f, "; leave them out, or transform the others by name with `.of([…])`")
             }
@@ -337,6 +337,22 @@ impl fmt::Display for Error {
                  {order}, so some variables can be computed from others: leave {} out",
                 order - rank
             ),
+            Error::ExactFit { method, n_on, n_rows, coefficients, constant, off } => {
+                write!(f, "{method}: {n_on} of {n_rows} rows satisfy one equation exactly: ")?;
+                list(f, coefficients, |f, (name, coefficient)| {
+                    write!(f, "{coefficient:.6} × {}", Name(name))
+                })?;
+                write!(f, " sum to {constant:.6}")?;
+                if !off.is_empty() {
+                    write!(f, "; rows that do not: {}", Names(off))?;
+                }
+                write!(f, "; leave one of these variables out, or take a larger subset")
+            }
+            Error::NoRobustSpread { columns } => {
+                write!(f, "half or more of the values of a column are equal: ")?;
+                list(f, columns, |f, (name, value)| write!(f, "{} is often {value}", Name(name)))?;
+                write!(f, "; leave it out or use the covariance")
+            }
             Error::DegenerateResamples { usable, drawn, columns } => {
                 write!(f, "only {usable} of {drawn} resamples could be analysed")?;
                 if !columns.is_empty() {
@@ -425,6 +441,44 @@ impl fmt::Display for Error {
             Error::Interrupted => write!(f, "the computation was asked to stop"),
             Error::SettingNotForChart { setting, chart, available } => {
                 write!(f, "a {chart} has no {setting}; it has {}", available.join(", "))
+            }
+            Error::ZeroRows { rows } => write!(
+                f,
+                "rows of zeros cannot be brought to unit length: {}; leave them out, or do without \
+                 Kaiser normalisation",
+                Names(rows)
+            ),
+            Error::DependentColumns { what, rank, n_cols } => write!(
+                f,
+                "{what} have {} but rank {rank}: some columns can be computed from others, so \
+                 ask for fewer components",
+                plural(*n_cols, "column")
+            ),
+            Error::ZeroColumns { what, columns } => {
+                write!(f, "columns of zeros in {what} have no direction: {}", Names(columns))
+            }
+            Error::RotationCollapsed { rotation, n_starts } => write!(
+                f,
+                "{rotation}: two components fell together from {}; use a smaller γ, 0 being usual",
+                plural(*n_starts, "start")
+            ),
+            Error::RowNamesDiffer { missing, extra, order } => {
+                write!(f, "the rows of the two matrices are not the same")?;
+                if !missing.is_empty() {
+                    write!(f, "; only in the first: {}", Names(missing))?;
+                }
+                if !extra.is_empty() {
+                    write!(f, "; only in the second: {}", Names(extra))?;
+                }
+                if let Some((place, first, second)) = order {
+                    write!(
+                        f,
+                        "; place {place} holds {} in the first and {} in the second",
+                        Name(first),
+                        Name(second)
+                    )?;
+                }
+                Ok(())
             }
             Error::NoConvergence { method } => {
                 write!(f, "{method} did not converge; please report this with the data")

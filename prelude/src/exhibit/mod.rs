@@ -23,9 +23,9 @@ mod text;
 mod tests;
 
 pub use chart::{
-    Chart, Intervals, Names, Reference, Turntable, biplot, correlation_map, loading_bars,
-    loading_plot, pairs, profiles, score_matrix, score_plot, scree, structure_circle, turntable,
-    variance_shares,
+    Chart, Intervals, Names, Reference, Turntable, VarianceBand, biplot, contribution_plot,
+    correlation_map, distance_plot, loading_bars, loading_plot, pairs, profiles, rotation_plot,
+    score_matrix, score_plot, scree, sequence_plot, structure_circle, turntable, variance_shares,
 };
 pub use numbers::{fixed, significant, stored};
 pub use tables::{NumberFormat, Table, TableColumn};

@@ -205,7 +205,7 @@ fn without_holes_every_method_has_the_axes_of_plain_components() {
         assert_relative(ppca.noise_variance(), left, 1e-9, "noise");
         // Least squares: the truncated reconstruction, here W Wᵀ = Σ λ v vᵀ.
         let limits = Limits { n_iterations: 5, tolerance: 1e-9 };
-        let fit = super::iterative::iterate(x.values(), scaling, 3, false, limits, || 0.0).unwrap();
+        let fit = iterative::iterate(x.values(), scaling, 3, false, limits, || 0.0).unwrap();
         let w = DMatrix::from_fn(8, 3, |j, s| fit.loadings(j)[s]);
         let lengths = DMatrix::from_diagonal(&(pca.variances().rows(0, 3) * share));
         let expected = axes.values() * lengths * axes.values().transpose();

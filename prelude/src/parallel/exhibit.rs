@@ -1,6 +1,6 @@
 //! A parallel analysis as a table.
 
-use super::options::Noise;
+use super::options::{Noise, RootsOf};
 use super::result::ParallelAnalysis;
 use crate::exhibit::{Bundle, Exhibit, NumberFormat, Table, TableColumn, counted, stored};
 
@@ -14,17 +14,21 @@ impl Exhibit for ParallelAnalysis {
         let verdicts = self.observed().iter().zip(self.noise_percentile().iter());
         let verdicts =
             verdicts.map(|(seen, limit)| if seen > limit { "above noise" } else { "within noise" });
+        let (heading, things) = match self.roots_of() {
+            RootsOf::Correlation => ("variance", "Components"),
+            RootsOf::ReducedCorrelation => ("root", "Roots of reduced correlations"),
+        };
         let noise = match self.noise() {
             Noise::Normal => "independent normal values",
             Noise::Permuted => "the data's own columns, each shuffled by itself",
         };
         Table::new(format!(
-            "Components against noise: {} by the percentile, {} by the mean",
+            "{things} against noise: {} by the percentile, {} by the mean",
             self.n_by_percentile(),
             self.n_by_mean()
         ))
         .column(TableColumn::counts("component", places).as_row_heads())
-        .column(TableColumn::numbers("variance", self.observed().iter().copied(), VARIANCES))
+        .column(TableColumn::numbers(heading, self.observed().iter().copied(), VARIANCES))
         .column(TableColumn::numbers("noise, mean", self.noise_mean().iter().copied(), VARIANCES))
         .column(TableColumn::numbers(
             format!("noise, percentile {percentile}"),
@@ -40,7 +44,14 @@ impl Exhibit for ParallelAnalysis {
             counted(self.n_variables(), "column"),
             self.seed()
         ))
-        .note("Variances of the correlation matrix, to 4 significant digits.")
+        .note(match self.roots_of() {
+            RootsOf::Correlation => "Variances of the correlation matrix, to 4 significant digits.",
+            RootsOf::ReducedCorrelation => {
+                "Roots of the correlation matrix with squared multiple correlations on the \
+                 diagonal (Humphreys and Ilgen 1969), to 4 significant digits; those of what \
+                 variables do not share are negative."
+            }
+        })
         .exhibit()
     }
 }

@@ -1,13 +1,13 @@
-//! Drawing tables without structure, and comparing.
+//! The roots of many tables without structure beside those of the data.
 
 use faer::dyn_stack::MemBuffer;
 use faer::linalg::matmul::triangular::{self, BlockStructure};
 use faer::{Accum, Par};
 use nalgebra::{DMatrix, DVector};
-use rand::RngExt;
-use rand_distr::{ChiSquared, Distribution, StandardNormal};
 
-use super::options::{Noise, ParallelOptions};
+use super::noise::{NoiseTable, NormalNoise, PermutedNoise};
+use super::options::{Noise, ParallelOptions, RootsOf};
+use super::reduced::{Reduction, reduced_roots};
 use super::result::ParallelAnalysis;
 use crate::components::spectrum::{roots_workspace, symmetric_roots};
 use crate::components::views::{view, view_mut};
@@ -15,7 +15,6 @@ use crate::components::{Scaling, principal_components};
 use crate::error::{Error, Result};
 use crate::live::seed;
 use crate::quantile::{ascending, deviation, mean, quantile};
-use crate::random::Generator;
 use crate::repeat::repeat;
 use crate::table::DataMatrix;
 
@@ -52,7 +51,9 @@ use crate::table::DataMatrix;
 ///
 /// Those of [`principal_components`] with [`Scaling::Correlation`]; [`Error::TooFewRows`] for
 /// fewer than three rows and [`Error::TooFewColumns`] for fewer than two columns;
-/// [`Error::OptionOutOfRange`].
+/// [`Error::WeightsNotCovered`] for rows that carry weights; [`Error::OptionOutOfRange`]. For
+/// reduced correlations, [`Error::TooFewRows`] unless there are more rows than variables, and
+/// [`Error::SingularScatter`] when some variables can be computed from others.
 pub fn parallel_analysis(x: &DataMatrix, options: ParallelOptions) -> Result<ParallelAnalysis> {
     options.check()?;
     let method = "parallel analysis";
@@ -62,27 +63,44 @@ pub fn parallel_analysis(x: &DataMatrix, options: ParallelOptions) -> Result<Par
     if x.n_cols() < 2 {
         return Err(Error::TooFewColumns { method, needed: 2, found: x.n_cols() });
     }
-    let observed = principal_components(x, Scaling::Correlation)?;
+    let pca = principal_components(x, Scaling::Correlation)?;
+    if pca.is_weighted() {
+        return Err(Error::WeightsNotCovered { method });
+    }
+    let roots_of = options.chosen_roots();
+    let observed = match roots_of {
+        RootsOf::Correlation => pca.variances().clone(),
+        RootsOf::ReducedCorrelation => {
+            if x.n_rows() <= x.n_cols() {
+                return Err(Error::TooFewRows {
+                    method: "parallel analysis of reduced correlations",
+                    needed: x.n_cols() + 1,
+                    found: x.n_rows(),
+                });
+            }
+            reduced_roots(&pca)?
+        }
+    };
     let seed = options.chosen_seed().unwrap_or_else(seed);
     let n_roots = (x.n_rows() - 1).min(x.n_cols());
     let roots = match options.chosen_noise() {
         Noise::Normal => {
             let noise = NormalNoise::new(x.n_rows(), x.n_cols());
-            roots_of(options.n_replicates(), seed, n_roots, &noise)?
+            noise_roots(options.n_replicates(), seed, n_roots, &noise, roots_of)?
         }
         Noise::Permuted => {
-            let noise = PermutedNoise::new(x, observed.mean(), observed.scale());
-            roots_of(options.n_replicates(), seed, n_roots, &noise)?
+            let noise = PermutedNoise::new(x, pca.mean(), pca.scale());
+            noise_roots(options.n_replicates(), seed, n_roots, &noise, roots_of)?
         }
     };
-    let n_places = observed.n_components();
+    let n_places = observed.len();
     let at_place = |place| ascending(roots.iter().map(|roots| roots[place]).collect());
     let places: Vec<Vec<f64>> = (0..n_places).map(at_place).collect();
     let take = |of: &dyn Fn(&[f64]) -> f64| {
         DVector::from_iterator(n_places, places.iter().map(|roots| of(roots)))
     };
     Ok(ParallelAnalysis {
-        observed: observed.variances().clone(),
+        observed,
         noise_mean: take(&mean),
         noise_percentile: take(&|roots| quantile(roots, options.chosen_percentile() / 100.0)),
         noise_deviation: take(&deviation),
@@ -93,30 +111,22 @@ pub fn parallel_analysis(x: &DataMatrix, options: ParallelOptions) -> Result<Par
     })
 }
 
-/// A kind of table without structure, as the cross-product it leads to.
-trait NoiseTable: Sync {
-    /// Rows of the factor that is drawn, and its columns.
-    fn shape(&self) -> (usize, usize);
-
-    /// Fills a factor whose columns have unit length, so that its cross-product is a correlation
-    /// matrix.
-    fn draw(&self, generator: &mut Generator, factor: &mut DMatrix<f64>);
-}
-
 /// Memory that one thread keeps from replicate to replicate.
 struct Workspace {
     factor: DMatrix<f64>,
     cross: DMatrix<f64>,
     ascending: Vec<f64>,
     scratch: MemBuffer,
+    reduced: Option<Reduction>,
 }
 
 /// The largest roots of each replicate, descending.
-fn roots_of(
+fn noise_roots(
     n_replicates: usize,
     seed: u64,
     n_roots: usize,
     noise: &impl NoiseTable,
+    roots_of: RootsOf,
 ) -> Result<Vec<Vec<f64>>> {
     let (n_rows, n_cols) = noise.shape();
     // Both cross-products have the same non-zero roots; the smaller one is decomposed.
@@ -126,9 +136,10 @@ fn roots_of(
         cross: DMatrix::zeros(order, order),
         ascending: vec![0.0; order],
         scratch: roots_workspace(order),
+        reduced: (roots_of == RootsOf::ReducedCorrelation).then(|| Reduction::new(order)),
     };
     repeat("parallel analysis", n_replicates, seed, workspace, |workspace, generator, _| {
-        let Workspace { factor, cross, ascending, scratch } = workspace;
+        let Workspace { factor, cross, ascending, scratch, reduced } = workspace;
         noise.draw(generator, factor);
         let factor = view(factor);
         let (a, b) = if n_cols <= n_rows {
@@ -147,81 +158,10 @@ fn roots_of(
             1.0,
             Par::Seq,
         );
+        if let Some(reduced) = reduced {
+            reduced.apply(cross)?;
+        }
         symmetric_roots(cross, ascending, scratch)?;
         Ok(ascending.iter().rev().take(n_roots).copied().collect())
     })
-}
-
-struct NormalNoise {
-    n_rows: usize,
-    n_cols: usize,
-    /// The squared diagonal of the factor, from its first row on.
-    diagonal: Vec<ChiSquared<f64>>,
-}
-
-impl NormalNoise {
-    fn new(n: usize, p: usize) -> Self {
-        let freedom = n - 1;
-        let n_rows = freedom.min(p);
-        let diagonal = (0..n_rows)
-            .map(|i| {
-                ChiSquared::new((freedom - i) as f64)
-                    .expect("at least one degree of freedom, since i < n − 1")
-            })
-            .collect();
-        NormalNoise { n_rows, n_cols: p, diagonal }
-    }
-}
-
-impl NoiseTable for NormalNoise {
-    fn shape(&self) -> (usize, usize) {
-        (self.n_rows, self.n_cols)
-    }
-
-    fn draw(&self, generator: &mut Generator, factor: &mut DMatrix<f64>) {
-        for (j, mut column) in factor.column_iter_mut().enumerate() {
-            let above = j.min(self.n_rows);
-            for i in 0..above {
-                column[i] = StandardNormal.sample(generator);
-            }
-            if j < self.n_rows {
-                column[j] = self.diagonal[j].sample(generator).sqrt();
-            }
-            let length = column.norm();
-            column /= length;
-        }
-    }
-}
-
-struct PermutedNoise {
-    /// The data with columns centred and of unit length.
-    unit: DMatrix<f64>,
-}
-
-impl PermutedNoise {
-    fn new(x: &DataMatrix, mean: &DVector<f64>, scale: &DVector<f64>) -> Self {
-        let mut unit = x.values().clone();
-        let root = ((x.n_rows() - 1) as f64).sqrt();
-        for (j, mut column) in unit.column_iter_mut().enumerate() {
-            column.add_scalar_mut(-mean[j]);
-            column /= scale[j] * root;
-        }
-        PermutedNoise { unit }
-    }
-}
-
-impl NoiseTable for PermutedNoise {
-    fn shape(&self) -> (usize, usize) {
-        self.unit.shape()
-    }
-
-    fn draw(&self, generator: &mut Generator, factor: &mut DMatrix<f64>) {
-        factor.copy_from(&self.unit);
-        // One column may stay as it is: only the order relative to one another matters.
-        for mut column in factor.column_iter_mut().skip(1) {
-            for last in (1..column.len()).rev() {
-                column.swap_rows(last, generator.random_range(0..=last));
-            }
-        }
-    }
 }

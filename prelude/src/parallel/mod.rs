@@ -5,11 +5,12 @@
 //! asks how many of the observed variances exceed what noise gives at the same place. Horn's rule
 //! compares with the mean over the tables, Glorfeld's with a high percentile of them.
 //!
-//! Conventions: components of the correlation matrix; variances descending; counting stops at the
+//! Conventions: roots of the correlation matrix, or of the reduced one; roots descending; counting stops at the
 //! first variance that does not exceed its threshold; percentiles interpolate linearly between
 //! order statistics (definition 7 of Hyndman and Fan). Each replicate has a generator of its own,
 //! derived from the seed and the replicate's number, so that results depend on the seed only and
-//! not on the number of threads.
+//! not on the number of threads. Rows that carry weights are refused: noise would need them too, and
+//! nothing says how.
 //!
 //! Sources: J. L. Horn (1965), "A rationale and test for the number of factors in factor
 //! analysis", Psychometrika 30, 179–185; L. W. Glorfeld (1995), "An improvement on Horn's parallel
@@ -22,10 +23,12 @@ mod result;
 
 mod exhibit;
 mod fit;
+mod noise;
+mod reduced;
 
 #[cfg(test)]
 mod tests;
 
 pub use fit::parallel_analysis;
-pub use options::{Noise, ParallelOptions};
+pub use options::{Noise, ParallelOptions, RootsOf};
 pub use result::ParallelAnalysis;

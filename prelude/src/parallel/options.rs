@@ -17,8 +17,23 @@ pub enum Noise {
     Permuted,
 }
 
+/// Which matrix has its roots compared.
+#[derive(Debug, Clone, Copy, Default, PartialEq, Eq)]
+#[non_exhaustive]
+pub enum RootsOf {
+    /// The correlation matrix: its roots are the variances of components.
+    #[default]
+    Correlation,
+    /// The reduced correlation matrix: the diagonal holds the squared multiple correlation of each
+    /// variable with all others instead of one, so that only what variables share is counted
+    /// (L. G. Humphreys and D. R. Ilgen (1969), "Note on a criterion for the number of common
+    /// factors", Educational and Psychological Measurement 29, 571–578). Some of its roots are
+    /// negative. It takes more rows than variables.
+    ReducedCorrelation,
+}
+
 /// How a parallel analysis is made. The default is 1 000 tables of normal noise, percentile 95,
-/// seeded by the session.
+/// the roots of the correlation matrix, seeded by the session.
 ///
 /// ```
 /// use semiaxis::parallel::{Noise, ParallelOptions};
@@ -31,12 +46,19 @@ pub struct ParallelOptions {
     replicates: usize,
     percentile: f64,
     noise: Noise,
+    roots_of: RootsOf,
     seed: Option<u64>,
 }
 
 impl Default for ParallelOptions {
     fn default() -> Self {
-        ParallelOptions { replicates: 1000, percentile: 95.0, noise: Noise::Normal, seed: None }
+        ParallelOptions {
+            replicates: 1000,
+            percentile: 95.0,
+            noise: Noise::Normal,
+            roots_of: RootsOf::Correlation,
+            seed: None,
+        }
     }
 }
 
@@ -64,6 +86,12 @@ impl ParallelOptions {
         self
     }
 
+    /// Which matrix has its roots compared.
+    pub fn roots_of(mut self, roots_of: RootsOf) -> Self {
+        self.roots_of = roots_of;
+        self
+    }
+
     /// The seed, instead of the session's.
     pub fn seed(mut self, seed: u64) -> Self {
         self.seed = Some(seed);
@@ -83,6 +111,11 @@ impl ParallelOptions {
     /// What the tables are made of.
     pub fn chosen_noise(&self) -> Noise {
         self.noise
+    }
+
+    /// Which matrix has its roots compared.
+    pub fn chosen_roots(&self) -> RootsOf {
+        self.roots_of
     }
 
     /// The seed, if one was given.
@@ -106,6 +139,15 @@ impl ParallelOptions {
             });
         }
         Ok(())
+    }
+}
+
+impl fmt::Display for RootsOf {
+    fn fmt(&self, f: &mut fmt::Formatter<'_>) -> fmt::Result {
+        f.write_str(match self {
+            RootsOf::Correlation => "correlation matrix",
+            RootsOf::ReducedCorrelation => "reduced correlation matrix",
+        })
     }
 }
 

@@ -2,13 +2,14 @@
 
 use nalgebra::DVector;
 
-use super::options::{Noise, ParallelOptions};
+use super::options::{Noise, ParallelOptions, RootsOf};
 
 /// Observed variances beside those of tables without structure; made by
 /// [`parallel_analysis`](super::parallel_analysis).
 ///
 /// Every vector has one entry for each component of the observed data, min(n − 1, p) or fewer
-/// where the data are rank-deficient, variances descending.
+/// where the data are rank-deficient, variances descending. For reduced correlations there are p
+/// roots, some of them negative, instead of variances.
 #[derive(Debug, Clone, PartialEq)]
 pub struct ParallelAnalysis {
     pub(super) observed: DVector<f64>,
@@ -22,7 +23,8 @@ pub struct ParallelAnalysis {
 }
 
 impl ParallelAnalysis {
-    /// The variances of the data's components (of the correlation matrix), descending.
+    /// The variances of the data's components (of the correlation matrix), or the roots of the
+    /// reduced correlation matrix, descending.
     pub fn observed(&self) -> &DVector<f64> {
         &self.observed
     }
@@ -76,6 +78,11 @@ impl ParallelAnalysis {
     /// What the tables were made of.
     pub fn noise(&self) -> Noise {
         self.options.chosen_noise()
+    }
+
+    /// Which matrix had its roots compared.
+    pub fn roots_of(&self) -> RootsOf {
+        self.options.chosen_roots()
     }
 
     /// The seed; the same seed gives the same numbers.

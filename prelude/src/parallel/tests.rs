@@ -5,7 +5,7 @@ use nalgebra::DMatrix;
 use rand_distr::{Distribution, StandardNormal};
 use rand_xoshiro::rand_core::SeedableRng;
 
-use super::{Noise, ParallelAnalysis, ParallelOptions, parallel_analysis};
+use super::{Noise, ParallelAnalysis, ParallelOptions, RootsOf, parallel_analysis};
 use crate::compare::{assert_relative, assert_zero};
 use crate::error::Error;
 use crate::random::Generator;
@@ -115,4 +115,38 @@ fn what_cannot_be_analysed_is_refused() {
             other => panic!("{other}"),
         }
     }
+}
+
+#[test]
+fn squared_multiple_correlations_replace_the_diagonal() {
+    // With two variables the squared multiple correlation of each is r², so the reduced matrix has
+    // the roots r² ± |r|; here r = 1/2 by construction.
+    let x = DMatrix::from_row_slice(3, 2, &[1.0, 1.0, 2.0, 3.0, 3.0, 2.0]);
+    let options = ParallelOptions::new().replicates(4000).roots_of(RootsOf::ReducedCorrelation);
+    let result = analyse(x, options.seed(1));
+    assert_relative(result.observed()[0], 0.75, 1e-12, "r² + |r|");
+    assert_relative(result.observed()[1], -0.25, 1e-12, "r² − |r|");
+    // Noise of ten rows: E|r| = 35/128 as above, and E r² = 1/(n − 1) = 1/9.
+    let result = analyse(noise(10, 2, 1), options.replicates(40_000).seed(2));
+    let error = result.noise_deviation()[0] / 200.0; // the root of 40 000 tables
+    let expected = 1.0 / 9.0 + 35.0 / 128.0;
+    assert_zero(result.noise_mean()[0] - expected, 4.0 * error, "mean of noise");
+    assert_eq!(result.roots_of(), RootsOf::ReducedCorrelation);
+}
+
+#[test]
+fn reduced_correlations_need_an_inverse() {
+    let options = ParallelOptions::new().roots_of(RootsOf::ReducedCorrelation).seed(1);
+    let refused = |values| {
+        parallel_analysis(&DataMatrix::from_unnamed(values).unwrap(), options).unwrap_err()
+    };
+    assert!(matches!(refused(noise(5, 5, 1)), Error::TooFewRows { needed: 6, found: 5, .. }));
+    let mut redundant = noise(20, 3, 1);
+    let sum = redundant.column(0) + redundant.column(1);
+    redundant.set_column(2, &sum);
+    assert!(matches!(refused(redundant), Error::SingularScatter { rank: 2, order: 3, .. }));
+    let weighted = DataMatrix::from_unnamed(noise(20, 3, 1)).unwrap();
+    let weighted = weighted.with_weights((0..20).map(|row| 1.0 + f64::from(row))).unwrap();
+    let refused = parallel_analysis(&weighted, ParallelOptions::new()).unwrap_err();
+    assert!(matches!(refused, Error::WeightsNotCovered { .. }));
 }

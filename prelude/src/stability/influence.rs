@@ -4,6 +4,7 @@ use nalgebra::{DMatrix, DVector};
 
 use super::refit::Refit;
 use crate::components::{PrincipalComponents, Scaling};
+use crate::live::checkpoint;
 
 /// The acceleration of the BCa intervals: a sixth of the skewness of the empirical influence
 /// values (Efron 1987, equations 6.5 and 7.3).
@@ -50,6 +51,7 @@ pub(super) fn accelerations(
     });
     let mut loadings = DVector::zeros(p * k);
     for component in 0..k {
+        checkpoint();
         let own = vectors.column(component);
         let root = roots[component];
         let mut parts =

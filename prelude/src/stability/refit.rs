@@ -12,13 +12,16 @@ use nalgebra::DMatrix;
 use super::align::{Angles, Assignment, rotated_onto};
 use super::options::Alignment;
 use crate::components::spectrum::{pairs_workspace, symmetric, symmetric_pairs};
-use crate::components::views::{view, view_mut};
+use crate::components::views::{PIECES, view, view_mut};
 use crate::components::{PrincipalComponents, Scaling};
 use crate::error::Result;
 
 /// Components beyond those followed that a refit of wide data works out, so that a component that
 /// has slipped down in the order is still found.
 const SPARE: usize = 8;
+
+/// The share of a column's sum of squares that may be taken off its cross-product: two digits.
+const MOST_TAKEN: f64 = 0.99;
 
 /// What is refitted.
 pub(super) struct Refit<'a> {
@@ -78,7 +81,7 @@ impl<'a> Refit<'a> {
         let mut cross = DMatrix::zeros(0, 0);
         if p <= n {
             cross = DMatrix::zeros(p, p);
-            lower_product(&mut cross, view(&unit).transpose(), view(&unit), Par::Seq);
+            lower_product(&mut cross, view(&unit).transpose(), view(&unit), PIECES);
         }
         let loadings = pca.loadings().values().columns(0, k).into_owned();
         Refit { pca, unit, cross, loadings, alignment }
@@ -135,15 +138,17 @@ impl<'a> Refit<'a> {
     /// The analysis without one row.
     ///
     /// With z the row's deviations from the means of all n rows, the cross-product about the means
-    /// of the others is that of all less n / (n − 1) z zᵀ.
+    /// of the others is that of all less n / (n − 1) z zᵀ. Where that takes nearly all of a
+    /// column's variation away, digits would be lost, and the others are multiplied anew.
     pub(super) fn without(&self, row: usize, workspace: &mut Workspace) -> Result<Outcome> {
-        if self.is_wide() {
+        let (n, p) = self.unit.shape();
+        let factor = n as f64 / (n - 1) as f64;
+        let share = |j: usize| factor * self.unit[(row, j)].powi(2) / self.cross[(j, j)];
+        if self.is_wide() || (0..p).any(|j| share(j) > MOST_TAKEN) {
             workspace.weights.fill(1.0);
             workspace.weights[row] = 0.0;
             return self.weighted(workspace);
         }
-        let (n, p) = self.unit.shape();
-        let factor = n as f64 / (n - 1) as f64;
         workspace.taken.clear();
         workspace.taken.extend((0..n).filter(|&other| other != row));
         for j in 0..p {

@@ -3,7 +3,10 @@
 //! A file becomes a data frame with [`read_table`], a data frame becomes a [`DataMatrix`] with
 //! [`FrameToMatrix`], and every analysis starts from the latter. Nothing is repaired silently on
 //! the way: what cannot be read as it stands is an error that says where and what would be
-//! accepted, and what is left out by choice is listed in the matrix's notes.
+//! accepted, and what is left out by choice is listed in the matrix's notes. Methods that estimate
+//! missing values start from a [`GappedMatrix`] instead. What is measured in unhandy units is
+//! [transformed](crate::transform) afterwards, and [`DataMatrix::check_columns`] tells columns that
+//! say nothing of their own.
 //!
 //! Conventions: rows are observations and columns are variables; rows are counted from 1 in
 //! messages; a missing value is a cell without content, or one that says `NA` (see

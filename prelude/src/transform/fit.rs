@@ -127,7 +127,7 @@ fn linear(x: &DataMatrix, kind: Linear) -> Result<Formula> {
         }
     };
     let flat: Vec<(String, f64)> = (0..x.n_cols())
-        .filter(|&j| !(spreads[j] > 0.0))
+        .filter(|&j| spreads[j] <= 0.0 || !spreads[j].is_finite())
         .map(|j| (x.variables()[j].clone(), middles[j]))
         .collect();
     if flat.is_empty() {

@@ -49,6 +49,10 @@ pub(super) fn estimate(
         (zero_between(slope, least, most), false)
     };
     let highest = profile.log_likelihood(exponent);
+    if !highest.is_finite() {
+        // Values so close that their logarithms are the same number.
+        return Err(Error::NoConvergence { method: "the search for an exponent" });
+    }
     let level = highest - chi_squared_quantile(0.95, 1.0) / 2.0;
     let above_level = |exponent| profile.log_likelihood(exponent) - level;
     let end =
@@ -90,8 +94,8 @@ impl<'a> Profile<'a> {
 
     /// dl / dλ = −n cov(z, dz/dλ) / var(z), with z the powers.
     fn slope(&self, exponent: f64) -> f64 {
-        let powers: Vec<f64> = self.logs.iter().map(|log| power(exponent, *log)).collect();
-        let slopes: Vec<f64> = self.logs.iter().map(|log| power_slope(exponent, *log)).collect();
+        let (powers, slopes): (Vec<f64>, Vec<f64>) =
+            self.logs.iter().map(|log| power_and_slope(exponent, *log)).unzip();
         let n = powers.len() as f64;
         -n * self.covariance(&powers, &slopes) / self.covariance(&powers, &powers)
     }
@@ -99,9 +103,12 @@ impl<'a> Profile<'a> {
     /// With divisor n.
     fn covariance(&self, a: &[f64], b: &[f64]) -> f64 {
         let (mean_a, mean_b) = (weighted_mean(a, self.weights), weighted_mean(b, self.weights));
-        let products: Vec<f64> =
-            a.iter().zip(b).map(|(a, b)| (a - mean_a) * (b - mean_b)).collect();
-        weighted_mean(&products, self.weights)
+        let products = a.iter().zip(b).map(|(a, b)| (a - mean_a) * (b - mean_b));
+        let sum: f64 = match self.weights {
+            None => products.sum(),
+            Some(weights) => products.zip(weights).map(|(product, weight)| product * weight).sum(),
+        };
+        sum / a.len() as f64
     }
 }
 
@@ -119,23 +126,31 @@ pub(super) fn power(exponent: f64, log: f64) -> f64 {
     if exponent == 0.0 { log } else { (exponent * log).exp_m1() / exponent }
 }
 
-/// The derivative of [`power`] with respect to the exponent: u² (t eᵗ − eᵗ + 1) / t², t = λu.
-fn power_slope(exponent: f64, log: f64) -> f64 {
+/// [`power`] and its derivative with respect to the exponent, u² (t eᵗ − eᵗ + 1) / t² with t = λu.
+fn power_and_slope(exponent: f64, log: f64) -> (f64, f64) {
     let t = exponent * log;
+    let less_one = t.exp_m1();
+    let power = if exponent == 0.0 { log } else { less_one / exponent };
     let ratio = if t.abs() < 1.0 {
-        // Σ_k (k + 1) / (k + 2)! tᵏ; the closed form loses its digits to cancellation near zero.
-        let (mut term, mut sum) = (0.5, 0.0);
-        for k in 0..20 {
-            let k = f64::from(k);
-            sum += term * (k + 1.0);
-            term *= t / (k + 3.0);
-        }
-        sum
+        SERIES.iter().rev().fold(0.0, |sum, coefficient| sum * t + coefficient)
     } else {
-        (t * t.exp() - t.exp_m1()) / (t * t)
+        (t * (less_one + 1.0) - less_one) / (t * t)
     };
-    log * log * ratio
+    (power, log * log * ratio)
 }
+
+/// (t eᵗ − eᵗ + 1) / t² = Σ_k (k + 1) / (k + 2)! tᵏ, to double precision for |t| < 1, where the closed
+/// form loses its digits to cancellation.
+const SERIES: [f64; 18] = {
+    let mut series = [0.0; 18];
+    let (mut k, mut factorial) = (0, 2.0);
+    while k < 18 {
+        series[k] = (k + 1) as f64 / factorial;
+        factorial *= (k + 3) as f64;
+        k += 1;
+    }
+    series
+};
 
 /// The zero of a function between two arguments at which it has different signs, to about 10⁻¹⁴, by
 /// the method of C. J. F. Ridders (1979), "A new algorithm for computing a single root of a real

@@ -209,6 +209,8 @@ fn an_exponent_at_a_bound_says_so() {
     let estimate = exponent.estimate.unwrap();
     assert_eq!((exponent.value, estimate.at_bound), (5.0, true));
     assert_eq!((estimate.lower, estimate.upper), (None, None));
+    let close = DataMatrix::from_unnamed(dmatrix![1e300; 1e300_f64.next_up(); 1e300]).unwrap();
+    assert!(matches!(close.transformed(Transform::box_cox()), Err(Error::NoConvergence { .. })));
     // Values that span hundreds of powers of ten: the search keeps powers finite.
     let x = DataMatrix::from_unnamed(dmatrix![1e-200; 1e-3; 1.0; 1e5; 1e200]).unwrap();
     let value = exponent_of(&Transform::box_cox().fit(&x).unwrap()).value;
@@ -287,6 +289,8 @@ fn columns_that_do_not_spread_are_named() {
         other => panic!("{other:?}"),
     }
     assert!(x.transformed(Transform::centre()).is_ok());
+    let wide = tiles(dmatrix![-1e308; 1.5e308]);
+    assert!(matches!(wide.transformed(Transform::unit_range()), Err(Error::NoSpread { .. })));
     let one = tiles(dmatrix![1.0]);
     assert!(matches!(one.transformed(Transform::standardise()), Err(Error::NoSpread { .. })));
     let two = tiles(dmatrix![1.0; 2.0]);

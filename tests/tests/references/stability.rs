@@ -145,6 +145,33 @@ fn resampling_by_the_statistics_language() {
     assert_eq!(n_cases, 2);
 }
 
+/// Ends of corrected intervals depend on the share of resamples below the value as well, which is
+/// known to half of 1/√N: the allowance of an uncorrected end (above) is doubled.
+#[test]
+fn corrected_intervals_by_the_statistics_language() {
+    let file = load("stability.json");
+    let mut n_cases = 0;
+    for case in file["corrected"].as_array().unwrap() {
+        let what = case["name"].as_str().unwrap();
+        let tables = file["bootstrap"].as_array().unwrap();
+        let table = tables.iter().find(|table| table["name"] == case["name"]).unwrap();
+        let replicates = case["replicates"].as_u64().unwrap() as usize;
+        let pca = principal_components(&data(table), scaling(case)).unwrap();
+        let options = BootstrapOptions::new().replicates(replicates).seed(11);
+        let spread = bootstrap(&pca, options).unwrap();
+        let bands = spread.variance_spread().bca();
+        let (error, ends) = (numbers(&case["error"]), matrix(&case["ends"]));
+        let unit = 5.0 * (2.0 / replicates as f64).sqrt();
+        for k in 0..2 {
+            let allowed = 2.0 * 2.7 * unit * error[k];
+            assert_zero(bands.low()[k] - ends[(0, k)], allowed, &format!("{what} {k}, low"));
+            assert_zero(bands.high()[k] - ends[(1, k)], allowed, &format!("{what} {k}, high"));
+        }
+        n_cases += 1;
+    }
+    assert_eq!(n_cases, 2);
+}
+
 fn check_spread(
     [mean, error]: [&[f64]; 2],
     [low, high]: [&[f64]; 2],

@@ -162,8 +162,8 @@ fn check_orthonormal(fields: &Fields<'_>, loadings: &DMatrix<f64>) -> Result<()>
     for k in 0..products.ncols() {
         products[(k, k)] -= 1.0;
     }
-    // Written so that NaN, from products that overflow, does not pass.
-    match products.iter().find(|product| !(product.abs() <= CLOSE)) {
+    // NaN, from products that overflow, is off as well.
+    match products.iter().find(|product| product.is_nan() || product.abs() > CLOSE) {
         None => Ok(()),
         Some(off) => Err(fields.fault(
             "loadings",

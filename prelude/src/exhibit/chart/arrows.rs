@@ -50,6 +50,17 @@ impl Arrows {
         Arrows { components, tips, names, threshold, measure: Measure::Loading }
     }
 
+    /// Correlations of variables with two components, counted from 1.
+    pub fn of_correlations(
+        components: (usize, usize),
+        tips: Vec<(f64, f64)>,
+        names: Vec<String>,
+    ) -> Self {
+        let components = (Some(components.0), Some(components.1));
+        Arrows { components, tips, names, threshold: 0.0, measure: Measure::Loading }
+            .as_correlations()
+    }
+
     /// Takes the lengths as correlations; those that describe less than half of their variable's
     /// variance are small.
     pub fn as_correlations(self) -> Self {

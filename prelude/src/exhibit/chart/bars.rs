@@ -91,7 +91,7 @@ impl Picture for Bars {
     fn draw(&self, settings: &Settings) -> Result<Drawing> {
         let source = &self.source;
         let n_panels = self.n_panels(settings);
-        let names = settings.variable_names(&source.variables);
+        let names = settings.names_or(&source.variables);
         let shown = shown(&source.loadings, n_panels);
         let threshold = 1.0 / (source.variables.len() as f64).sqrt();
         let words = words(source, &names, n_panels);

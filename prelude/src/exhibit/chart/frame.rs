@@ -146,7 +146,9 @@ impl Frame {
                 if level {
                     push_text(svg, (x, y), "middle", name);
                 } else {
-                    push_slanted(svg, (x + 4.0, y - 3.0), name);
+                    // What stands aslant under the first places must not leave the card.
+                    let most = SLANTED_MOST.min((x - 8.0) * std::f64::consts::SQRT_2);
+                    push_slanted(svg, (x + 4.0, y - 3.0), name, most);
                 }
             }
         });
@@ -166,14 +168,14 @@ fn slant(length: f64) -> f64 {
     length * std::f64::consts::FRAC_1_SQRT_2
 }
 
-fn push_slanted(svg: &mut Svg, (x, y): (f64, f64), text: &str) {
+fn push_slanted(svg: &mut Svg, (x, y): (f64, f64), text: &str, most: f64) {
     let turn = format!("rotate(-45 {x:.1} {y:.1})");
     svg.element("text")
         .at("x", x)
         .at("y", y)
         .with("text-anchor", "end")
         .with("transform", &turn)
-        .text(&fitted(text, TICK_SIZE, Weight::Regular, SLANTED_MOST));
+        .text(&fitted(text, TICK_SIZE, Weight::Regular, most));
 }
 
 pub(super) fn push_text(svg: &mut Svg, (x, y): (f64, f64), anchor: &str, text: &str) {

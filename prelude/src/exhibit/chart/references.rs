@@ -4,6 +4,7 @@ use super::palette::{GROUPS, INK_SOFT};
 use super::settings::{Reference, Settings};
 use super::source::Source;
 use crate::exhibit::numbers::{grouped, stored};
+use crate::parallel::ParallelAnalysis;
 
 /// A reference as it is drawn: one value for each component.
 pub(super) struct Line {
@@ -13,39 +14,99 @@ pub(super) struct Line {
     pub dashes: &'static str,
 }
 
-/// The references that were asked for, or the mean variance.
+/// An interval for each of the leading variances, as it is drawn.
+pub(super) struct Band {
+    pub words: String,
+    pub ends: Vec<(f64, f64)>,
+}
+
+/// The lines that were asked for, or the mean variance when nothing was.
 pub(super) fn lines(source: &Source, settings: &Settings) -> Vec<Line> {
     let usual = [Reference::MeanVariance];
     let references = if settings.references.is_empty() { &usual[..] } else { &settings.references };
-    references.iter().map(|reference| line(reference, source)).collect()
+    references.iter().flat_map(|reference| lines_of(reference, source)).collect()
 }
 
-fn line(reference: &Reference, source: &Source) -> Line {
+/// The intervals that were asked for.
+pub(super) fn bands(settings: &Settings) -> Vec<Band> {
+    let band = |low: &[f64], high: &[f64], words: String| Band {
+        words,
+        ends: low.iter().copied().zip(high.iter().copied()).collect(),
+    };
+    settings
+        .references
+        .iter()
+        .filter_map(|reference| match reference {
+            Reference::Band(given) => Some(band(&given.low, &given.high, given.words.clone())),
+            Reference::Rules(retention) => retention.variance_bands().map(|bands| {
+                let words = format!(
+                    "the middle {} % of {} bootstrap samples",
+                    stored(100.0 * bands.coverage(), 4),
+                    grouped(bands.n_replicates())
+                );
+                band(bands.lower().as_slice(), bands.upper().as_slice(), words)
+            }),
+            _ => None,
+        })
+        .collect()
+}
+
+/// What a scree says about rules: how many of them keep how many components.
+pub(super) fn notes(settings: &Settings) -> Vec<String> {
+    let note = |reference: &Reference| {
+        let Reference::Rules(retention) = reference else { return None };
+        let counts: Vec<String> = retention
+            .agreement()
+            .iter()
+            .map(|agreed| format!("{} ({})", agreed.n_components(), agreed.rules().len()))
+            .collect();
+        Some(format!(
+            "Components kept, and by how many of the {} rules that apply: {}. No rule is the \
+             truth.",
+            retention.n_applying(),
+            counts.join(", ")
+        ))
+    };
+    settings.references.iter().filter_map(note).collect()
+}
+
+fn lines_of(reference: &Reference, source: &Source) -> Vec<Line> {
     let n_variables = source.variables.len();
     let mean = source.total_variance / n_variables as f64;
     match reference {
-        Reference::MeanVariance => Line {
+        Reference::MeanVariance => vec![Line {
             name: format!("mean variance of the variables: {}", stored(mean, 4)),
             values: vec![mean; source.n_components()],
             color: INK_SOFT,
             dashes: "7 4",
-        },
-        Reference::BrokenStick => Line {
+        }],
+        Reference::BrokenStick => vec![Line {
             name: "broken stick".to_owned(),
             values: broken_stick(n_variables, source.n_components(), source.total_variance),
             color: GROUPS[3],
             dashes: "2 3",
-        },
-        Reference::Noise(analysis) => Line {
-            name: format!(
-                "noise: percentile {} of {} tables",
-                stored(analysis.percentile(), 4),
-                grouped(analysis.n_replicates())
-            ),
-            values: analysis.noise_percentile().iter().copied().collect(),
-            color: GROUPS[2],
-            dashes: "10 3 2 3",
-        },
+        }],
+        Reference::Noise(analysis) => vec![noise(analysis)],
+        Reference::Rules(retention) => {
+            let mut lines = lines_of(&Reference::MeanVariance, source);
+            lines.extend(lines_of(&Reference::BrokenStick, source));
+            lines.extend(retention.normal_noise().map(noise));
+            lines
+        }
+        Reference::Band(_) => Vec::new(),
+    }
+}
+
+fn noise(analysis: &ParallelAnalysis) -> Line {
+    Line {
+        name: format!(
+            "noise: percentile {} of {} tables",
+            stored(analysis.percentile(), 4),
+            grouped(analysis.n_replicates())
+        ),
+        values: analysis.noise_percentile().iter().copied().collect(),
+        color: GROUPS[2],
+        dashes: "10 3 2 3",
     }
 }
 

@@ -11,7 +11,7 @@ use super::measure::{Weight, width};
 use super::palette::{CARD, FAINT, GRID, GROUPS, INK, INK_SOFT, SEGMENTS};
 use super::picture::{Drawing, Picture, number, numbers};
 use super::plane::axis_title;
-use super::references::{Line, lines};
+use super::references::{Band, Line, bands, lines, notes};
 use super::settings::{Setting, Settings};
 use super::source::Source;
 use super::svg::{Svg, tenth};
@@ -78,9 +78,11 @@ impl Picture for Scree {
 
 fn draw(source: &Source, settings: &Settings) -> Drawing {
     let lines = lines(source, settings);
+    let bands = bands(settings);
     let n_shown = source.n_components().min(MOST_SHOWN);
     let words = words(source, &lines);
-    let mut notes = Vec::new();
+    let mut notes = notes(settings);
+    notes.extend(bands.iter().map(|band| format!("Whiskers: {}.", band.words)));
     if n_shown < source.n_components() {
         let rest: f64 = (n_shown + 1..=source.n_components()).map(|k| source.share(k)).sum();
         notes.push(format!(
@@ -119,21 +121,29 @@ fn draw(source: &Source, settings: &Settings) -> Drawing {
             right: room.right - 4.0,
             bottom: room.bottom - BELOW_STEMS,
         };
-        draw_stems(svg, area, source, &lines, n_shown);
+        draw_stems(svg, area, source, (&lines, &bands), n_shown);
         let strip =
             Area { top: room.bottom - STRIP_HEIGHT - 22.0, bottom: room.bottom - 22.0, ..area };
         draw_strip(svg, strip, source);
     });
-    Drawing { svg, words, numbers: behind(source, &lines) }
+    Drawing { svg, words, numbers: behind(source, &lines, &bands) }
 }
 
-fn draw_stems(svg: &mut Svg, area: Area, source: &Source, lines: &[Line], n_shown: usize) {
+fn draw_stems(
+    svg: &mut Svg,
+    area: Area,
+    source: &Source,
+    (lines, bands): (&[Line], &[Band]),
+    n_shown: usize,
+) {
     let shown = &source.variances[..n_shown];
     let highest = lines
         .iter()
         .flat_map(|line| line.values.iter().take(n_shown))
         .chain(shown)
         .copied()
+        .chain(bands.iter().flat_map(|band| band.ends.iter().take(n_shown).map(|ends| ends.1)))
+        .filter(|value| value.is_finite())
         .fold(0.0, f64::max)
         * 1.04;
     let ticks = Ticks::within(0.0, highest, (area.height() / 48.0).clamp(2.0, 8.0) as usize);
@@ -187,8 +197,42 @@ fn draw_stems(svg: &mut Svg, area: Area, source: &Source, lines: &[Line], n_show
         }
         push_path(svg, &points, line.color, "2", line.dashes);
     }
+    for band in bands {
+        draw_band(svg, band, n_shown, (highest, area.bottom), (&x_of, &y_of));
+    }
     draw_dots(svg, area, source, &dots);
     draw_shares(svg, area, source, &dots);
+}
+
+/// A whisker behind each stem, a little to its left, so that the stem does not hide it.
+fn draw_band(
+    svg: &mut Svg,
+    band: &Band,
+    n_shown: usize,
+    (highest, bottom): (f64, f64),
+    (x_of, y_of): (&dyn Fn(usize) -> f64, &dyn Fn(f64) -> f64),
+) {
+    let mut path = String::new();
+    for (place, (low, high)) in band.ends.iter().take(n_shown).enumerate() {
+        let x = x_of(place) - 5.5;
+        let (top, foot) = (y_of(high.min(highest)), y_of(low.max(0.0)).min(bottom));
+        path.push_str(&format!(
+            "M{} {}h6M{} {}V{}M{} {}h6",
+            tenth(x - 3.0),
+            tenth(top),
+            tenth(x),
+            tenth(top),
+            tenth(foot),
+            tenth(x - 3.0),
+            tenth(foot)
+        ));
+    }
+    let whiskers = svg.element("path").with("class", "whiskers").with("d", &path);
+    whiskers
+        .with("fill", "none")
+        .with("stroke", INK)
+        .with("stroke-width", "1.2")
+        .around(|svg| svg.element("title").text(&band.words));
 }
 
 fn draw_dots(svg: &mut Svg, area: Area, source: &Source, dots: &[(f64, f64)]) {
@@ -338,7 +382,7 @@ fn push_path(svg: &mut Svg, points: &[(f64, f64)], color: &str, thickness: &str,
     if dashes.is_empty() { line.done() } else { line.with("stroke-dasharray", dashes).done() }
 }
 
-fn behind(source: &Source, lines: &[Line]) -> Value {
+fn behind(source: &Source, lines: &[Line], bands: &[Band]) -> Value {
     let references: Vec<Value> = lines
         .iter()
         .map(|line| json!({ "name": line.name, "values": numbers(line.values.iter().copied()) }))
@@ -347,6 +391,16 @@ fn behind(source: &Source, lines: &[Line]) -> Value {
         "variances": numbers(source.variances.iter().copied()),
         "total variance": number(source.total_variance),
         "references": references,
+        "intervals": bands
+            .iter()
+            .map(|band| {
+                json!({
+                    "name": band.words,
+                    "low": numbers(band.ends.iter().map(|ends| ends.0)),
+                    "high": numbers(band.ends.iter().map(|ends| ends.1)),
+                })
+            })
+            .collect::<Vec<Value>>(),
     })
 }
 

@@ -8,7 +8,10 @@ use super::picture::Picture;
 use super::source::Source;
 use crate::components::Scaling;
 use crate::error::{Error, Result};
+use crate::exhibit::numbers::{grouped, stored};
 use crate::parallel::ParallelAnalysis;
+use crate::retention::Retention;
+use crate::stability::{AsymptoticErrors, Bootstrap};
 
 /// As many groups have a colour and shape of their own.
 pub(super) const MOST_GROUPS: usize = 64;
@@ -31,6 +34,38 @@ pub enum Reference {
     BrokenStick,
     /// The variances of tables without structure, from a parallel analysis: their percentile.
     Noise(Box<ParallelAnalysis>),
+    /// The thresholds of the rules of a [`Retention`] that can be drawn beside variances, and how
+    /// many components each number of rules keeps.
+    Rules(Box<Retention>),
+    /// An interval for each variance.
+    Band(VarianceBand),
+}
+
+/// An interval for each of the leading variances, to be drawn in a scree.
+#[derive(Debug, Clone, PartialEq)]
+pub struct VarianceBand {
+    pub(super) low: Vec<f64>,
+    pub(super) high: Vec<f64>,
+    pub(super) words: String,
+}
+
+impl VarianceBand {
+    /// Joins lower and upper ends, the first component's first, and says in words what the
+    /// intervals are ("95 % of 2000 bootstrap samples").
+    ///
+    /// # Errors
+    ///
+    /// [`Error::ShapeMismatch`] when there are not as many upper as lower ends.
+    pub fn new(
+        low: impl IntoIterator<Item = f64>,
+        high: impl IntoIterator<Item = f64>,
+        words: impl Into<String>,
+    ) -> Result<Self> {
+        let (low, high): (Vec<f64>, Vec<f64>) =
+            (low.into_iter().collect(), high.into_iter().collect());
+        check_count("upper ends of variances", low.len(), high.len())?;
+        Ok(VarianceBand { low, high, words: words.into() })
+    }
 }
 
 impl From<&ParallelAnalysis> for Reference {
@@ -72,6 +107,73 @@ impl Setting {
             Setting::Hulls => "hulls",
         }
     }
+}
+
+impl From<&Retention> for Reference {
+    fn from(retention: &Retention) -> Self {
+        Reference::Rules(Box::new(retention.clone()))
+    }
+}
+
+impl From<VarianceBand> for Reference {
+    fn from(band: VarianceBand) -> Self {
+        Reference::Band(band)
+    }
+}
+
+impl From<&Bootstrap> for Reference {
+    fn from(bootstrap: &Bootstrap) -> Self {
+        let bands = bootstrap.variance_spread().percentile();
+        Reference::Band(VarianceBand {
+            low: bands.low().iter().copied().collect(),
+            high: bands.high().iter().copied().collect(),
+            words: bootstrap_words(bootstrap),
+        })
+    }
+}
+
+impl From<&AsymptoticErrors> for Reference {
+    fn from(errors: &AsymptoticErrors) -> Self {
+        let bands = errors.variance_bands();
+        Reference::Band(VarianceBand {
+            low: bands.low().iter().copied().collect(),
+            high: bands.high().iter().copied().collect(),
+            words: asymptotic_words(errors),
+        })
+    }
+}
+
+impl From<&Bootstrap> for Intervals {
+    fn from(bootstrap: &Bootstrap) -> Self {
+        Intervals {
+            low: bootstrap.loadings_low().into_values(),
+            high: bootstrap.loadings_high().into_values(),
+            words: format!("Whiskers: {}.", bootstrap_words(bootstrap)),
+        }
+    }
+}
+
+impl From<&AsymptoticErrors> for Intervals {
+    fn from(errors: &AsymptoticErrors) -> Self {
+        Intervals {
+            low: errors.loadings_low().into_values(),
+            high: errors.loadings_high().into_values(),
+            words: format!("Whiskers: {}.", asymptotic_words(errors)),
+        }
+    }
+}
+
+fn bootstrap_words(bootstrap: &Bootstrap) -> String {
+    format!(
+        "the middle {} % of {} bootstrap samples, seed {}",
+        stored(100.0 * bootstrap.confidence(), 4),
+        grouped(bootstrap.n_replicates()),
+        bootstrap.seed()
+    )
+}
+
+fn asymptotic_words(errors: &AsymptoticErrors) -> String {
+    format!("{} % intervals by theory for normal rows", stored(100.0 * errors.confidence(), 4))
 }
 
 /// What a user set; checked before anything is drawn.
@@ -232,8 +334,8 @@ impl Settings {
         self.references.iter().try_for_each(|reference| check_reference(reference, source))
     }
 
-    /// The names of the variables: those that were set, or their own.
-    pub fn variable_names(&self, own: &[String]) -> Vec<String> {
+    /// The names of units or variables: those that were set, or their own.
+    pub fn names_or(&self, own: &[String]) -> Vec<String> {
         match &self.labels {
             Some(labels) => labels.iter().map(|label| label.clone().unwrap_or_default()).collect(),
             None => own.to_vec(),
@@ -246,19 +348,33 @@ impl Settings {
     }
 }
 
-// Noise is compared with the components of a correlation matrix of the same shape only.
+// Noise and rules are those of an analysis of the same shape and scaling only.
 fn check_reference(reference: &Reference, source: &Source) -> Result<()> {
-    let Reference::Noise(analysis) = reference else { return Ok(()) };
-    if source.scaling != Scaling::Correlation {
-        return Err(Error::SettingNotForChart {
-            setting: "reference to a parallel analysis",
-            chart: "scree of a covariance matrix",
-            available: vec!["mean variance", "broken stick"],
-        });
-    }
-    check_count("rows behind the parallel analysis", source.n_rows, analysis.n_rows())?;
-    let n_variables = source.variables.len();
-    check_count("variables behind the parallel analysis", n_variables, analysis.n_variables())
+    let (n_rows, n_variables) = match reference {
+        Reference::MeanVariance | Reference::BrokenStick | Reference::Band(_) => return Ok(()),
+        Reference::Noise(analysis) => {
+            if source.scaling != Scaling::Correlation {
+                return Err(Error::SettingNotForChart {
+                    setting: "reference to a parallel analysis",
+                    chart: "scree of a covariance matrix",
+                    available: vec!["mean variance", "broken stick"],
+                });
+            }
+            (analysis.n_rows(), analysis.n_variables())
+        }
+        Reference::Rules(retention) => {
+            if retention.scaling() != source.scaling {
+                return Err(Error::SettingNotForChart {
+                    setting: "reference to rules for another scaling",
+                    chart: "scree",
+                    available: vec!["the rules of its own analysis"],
+                });
+            }
+            (retention.n_rows(), retention.n_variables())
+        }
+    };
+    check_count("rows behind the reference", source.n_rows, n_rows)?;
+    check_count("variables behind the reference", source.variables.len(), n_variables)
 }
 
 fn check_count(what: &'static str, expected: usize, found: usize) -> Result<()> {

@@ -88,7 +88,7 @@ impl Picture for Shares {
     fn draw(&self, settings: &Settings) -> Result<Drawing> {
         let source = &self.source;
         let n = self.first(settings);
-        let names = settings.variable_names(&source.variables);
+        let names = settings.names_or(&source.variables);
         let mut order: Vec<usize> = (0..names.len()).collect();
         order.sort_by(|&a, &b| self.held(b, n).total_cmp(&self.held(a, n)).then(a.cmp(&b)));
         let all = order.clone();
