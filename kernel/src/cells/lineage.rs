@@ -31,6 +31,8 @@ struct Known {
     run: Run,
     /// What it was made from, as it was then.
     made_from: BTreeMap<String, Version>,
+    /// For an item, the names in its text: what they stand for is looked up when it is used.
+    mentions: BTreeSet<String>,
 }
 
 /// One run of a cell.
@@ -40,13 +42,22 @@ struct Run {
     text: Version,
 }
 
+/// The text of an item.
+#[derive(Debug, Clone, Default)]
+pub struct ItemText {
+    /// Without comments and layout.
+    pub tokens: String,
+    /// Every name in it.
+    pub mentions: BTreeSet<String>,
+}
+
 /// What a run used and what it made.
 #[derive(Debug, Default)]
 pub struct Traffic {
     /// Names of earlier cells that it used.
     pub uses: BTreeSet<String>,
-    /// Items that it defined, with their text.
-    pub items: BTreeMap<String, String>,
+    /// Items that it defined.
+    pub items: BTreeMap<String, ItemText>,
     /// Variables that it declared.
     pub declares: BTreeSet<String>,
     /// Variables that it took and changed.
@@ -65,6 +76,8 @@ impl Traffic {
             }
         }
         traffic.items.extend(plan.defines.iter().cloned());
+        // An item that is as it was is lent by the crate of the earlier run, and is the cell's own.
+        traffic.uses.retain(|name| !traffic.items.contains_key(name));
         traffic.declares.extend(plan.declares.iter().map(|declared| declared.name.clone()));
         traffic.changes.extend(plan.changes.iter().cloned());
         traffic
@@ -178,10 +191,13 @@ impl Lineage {
         let rests_on = *hasher.finalize().as_bytes();
         let mut known = |name: &String, version: Version, made_from: BTreeMap<String, Version>| {
             let cell_id = origin.cell_id.clone();
-            self.names.insert(name.clone(), Known { version, cell_id, run, made_from });
+            let mentions = traffic.items.get(name).map(|item| item.mentions.clone());
+            let mentions = mentions.unwrap_or_default();
+            self.names.insert(name.clone(), Known { version, cell_id, run, made_from, mentions });
         };
-        for (name, tokens) in &traffic.items {
-            known(name, *blake3::hash(tokens.as_bytes()).as_bytes(), BTreeMap::new());
+        for (name, item) in &traffic.items {
+            // What an item calls is what that is now, so it is made from nothing that could be outdated.
+            known(name, *blake3::hash(item.tokens.as_bytes()).as_bytes(), BTreeMap::new());
         }
         let declared = traffic.declares.iter().filter(|_| done);
         for name in declared.chain(&traffic.changes) {
@@ -208,13 +224,21 @@ impl Lineage {
         self.newest.insert(id.clone(), run);
     }
 
-    /// The versions of what a run used.
+    /// The versions of what a run used, of what the items among them call, and so on.
     fn sources(&self, traffic: &Traffic) -> BTreeMap<String, Version> {
-        let known = traffic
-            .uses
-            .iter()
-            .filter_map(|name| Some((name.clone(), self.names.get(name)?.version)));
-        known.collect()
+        let own = traffic.items.values().flat_map(|item| &item.mentions);
+        let mut wanted: Vec<&String> = traffic.uses.iter().chain(own).collect();
+        let mut sources = BTreeMap::new();
+        while let Some(name) = wanted.pop() {
+            if traffic.items.contains_key(name) || sources.contains_key(name) {
+                continue;
+            }
+            if let Some(known) = self.names.get(name) {
+                sources.insert(name.clone(), known.version);
+                wanted.extend(&known.mentions);
+            }
+        }
+        sources
     }
 
     /// Forgets variables that are gone with their worker.
@@ -305,6 +329,34 @@ mod tests {
         assert_eq!(session.run("b", "v.push(1);", "v", "", "v"), note);
         session.run("a", "let mut v = vec![];", "", "v", "");
         assert_eq!(session.run("b", "v.push(1);", "v", "", "v"), "");
+    }
+
+    #[test]
+    fn a_value_is_outdated_by_whatever_its_functions_call() {
+        let mut lineage = Lineage::default();
+        let origin = |id: &str| Origin { cell_id: Some(id.to_owned()), deleted: Vec::new() };
+        let item = |name: &str, tokens: &str, mentions: &str| Traffic {
+            items: BTreeMap::from([(
+                name.to_owned(),
+                ItemText { tokens: tokens.to_owned(), mentions: set(mentions) },
+            )]),
+            ..Traffic::default()
+        };
+        let facts = Facts::default();
+        lineage.enter(1, "g", &origin("g"), &item("g", "fn g 1", "g"), &facts, true);
+        lineage.enter(2, "f", &origin("f"), &item("f", "fn f g", "f g"), &facts, true);
+        let makes_y = Traffic { uses: set("f"), declares: set("y"), ..Traffic::default() };
+        lineage.enter(3, "y", &origin("y"), &makes_y, &facts, true);
+        // Only its layout was edited.
+        lineage.enter(4, "g ", &origin("g"), &item("g", "fn g 1", "g"), &facts, true);
+        assert!(lineage.outdated(&set("f y"), &origin("z")).is_empty());
+        lineage.enter(5, "g2", &origin("g"), &item("g", "fn g 2", "g"), &facts, true);
+        assert!(lineage.outdated(&set("f"), &origin("z")).is_empty(), "it calls the new one");
+        let notes = lineage.outdated(&set("y"), &origin("z"));
+        assert_eq!(
+            notes,
+            ["uses `y`, which cell [3] made from an earlier `g` than that of cell [5]"]
+        );
     }
 
     #[test]

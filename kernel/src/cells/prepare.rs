@@ -14,6 +14,7 @@ use super::engine::Engine;
 use super::generate::{self, NAME_HERE, Plan, Without};
 use super::header;
 use super::homes;
+use super::lineage::ItemText;
 use super::parse::{self, Declared, Parsed, Statement};
 use super::rustc::{Answer, Call};
 use super::source::{CellText, Generated};
@@ -56,8 +57,8 @@ pub struct OwnedPlan {
     pub takes: Vec<String>,
     /// Those whose type goes by a new name.
     pub relabelled: Vec<String>,
-    /// Names of all items in its text, those that are as they were included, with their text.
-    pub defines: Vec<(String, String)>,
+    /// All items in its text, those that are as they were included.
+    pub defines: Vec<(String, ItemText)>,
     /// Variables that it takes and changes, as far as its text shows it.
     pub changes: Vec<String>,
     /// Variables that it declares.
@@ -310,8 +311,12 @@ fn owned(plan: Plan<'_>) -> OwnedPlan {
         plan.parsed.statements.iter().chain(&plan.parsed.tail).flat_map(|s| &s.changes).collect();
     let changes = plan.takes.iter().filter(|(name, v)| v.mutable && changed.contains(name));
     let items = plan.parsed.items.iter();
-    let defines = items
-        .flat_map(|item| item.defines.iter().map(|(_, name)| (name.clone(), item.tokens.clone())));
+    let defines = items.flat_map(|item| {
+        item.defines.iter().map(|(_, name)| {
+            let text = ItemText { tokens: item.tokens.clone(), mentions: item.mentions.clone() };
+            (name.clone(), text)
+        })
+    });
     OwnedPlan {
         crates,
         defines: defines.collect(),
