@@ -49,7 +49,8 @@ fn what_was_written_is_read_back_by_its_owner_only() {
     assert_eq!(session.cells().count(), 3);
     assert_eq!(session.cells().nth(1).unwrap().1.source, "x2 <\u{e9}>\n");
     assert!(
-        list(&[session.clone()]).contains("aa11") && show(&session).contains("    x3 <\u{e9}>")
+        list(std::slice::from_ref(&session)).contains("aa11")
+            && show(&session).contains("    x3 <\u{e9}>")
     );
     assert_eq!(json_lines(&session).lines().count(), 4);
     assert_eq!(find(&folder, "last").unwrap().id, "aa11");
@@ -145,7 +146,7 @@ fn a_clock_that_was_set_back_is_told_and_the_order_stays() {
     };
     assert!(!session.clock_went_back());
     session.entries[2].at = "1999-01-01T00:00:00.000Z".to_owned();
-    assert!(list(&[session.clone()]).contains("the clock was set back"));
+    assert!(list(std::slice::from_ref(&session)).contains("the clock was set back"));
     let counts: Vec<u32> = session.cells().map(|(_, cell)| cell.count).collect();
     assert_eq!(counts, [1, 2, 3]);
 }

@@ -46,7 +46,7 @@ fn grouped(count: usize) -> String {
     let digits = count.to_string();
     let mut out = String::new();
     for (place, digit) in digits.chars().enumerate() {
-        if place > 0 && (digits.len() - place) % 3 == 0 && digits.len() > 4 {
+        if place > 0 && (digits.len() - place).is_multiple_of(3) && digits.len() > 4 {
             out.push('\u{202f}');
         }
         out.push(digit);

@@ -140,7 +140,7 @@ fn a_row_that_holds_nearly_all_variation_can_be_left_out() {
 
 #[test]
 fn angles_of_planes_that_were_built() {
-    for angle in [1e-9_f64, 1e-4, 0.3, 0.785, 0.8, 1.2, 1.570_796] {
+    for angle in [1e-9_f64, 1e-4, 0.3, 0.785, 0.8, 1.2, 1.57] {
         let a = dmatrix![1.0, 0.0; 0.0, 1.0; 0.0, 0.0; 0.0, 0.0];
         let b = dmatrix![
             angle.cos(), 0.0; 0.0, (0.5 * angle).cos(); angle.sin(), 0.0; 0.0, (0.5 * angle).sin()
@@ -255,9 +255,8 @@ fn intervals_cover_the_population_as_often_as_they_say() {
             let errors = asymptotic_errors(&pca, AsymptoticOptions::new()).unwrap();
             let bands = errors.variance_bands();
             let (low, high) = (errors.loadings_low(), errors.loadings_high());
-            for k in 0..p {
-                roots_held +=
-                    usize::from(bands.low()[k] <= values[k] && values[k] <= bands.high()[k]);
+            for (k, value) in values.iter().enumerate().take(p) {
+                roots_held += usize::from(bands.low()[k] <= *value && *value <= bands.high()[k]);
                 let truth = vectors.column(k);
                 let sign = truth.dot(&pca.loadings().values().column(k)).signum();
                 for j in 0..p {

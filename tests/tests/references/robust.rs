@@ -105,7 +105,7 @@ fn no_subset_of_a_third_program_is_tighter() {
         let (n, p) = (x.n_rows(), x.n_cols());
         let h = case["h"].as_u64().unwrap() as usize;
         // That program takes ⌊share n⌋ rows; ask for the share that gives as many.
-        let m = (n + p + 1) / 2;
+        let m = (n + p).div_ceil(2);
         let share = (h + n - 2 * m) as f64 / (2 * (n - m)) as f64;
         let scatter = robust_scatter(&x, RobustOptions::new().share(share).seed(2)).unwrap();
         assert_eq!(scatter.subset_size(), h);
