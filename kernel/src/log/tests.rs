@@ -49,7 +49,8 @@ fn what_was_written_is_read_back_by_its_owner_only() {
     assert_eq!(session.cells().count(), 3);
     assert_eq!(session.cells().nth(1).unwrap().1.source, "x2 <\u{e9}>\n");
     assert!(
-        list(&[session.clone()]).contains("aa11") && show(&session).contains("    x3 <\u{e9}>")
+        list(std::slice::from_ref(&session)).contains("aa11")
+            && show(&session).contains("    x3 <\u{e9}>")
     );
     assert_eq!(json_lines(&session).lines().count(), 4);
     assert_eq!(find(&folder, "last").unwrap().id, "aa11");
