@@ -95,8 +95,8 @@ impl TSquaredRule {
 impl fmt::Display for TSquaredRule {
     fn fmt(&self, f: &mut fmt::Formatter<'_>) -> fmt::Result {
         f.write_str(match self {
-            TSquaredRule::Beta => "beta law, for rows of the fitted table",
-            TSquaredRule::F => "F law, for new rows",
+            TSquaredRule::Beta => "beta law, fitted rows",
+            TSquaredRule::F => "F law, new rows",
         })
     }
 }

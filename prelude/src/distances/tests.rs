@@ -286,7 +286,7 @@ fn exhibits_say_what_limits_are_not() {
     let plain = statistics.exhibit().text("text/plain").unwrap().to_owned();
     assert!(plain.contains("Jackson and Mudholkar") && plain.contains("beta law"), "{plain}");
     let new = statistics.of(pca.data()).unwrap().exhibit();
-    assert!(new.text("text/plain").unwrap().contains("F law, for new rows"));
+    assert!(new.text("text/plain").unwrap().contains("F law, new rows"));
 }
 
 #[test]

@@ -153,10 +153,7 @@ pub(super) fn against_mean(
     let bands = bands.as_ref().map_err(Reason::clone)?;
     let values = bands.lower.as_slice().to_vec();
     let thresholds = vec![subject.mean_root(); values.len()];
-    Ok(with_failures(
-        Comparison::new("lower limit of variance", Criterion::Above, values, thresholds),
-        bands,
-    ))
+    Ok(with_failures(Comparison::new("lower limit", Criterion::Above, values, thresholds), bands))
 }
 
 /// Each lower limit against the upper limit of the next variance.
@@ -164,10 +161,7 @@ pub(super) fn gaps(bands: &std::result::Result<VarianceBands, Reason>) -> Answer
     let bands = bands.as_ref().map_err(Reason::clone)?;
     let values = bands.lower.as_slice()[..bands.lower.len() - 1].to_vec();
     let thresholds = bands.upper.as_slice()[1..].to_vec();
-    Ok(with_failures(
-        Comparison::new("lower limit of variance", Criterion::Above, values, thresholds),
-        bands,
-    ))
+    Ok(with_failures(Comparison::new("lower limit", Criterion::Above, values, thresholds), bands))
 }
 
 fn with_failures(comparison: Comparison, bands: &VarianceBands) -> Comparison {

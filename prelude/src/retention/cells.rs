@@ -42,7 +42,7 @@ pub(super) fn cell_validation(subject: &Subject) -> Result<Answer> {
     } else {
         format!("Every {n_groups}th row is left out at a time.")
     };
-    let what = "mean squared error of prediction";
+    let what = "squared error";
     Ok(Ok(Comparison::new(what, Criterion::Smallest, errors, Vec::new()).with_remark(remark)))
 }
 

@@ -38,7 +38,7 @@ pub(super) fn average_partial(subject: &Subject, power: i32) -> Answer {
         let Some(value) = mean_power(&left, power) else { break };
         values.push(value);
     }
-    let what = if power == 2 { "mean squared partial" } else { "mean fourth power of partials" };
+    let what = if power == 2 { "squared partial" } else { "fourth power" };
     Ok(Comparison::new(what, Criterion::Smallest, values, Vec::new()))
 }
 

@@ -509,4 +509,6 @@ fn the_table_names_rules_numbers_and_reasons() {
     assert!(text.contains("a majority is no proof"), "{text}");
     assert!(text.contains("60 rows and 12 variables in their own units"), "{text}");
     assert!(text.contains("seed 3"), "{text}");
+    // What decided must not be cut from a console's table.
+    assert!(text.contains("last kept one more source"), "{text}");
 }

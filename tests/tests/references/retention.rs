@@ -171,7 +171,8 @@ fn roots_are_held_against_the_law_of_the_largest_root() {
         let statistics = numbers(&case["tracy_widom_statistics"]);
         // The law is tabulated at few places: the p-value must lie between those of the nearest.
         for (value, s) in ours.iter().zip(&statistics) {
-            let above = law.iter().filter(|(place, _)| place <= s).map(|(_, tail)| *tail).last();
+            let above =
+                law.iter().filter(|(place, _)| place <= s).map(|(_, tail)| *tail).next_back();
             let below = law.iter().find(|(place, _)| place > s).map(|(_, tail)| *tail);
             assert!(above.is_none_or(|above| *value <= above), "{value:e} at {s}");
             assert!(below.is_none_or(|below| *value >= below), "{value:e} at {s}");

@@ -58,12 +58,12 @@ impl Arrows {
     ) -> Self {
         let components = (Some(components.0), Some(components.1));
         Arrows { components, tips, names, threshold: 0.0, measure: Measure::Loading }
-            .as_correlations()
+            .taken_as_correlations()
     }
 
     /// Takes the lengths as correlations; those that describe less than half of their variable's
     /// variance are small.
-    pub fn as_correlations(self) -> Self {
+    pub fn taken_as_correlations(self) -> Self {
         let threshold = std::f64::consts::FRAC_1_SQRT_2;
         Arrows { threshold, measure: Measure::Correlation, ..self }
     }

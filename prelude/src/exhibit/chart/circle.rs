@@ -60,7 +60,8 @@ impl Picture for Circle {
 
     fn draw(&self, settings: &Settings) -> Result<Drawing> {
         let source = &self.source;
-        let arrows = Arrows::new(source, settings, settings.labels.as_deref()).as_correlations();
+        let arrows =
+            Arrows::new(source, settings, settings.labels.as_deref()).taken_as_correlations();
         let components = settings.plane(source);
         let mut extent = Extent::origin();
         for (x, y) in [(1.0, 1.0), (-1.0, -1.0)] {

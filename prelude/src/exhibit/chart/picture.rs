@@ -39,7 +39,7 @@ pub(super) fn numbers(values: impl IntoIterator<Item = f64>) -> Value {
 pub(super) fn number(value: f64) -> Value {
     let rounded = if value.is_finite() { format!("{value:.11e}").parse().ok() } else { None };
     match rounded {
-        Some(rounded) if rounded == 0.0 => json!(0.0),
+        Some(0.0) => json!(0.0),
         Some::<f64>(rounded) => json!(rounded),
         None => Value::Null,
     }
