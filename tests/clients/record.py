@@ -25,7 +25,7 @@ SEEN = """({
     pictures: [...document.querySelectorAll('figure img')].map(i => i.naturalWidth),
     maths: document.querySelectorAll('math').length,
     scripts: [...document.querySelectorAll('script')].map(s => s.type),
-    json: [...document.querySelectorAll('script')].every(s => JSON.parse(s.textContent)),
+    json: [...document.querySelectorAll('script[type="application/json"]')].every(s => JSON.parse(s.textContent)),
 })"""
 
 

@@ -481,6 +481,25 @@ fn the_record_of_the_demo_opens_in_a_browser_without_a_network_and_is_accessible
     assert!(drawn.len() >= 4 && drawn.iter().all(|width| width.as_u64() > Some(0)), "{seen}");
     assert_eq!(seen["json"], true);
 
+    // What the demo has not: failures, mathematics, pictures that are not there, values that were set.
+    let cells = [
+        (
+            "markdown",
+            "# Mixed\n\n$$\\bar{x} = \\frac{1}{n} \\quad \\begin{pmatrix} a & b \\end{pmatrix}$$\n\n\
+            #### Deep\n\n![gone](gone.png) ![far](https://example.org/x.png)\n\n| a |\n|---|\n| 1 |\n\n- [x] done",
+        ),
+        ("parameters", "let n = 3;"),
+        ("code", "let none: Option<u8> = None;\nnone.unwrap()"),
+        ("code", "eprintln!(\"careful\"); println!(\"{}\", \"wide \".repeat(80)); n"),
+    ];
+    let mixed = folder.put("mixed.ipynb", &cells);
+    let output = folder.call("record", &mixed, &["--with-errors", "--set", "n=4"]);
+    assert_eq!(output.status.code(), Some(1), "{}", stderr(&output));
+    let mixed = look(&folder.path("mixed.record.html"));
+    assert!(mixed.status.success(), "{}{}", stdout(&mixed), stderr(&mixed));
+    let mixed: Value = serde_json::from_str(&stdout(&mixed)).unwrap();
+    assert_eq!(mixed["maths"], 1, "{mixed}");
+
     // The check can fail: a page that loads something, has an error and a nameless picture.
     let text = fs::read_to_string(&record).unwrap();
     let worse =

@@ -17,6 +17,10 @@ use super::evidence::{digest, joined};
 use super::markup::escaped;
 use super::sanitise::{HEADING, Source, clean};
 
+/// One transparent dot.
+const NOTHING: &str =
+    "data:image/gif;base64,R0lGODlhAQABAIAAAAAAAP///yH5BAEAAAAALAAAAAABAAEAAAIBRAA7";
+
 /// Larger pictures are named and left out.
 const MOST_PICTURE: u64 = 8 << 20;
 
@@ -133,8 +137,8 @@ impl<'a> Narrative<'a> {
                     Err(words) => {
                         let words = format!("<em>[{}]</em>", escaped(&words));
                         events.push(Event::InlineHtml(words.into()));
-                        let dest_url = CowStr::from("data:image/gif;base64,");
-                        // An empty picture still carries the description that follows.
+                        // A picture of nothing still carries the description that follows.
+                        let dest_url = CowStr::from(NOTHING);
                         events.push(Event::Start(Tag::Image { link_type, dest_url, title, id }));
                     }
                 }
@@ -311,6 +315,8 @@ mod tests {
         let inline = html("The variance $\\sigma^2 = \\frac{1}{n}$.");
         assert!(inline.contains("<math") && inline.contains("<mfrac>"), "{inline}");
         assert!(inline.contains("<msup>"), "{inline}");
+        let spaced = html("$a \\quad b$");
+        assert!(spaced.contains("</mspace>") && !spaced.contains("</mi></mspace>"), "{spaced}");
         assert!(html("$$\\sum_i x_i$$").contains("display=\"block\""));
         assert!(html("$\\nosuchthing$ costs").contains("<code>\\nosuchthing</code>"));
         assert_eq!(html("5$ and 6$"), "<p>5$ and 6$</p>\n");

@@ -227,6 +227,7 @@ impl Cleaner {
             body.find(|c: char| !c.is_ascii_alphanumeric() && c != '-').unwrap_or(body.len());
         let name = body[..name_end].to_ascii_lowercase();
         let (attributes, after) = attributes(&body[name_end..]);
+        let tag = &body[..body.len() - after.len()];
         if closes {
             self.close(&name);
             return after;
@@ -235,6 +236,10 @@ impl Cleaner {
             return past_end(after, &name);
         }
         self.start(&name, &attributes);
+        // Of the elements that are kept, only those of mathematics can end in their own tag.
+        if name.starts_with('m') && name != "mark" && tag.ends_with("/>") {
+            self.close(&name);
+        }
         after
     }
 
@@ -416,6 +421,15 @@ mod tests {
         assert_eq!(exhibit("<b"), "<b></b>");
         assert_eq!(exhibit("<b title=\"open"), "<b title=\"open\"></b>");
         assert_eq!(exhibit("<"), "&lt;");
+    }
+
+    #[test]
+    fn elements_of_mathematics_may_end_in_their_own_tag() {
+        assert_eq!(
+            exhibit("<math><mspace width=\"1em\" /><mi>x</mi></math>"),
+            "<math><mspace width=\"1em\"></mspace><mi>x</mi></math>"
+        );
+        assert_eq!(exhibit("<b/>x"), "<b>x</b>");
     }
 
     #[test]
