@@ -58,6 +58,8 @@ pub struct Start {
     pub environment: HashMap<String, String>,
     /// Where the kernel is started, and where its cells run.
     pub working_dir: Option<PathBuf>,
+    /// A command that starts the kernel given behind it, in surroundings of its own.
+    pub wrapper: Vec<String>,
 }
 
 impl Default for Start {
@@ -67,6 +69,7 @@ impl Default for Start {
             key: uuid::Uuid::new_v4().to_string(),
             environment: HashMap::new(),
             working_dir: None,
+            wrapper: Vec::new(),
         }
     }
 }
@@ -136,7 +139,10 @@ impl Client {
         let text = serde_json::to_vec(&info).expect("connection files are JSON");
         std::fs::write(&connection_file, text).expect("the connection file can be written");
 
-        let mut command = Command::new(kernel_executable());
+        let mut words = start.wrapper.iter().map(std::ffi::OsString::from).collect::<Vec<_>>();
+        words.push(kernel_executable().into());
+        let mut command = Command::new(&words[0]);
+        command.args(&words[1..]);
         // Sessions of tests are no sessions of the person who runs them.
         command.env("SEMIAXIS_LOG", dir.path().join("log"));
         command.arg("kernel").arg(&connection_file).envs(&start.environment);

@@ -156,6 +156,36 @@ async fn a_log_that_cannot_be_written_stops_no_cell() {
 }
 
 #[tokio::test(flavor = "current_thread")]
+async fn a_full_disk_under_the_log_stops_no_cell_and_leaves_whole_entries() {
+    let folder = tempfile::tempdir().unwrap();
+    let disk = folder.path().join("disk");
+    fs::create_dir(&disk).unwrap();
+    let disk = disk.to_str().unwrap().to_owned();
+    // A disk of three pages, in a name space that goes with the kernel.
+    let script = "mount -t tmpfs -o size=12k tmpfs \"$0\"; exec \"$@\"";
+    let words = ["unshare", "--user", "--map-root-user", "--mount", "sh", "-euc", script, &disk];
+    let environment = HashMap::from([("SEMIAXIS_LOG".to_owned(), disk.clone())]);
+    let wrapper = words.map(str::to_owned).to_vec();
+    let mut client = Client::start_with(Start { environment, wrapper, ..Start::default() }).await;
+    for round in 0..6 {
+        let code = format!("// {}\n{round}", "long ".repeat(800));
+        let cell = client.execute_well(&code).await;
+        assert_eq!(cell.result_text(), Some(round.to_string().as_str()));
+    }
+    // Only the cells see that disk.
+    let look = format!(
+        "let path = std::fs::read_dir({disk:?})?.next().ok_or(\"no log\")??.path();\n\
+         let text = std::fs::read_to_string(path)?;\n\
+         format!(\"{{}} {{}}\", text.lines().count(), text.ends_with(\"}}\\n\"))"
+    );
+    let cell = client.execute_well(&look).await;
+    let told = cell.result_text().unwrap().to_owned();
+    let n_lines: usize = told.split(' ').next().unwrap().parse().unwrap();
+    assert!((2..6).contains(&n_lines) && told.ends_with("true"), "{told}");
+    client.shutdown(false).await;
+}
+
+#[tokio::test(flavor = "current_thread")]
 async fn two_kernels_at_once_keep_a_log_each() {
     let folder = tempfile::tempdir().unwrap();
     let (mut one, mut other) = (start(folder.path()).await, start(folder.path()).await);
