@@ -20,6 +20,7 @@ class Page:
             url, timeout=DEADLINE_S, suppress_origin=True, max_size=None
         )
         self.number = 0
+        self.unasked = []  # What the browser tells by itself, once a domain of it is enabled.
 
     def call(self, method, **params):
         self.number += 1
@@ -30,6 +31,7 @@ class Page:
                 if "error" in message:
                     raise RuntimeError(f"{method}: {message['error']}")
                 return message["result"]
+            self.unasked.append(message)
 
     def evaluate(self, script):
         answer = self.call(

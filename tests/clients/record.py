@@ -12,7 +12,7 @@ import pathlib
 import sys
 import tempfile
 
-import lab
+from browser import start_browser, wait_for
 
 AXE = "axe.run(document, {resultTypes: ['violations']}).then(found => found.violations.map(v => ({" \
     "id: v.id, help: v.help, nodes: v.nodes.slice(0, 3).map(n => n.html.slice(0, 200))})))"
@@ -29,30 +29,8 @@ SEEN = """({
 })"""
 
 
-class Watched(lab.Page):
-    """A page that remembers what its browser reports unasked."""
-
-    def __init__(self, url):
-        self.events = []
-        super().__init__(url)
-        receive = self.socket.recv
-
-        def noted():
-            text = receive()
-            message = json.loads(text)
-            if "method" in message:
-                self.events.append(message)
-            return text
-
-        self.socket.recv = noted
-
-
 def run(options, folder, processes):
-    plain, lab.Page = lab.Page, Watched
-    try:
-        browser, page = lab.start_browser(options.browser, folder)
-    finally:
-        lab.Page = plain
+    browser, page = start_browser(options.browser, folder)
     processes.append(browser)
     for domain in ("Page", "Runtime", "Log", "Network"):
         page.call(f"{domain}.enable")
@@ -69,14 +47,14 @@ def run(options, folder, processes):
             features=[{"name": "prefers-color-scheme", "value": scheme}],
         )
         page.call("Page.navigate", url=address)
-        lab.wait_for("the record", lambda: page.evaluate("document.readyState") == "complete"
-                     and page.evaluate("document.URL").startswith("file:"))
+        wait_for("the record", lambda: page.evaluate(
+            "document.readyState === 'complete' && document.URL.startsWith('file:')"))
         page.evaluate(axe + ";true")
         for violation in page.evaluate(AXE):
             wrong.append(f"{scheme}: {json.dumps(violation)}")
         picture = pathlib.Path(options.picture)
         page.picture(picture.with_stem(f"{picture.stem}-{scheme}"))
-    for event in page.events:
+    for event in page.unasked:
         kind, told = event["method"], event["params"]
         if kind == "Network.requestWillBeSent":
             url = told["request"]["url"]
