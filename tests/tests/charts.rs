@@ -108,6 +108,24 @@ fn no_text_of_any_chart_is_cut_or_covered_in_a_browser() {
 }
 
 #[test]
+fn a_turntable_turns_in_a_browser_and_is_three_plots_without_scripts() {
+    let (x, kilns) = tiles();
+    let pca = principal_components(&x, Scaling::Correlation).unwrap();
+    let html = turntable(&pca).groups(&kilns).html().unwrap();
+    let folder = tempfile::tempdir().unwrap();
+    let path = folder.path().join("turntable.html");
+    let page = format!(
+        "<!doctype html><html lang=\"en\"><meta charset=\"utf-8\"><title>T</title><body>{html}"
+    );
+    std::fs::write(&path, page).unwrap();
+    let mut turn = Python::prepare().script("turn.py");
+    turn.arg("--page").arg(&path).arg("--browser").arg(debian::browser());
+    turn.arg("--pictures").arg(place::leavings().join("charts"));
+    let said = String::from_utf8_lossy(&succeed(&mut turn).stdout).into_owned();
+    assert!(said.contains("turned"), "{said}");
+}
+
+#[test]
 fn twenty_thousand_units_and_more_stay_small() {
     for n in [1_000, 20_000, 25_000] {
         let x = DataMatrix::from_unnamed(mixture(n, 6)).unwrap();

@@ -92,6 +92,38 @@ fn the_executed_demo_is_a_valid_notebook_that_converts_to_a_page() {
     assert!(page.contains("<table"), "no table is in the page");
 }
 
+/// Every chart and table of the gallery, run, converted to a page and printed by a browser.
+#[test]
+fn the_gallery_runs_and_is_printed() {
+    let demo = Demo::get();
+    let gallery = demo.folder.path().join("gallery.ipynb");
+    let source = place::workspace().join("notebooks-demo/gallery.ipynb");
+    std::fs::copy(source, &gallery).expect("the gallery is part of the project");
+    let executed = demo.folder.path().join("gallery-executed.ipynb");
+    succeed(
+        Command::new(kernel_executable()).arg("run").arg(&gallery).arg("--output").arg(&executed),
+    );
+    let charts = code_cells(&executed)
+        .iter()
+        .flat_map(shown)
+        .filter(|output| output.contains_key("image/svg+xml"))
+        .count();
+    assert!(charts >= 16, "{charts} charts in the gallery");
+
+    let page = demo.folder.path().join("gallery.html");
+    let mut convert = demo.python.command(["-m", "nbconvert", "--to", "html"]);
+    succeed(convert.arg(&executed).arg("--output").arg(&page));
+    let printed = place::leavings().join("gallery.pdf");
+    let mut print = Command::new(debian::browser());
+    print.args(["--headless", "--no-sandbox", "--disable-gpu", "--disable-dev-shm-usage"]);
+    print.arg(format!("--user-data-dir={}", demo.folder.path().join("printer").display()));
+    print.arg("--virtual-time-budget=5000");
+    print.arg(format!("--print-to-pdf={}", printed.display()));
+    succeed(print.arg(format!("file://{}", page.display())));
+    let pdf = std::fs::read(&printed).expect("the browser printed the page");
+    assert!(pdf.starts_with(b"%PDF-") && pdf.len() > 200_000, "{} bytes", pdf.len());
+}
+
 #[test]
 fn the_demo_runs_in_an_editor_in_a_browser_and_shows_the_same() {
     let demo = Demo::get();
