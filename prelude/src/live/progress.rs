@@ -152,6 +152,10 @@ impl Reporter {
         let under_way = UNDER_WAY.lock().unwrap_or_else(PoisonError::into_inner);
         let innermost = under_way.iter().rev().find_map(Weak::upgrade);
         drop(under_way);
+        self.decide(innermost.as_deref(), now)
+    }
+
+    fn decide(&mut self, innermost: Option<&Work>, now: Instant) -> Change {
         match innermost {
             Some(work) if now.saturating_duration_since(work.since) >= PATIENCE => {
                 if self.last.is_some_and(|last| now.saturating_duration_since(last) < EVERY) {
@@ -182,31 +186,43 @@ impl Reporter {
 mod tests {
     use super::*;
 
-    /// One test, because the list of work under way is the process's.
+    // The list of work under way is the process's, and other tests work at the same time; so these
+    // hand over the work to speak of.
+
     #[test]
     fn long_work_is_reported_now_and_then_and_removed_at_its_end() {
         let mut reporter = Reporter::new();
         let outer = Progress::new("outer", 10);
         let start = outer.work.since;
-        let after = |milliseconds| start + Duration::from_millis(milliseconds);
-        assert_eq!(reporter.look(after(900)), Change::Nothing);
+        let mut after = |work: Option<&Progress>, milliseconds: u64| {
+            let now = start + Duration::from_millis(milliseconds);
+            reporter.decide(work.map(|progress| &*progress.work), now)
+        };
+        assert_eq!(after(Some(&outer), 900), Change::Nothing);
         outer.advance(4);
-        let Change::Show(line) = reporter.look(after(1100)) else { panic!("no line") };
+        let Change::Show(line) = after(Some(&outer), 1100) else { panic!("no line") };
         assert_eq!((line.what.as_str(), line.done, line.total), ("outer", 4, Some(10)));
         assert!((line.seconds - 1.1).abs() < 1e-9);
-        assert_eq!(reporter.look(after(1200)), Change::Nothing);
+        assert_eq!(after(Some(&outer), 1200), Change::Nothing);
         let inner = Progress::open_ended("inner");
-        // The inner work is the one to speak of, a second after its own beginning.
-        let Change::Show(line) = reporter.look(inner.work.since + Duration::from_millis(1500))
-        else {
-            panic!("no line")
-        };
+        let Change::Show(line) = after(Some(&inner), 9000) else { panic!("no line") };
         assert_eq!((line.what.as_str(), line.total), ("inner", None));
-        drop(inner);
-        assert!(matches!(reporter.look(after(4000)), Change::Show(line) if line.what == "outer"));
-        drop(outer);
-        assert_eq!(reporter.look(after(4001)), Change::Remove);
-        assert_eq!(reporter.look(after(5000)), Change::Nothing);
+        assert!(matches!(after(Some(&outer), 9400), Change::Show(line) if line.what == "outer"));
+        assert_eq!(after(None, 9401), Change::Remove);
+        assert_eq!(after(None, 9900), Change::Nothing);
         assert_eq!(reporter.end(), Change::Nothing);
+    }
+
+    #[test]
+    fn work_is_under_way_until_it_is_dropped() {
+        let listed = |work: &Arc<Work>| {
+            let under_way = UNDER_WAY.lock().unwrap_or_else(PoisonError::into_inner);
+            under_way.iter().any(|known| std::ptr::eq(known.as_ptr(), Arc::as_ptr(work)))
+        };
+        let progress = Progress::new("listed", 1);
+        let work = Arc::clone(&progress.work);
+        assert!(listed(&work));
+        drop(progress);
+        assert!(!listed(&work));
     }
 }
