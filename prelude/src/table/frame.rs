@@ -142,7 +142,7 @@ impl Parts {
     fn of(table: &DataFrame, options: &MatrixOptions, keep_gaps: bool) -> Result<Parts> {
         options.check()?;
         let height = table.height();
-        let labels = Labels::of(table, &options.label)?;
+        let labels = Labels::of(table, options)?;
         let weights = options.weights.as_deref().map(|name| find(table, name)).transpose()?;
         let reserved = Reserved::of(table, options, labels.column())?;
         let Variables { columns, left_out } = Variables::of(table, options, &reserved)?;

@@ -172,6 +172,14 @@ impl MatrixOptions {
         self
     }
 
+    /// Whether a column was asked for by its name.
+    pub(super) fn asks_for(&self, column: &str) -> bool {
+        self.chosen.iter().flatten().any(|choice| match choice {
+            Choice::Named(names) => names.iter().any(|name| name == column),
+            Choice::Like(_) | Choice::OfType(_) => false,
+        })
+    }
+
     pub(super) fn check(&self) -> Result<()> {
         match self.most_missing {
             Some(value) if !(0.0..1.0).contains(&value) => Err(Error::OptionOutOfRange {

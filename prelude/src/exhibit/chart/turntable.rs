@@ -342,8 +342,12 @@ impl Exhibit for Turntable {
                     "upwards": numbers(scene.y.iter().copied()),
                     "towards": numbers(scene.z.iter().copied()),
                 });
+                let (a, b, _) = self.components;
+                // For records and clients that show pictures only: the first of the three views.
+                let still = self.plots.clone().components(a, b).size(720, 560).svg();
                 Bundle::new()
                     .with_html(self.page(&scene))
+                    .with_svg(still)
                     .with_plain(visible(&scene.words))
                     .with(NUMBERS, Content::Json(numbers))
             }

@@ -10,7 +10,7 @@ use super::columns::{check_numeric, find, is_text, refuse_mixed};
 use crate::error::{ColumnCount, Error, Result};
 use crate::table::matrix::check_labels;
 use crate::table::notes::{DroppedRow, LabelSource};
-use crate::table::options::{Label, Missing};
+use crate::table::options::{Label, MatrixOptions, Missing};
 
 /// A label for every row of the table.
 pub(super) struct Labels {
@@ -19,13 +19,15 @@ pub(super) struct Labels {
 }
 
 impl Labels {
-    pub(super) fn of(table: &DataFrame, choice: &Label) -> Result<Labels> {
-        match choice {
+    pub(super) fn of(table: &DataFrame, options: &MatrixOptions) -> Result<Labels> {
+        match &options.label {
             Label::RowNumbers => Ok(Labels::row_numbers(table)),
             Label::Column(name) => Labels::named(find(table, name)?),
             Label::Automatic => {
                 let fits = |column: &&Column| {
                     is_text(column)
+                        // Whoever asks for a column of text as numbers is to hear that it is text.
+                        && !options.asks_for(column.name())
                         && refuse_mixed(column).is_ok()
                         && column.null_count() == 0
                         && matches!(column.n_unique(), Ok(unique) if unique == column.len())
