@@ -1,10 +1,11 @@
 """Opens a notebook in JupyterLab in a headless browser, runs it and looks at the page.
 
     python3 lab.py --notebook NOTEBOOK --executed EXECUTED --browser CHROMIUM --pictures FOLDER
+                   [--theme "JupyterLab Dark"]
 
 EXECUTED is the same notebook with its outputs, made without a browser. The page must show the same
-tables, cell by cell of each, and the same charts, byte by byte. Screenshots go to FOLDER. Exits 1
-and says what differs.
+tables, cell by cell of each, and the same charts, byte by byte, and every cell of a table must be
+readable on the theme's ground. Screenshots go to FOLDER. Exits 1 and says what differs.
 """
 
 import argparse
@@ -50,7 +51,7 @@ class Tables(html.parser.HTMLParser):
             self.open[-1] += data
 
 
-def start_server(folder, root):
+def start_server(folder, root, theme):
     """JupyterLab on a free port, with settings, data and runtime files of its own."""
     environment = dict(
         os.environ,
@@ -68,6 +69,7 @@ def start_server(folder, root):
     notices = folder / "settings" / "@jupyterlab" / "apputils-extension"
     notices.mkdir()
     (notices / "notification.jupyterlab-settings").write_text('{"fetchNews": "false"}')
+    (notices / "themes.jupyterlab-settings").write_text(json.dumps({"theme": theme}))
     log = open(folder / "server.log", "wb")
     server = subprocess.Popen(
         [
@@ -120,6 +122,35 @@ SHOWN = """(() => [...document.querySelectorAll('.jp-Notebook .jp-CodeCell')].ma
 })))()"""
 
 
+# The least contrast of a table's text with what lies behind it (WCAG 2.2), and where; dimmed numbers,
+# which are meant to recede, are left out.
+CONTRAST = """(() => {
+    const channels = color => (color.match(/[\\d.]+/g) || []).map(Number);
+    const luminance = ([r, g, b]) => {
+        const [x, y, z] = [r, g, b].map(c => (c /= 255) <= 0.04045 ? c / 12.92 : ((c + 0.055) / 1.055) ** 2.4);
+        return 0.2126 * x + 0.7152 * y + 0.0722 * z;
+    };
+    const over = ([r, g, b, a = 1], [x, y, z]) => [r * a + x * (1 - a), g * a + y * (1 - a), b * a + z * (1 - a)];
+    const ground = element => {
+        const layers = [];
+        for (let at = element; at; at = at.parentElement) layers.push(channels(getComputedStyle(at).backgroundColor));
+        return layers.reverse().reduce((below, layer) => layer.length ? over(layer, below) : below, [255, 255, 255]);
+    };
+    let least = {contrast: 99, text: ''};
+    for (const cell of document.querySelectorAll('.jp-OutputArea-output table :is(td, th)')) {
+        let opacity = 1;
+        for (let at = cell; at; at = at.parentElement) opacity *= Number(getComputedStyle(at).opacity);
+        if (!cell.textContent.trim() || opacity < 1) continue;
+        const behind = ground(cell);
+        const ink = over(channels(getComputedStyle(cell).color), behind);
+        const [a, b] = [luminance(ink), luminance(behind)];
+        const contrast = (Math.max(a, b) + 0.05) / (Math.min(a, b) + 0.05);
+        if (contrast < least.contrast) least = {contrast, text: cell.textContent, theme: document.body.dataset.jpThemeName};
+    }
+    return least;
+})()"""
+
+
 def expected(executed):
     """What each code cell must show, out of the executed notebook."""
     cells = []
@@ -170,7 +201,7 @@ def differences(shown, wanted):
 
 def run(options, folder, processes):
     notebook = pathlib.Path(options.notebook).resolve()
-    server, address, token = start_server(folder, notebook.parent)
+    server, address, token = start_server(folder, notebook.parent, options.theme)
     processes.append(server)
     browser, page = start_browser(options.browser, folder)
     processes.append(browser)
@@ -205,6 +236,11 @@ def run(options, folder, processes):
             break
         time.sleep(0.5)
 
+    least = page.evaluate(CONTRAST)
+    if least.get("theme") != options.theme:
+        wrong.append(f"the theme is {least.get('theme')}")
+    if least["contrast"] < 4.5:
+        wrong.append(f"contrast {least['contrast']:.2f} of {least['text']!r} in {options.theme}")
     pictures = pathlib.Path(options.pictures)
     pictures.mkdir(parents=True, exist_ok=True)
     count = page.evaluate("document.querySelectorAll('.jp-Notebook .jp-Cell').length")
@@ -228,6 +264,7 @@ def main():
     for option in ("--notebook", "--executed", "--browser", "--pictures"):
         parser.add_argument(option, required=True)
     parser.add_argument("--kernel", default="semiaxis")
+    parser.add_argument("--theme", default="JupyterLab Light")
     options = parser.parse_args()
     processes = []
     with tempfile.TemporaryDirectory() as folder:

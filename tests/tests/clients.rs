@@ -92,17 +92,17 @@ fn the_executed_demo_is_a_valid_notebook_that_converts_to_a_page() {
     assert!(page.contains("<table"), "no table is in the page");
 }
 
-/// Every chart and table of the gallery, run, converted to a page and printed by a browser.
+/// Every chart and table of the gallery, run, converted to a page and printed by a browser; then in
+/// an editor whose theme is dark, as the demo is in one whose theme is light.
 #[test]
-fn the_gallery_runs_and_is_printed() {
+fn the_gallery_is_printed_and_shows_the_same_in_a_dark_editor() {
     let demo = Demo::get();
     let gallery = demo.folder.path().join("gallery.ipynb");
     let source = place::workspace().join("notebooks-demo/gallery.ipynb");
     std::fs::copy(source, &gallery).expect("the gallery is part of the project");
     let executed = demo.folder.path().join("gallery-executed.ipynb");
-    succeed(
-        Command::new(kernel_executable()).arg("run").arg(&gallery).arg("--output").arg(&executed),
-    );
+    let mut run = Command::new(kernel_executable());
+    succeed(run.arg("run").arg(&gallery).arg("--output").arg(&executed));
     let charts = code_cells(&executed)
         .iter()
         .flat_map(shown)
@@ -122,6 +122,13 @@ fn the_gallery_runs_and_is_printed() {
     succeed(print.arg(format!("file://{}", page.display())));
     let pdf = std::fs::read(&printed).expect("the browser printed the page");
     assert!(pdf.starts_with(b"%PDF-") && pdf.len() > 200_000, "{} bytes", pdf.len());
+
+    let mut lab = demo.python.script("lab.py");
+    lab.arg("--notebook").arg(&gallery).arg("--executed").arg(&executed);
+    lab.arg("--browser").arg(debian::browser()).arg("--theme").arg("JupyterLab Dark");
+    lab.arg("--pictures").arg(place::leavings().join("editor-dark"));
+    let said = String::from_utf8_lossy(&succeed(&mut lab).stdout).into_owned();
+    assert!(said.contains("charts in the page"), "{said}");
 }
 
 #[test]
