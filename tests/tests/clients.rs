@@ -1,8 +1,9 @@
 //! The demo notebook in the clients that people use: an executing library, a converter, and an
 //! editor in a browser. All must show what `semiaxis run` shows.
 
+use std::io::Write as _;
 use std::path::{Path, PathBuf};
-use std::process::Command;
+use std::process::{Command, Stdio};
 use std::sync::OnceLock;
 
 use semiaxis_tests::client::kernel_executable;
@@ -129,6 +130,29 @@ fn the_gallery_is_printed_and_shows_the_same_in_a_dark_editor() {
     lab.arg("--pictures").arg(place::leavings().join("editor-dark"));
     let said = String::from_utf8_lossy(&succeed(&mut lab).stdout).into_owned();
     assert!(said.contains("charts in the page"), "{said}");
+}
+
+/// A client that shows text only: tables by their plain twin, charts by what they say in words.
+#[test]
+fn tables_and_charts_have_words_in_a_console() {
+    let demo = Demo::get();
+    let mut console = demo.python.command(["-m", "jupyter_console", "--simple-prompt"]);
+    console.args(["--kernel", "semiaxis"]).current_dir(demo.folder.path());
+    console.stdin(Stdio::piped()).stdout(Stdio::piped()).stderr(Stdio::piped());
+    let mut console = console.spawn().expect("the console starts");
+    let lines = "let t = read_table(\"tiles.csv\")?;\n\
+                 let x = t.data_matrix_with(MatrixOptions::new().missing(Missing::DropRows))?;\n\
+                 let pca = principal_components(&x, Scaling::Correlation)?;\n\
+                 pca\nscree(&pca)\n";
+    let mut input = console.stdin.take().expect("a piped input");
+    input.write_all(lines.as_bytes()).expect("the console reads");
+    drop(input);
+    let output = console.wait_with_output().expect("the console ends when its input does");
+    let said = String::from_utf8_lossy(&output.stdout);
+    assert!(said.contains("Variance of each component"), "{said}");
+    assert!(said.contains("component  variance   share  together"), "{said}");
+    assert!(said.contains("Scree of 14 components from 314 units"), "{said}");
+    assert!(!said.contains("<table") && !said.contains("<svg"), "{said}");
 }
 
 #[test]
