@@ -14,6 +14,7 @@ import html.parser
 import json
 import os
 import pathlib
+import re
 import subprocess
 import sys
 import tempfile
@@ -151,6 +152,37 @@ CONTRAST = """(() => {
 })()"""
 
 
+# What each table becomes when it is selected, copied and pasted as text: a line for each row, cells
+# apart by tabs.
+PASTED = """[...document.querySelectorAll('.jp-OutputArea-output table')].map(table => {
+    const range = document.createRange(), selection = getSelection();
+    range.selectNode(table);
+    selection.removeAllRanges();
+    selection.addRange(range);
+    const text = selection.toString();
+    selection.removeAllRanges();
+    return text;
+})"""
+LIKE_A_NUMBER = re.compile(r"[-+\u2212]?[\d.,\s\u2007\u2009\u202f]*\d[\d.,\u2007\u2009\u202f]*(e-?\d+)?( ?%)?")
+
+
+def not_numbers(pasted):
+    """Cells that look like numbers and would not be numbers in a spreadsheet."""
+    n_numbers = 0
+    for text in pasted:
+        for cell in re.split(r"[\t\n]", text):
+            cell = cell.strip()
+            if not LIKE_A_NUMBER.fullmatch(cell):
+                continue
+            try:
+                float(cell.removesuffix("%"))
+                n_numbers += 1
+            except ValueError:
+                yield f"pasted into a spreadsheet, {cell!r} is not a number"
+    if n_numbers < 100:
+        yield f"only {n_numbers} numbers could be pasted"
+
+
 def expected(executed):
     """What each code cell must show, out of the executed notebook."""
     cells = []
@@ -236,6 +268,7 @@ def run(options, folder, processes):
             break
         time.sleep(0.5)
 
+    wrong += not_numbers(page.evaluate(PASTED))
     least = page.evaluate(CONTRAST)
     if least.get("theme") != options.theme:
         wrong.append(f"the theme is {least.get('theme')}")
