@@ -28,18 +28,34 @@ fn evaluate(sequences: &[(String, Sequence)]) -> Vec<String> {
     let mut evaluator = Evaluator::start();
     for (file, sequence) in sequences {
         evaluator.refresh();
-        for (cell_idx, cell) in sequence.cells.iter().enumerate() {
-            if cell.evaluator_skip.is_some() {
-                continue;
-            }
-            let answer = evaluator.evaluate(&cell.code);
-            for problem in compare(cell, &answer) {
-                wrong.push(format!(
-                    "{file}: {}: cell {}: {problem}\n    {answer:?}",
-                    sequence.name,
-                    cell_idx + 1,
-                ));
-            }
+        let mut problems = evaluate_one(&mut evaluator, file, sequence);
+        // On a busy machine its analysis sometimes starts without the standard library, and then
+        // knows no type all along; another process of it does.
+        if problems.iter().any(|problem| problem.contains(WITHOUT_TYPES)) {
+            evaluator = Evaluator::start();
+            problems = evaluate_one(&mut evaluator, file, sequence);
+        }
+        wrong.extend(problems);
+    }
+    wrong
+}
+
+/// How the evaluator says that its analysis gave no type.
+const WITHOUT_TYPES: &str = "Couldn't automatically determine type of variable";
+
+fn evaluate_one(evaluator: &mut Evaluator, file: &str, sequence: &Sequence) -> Vec<String> {
+    let mut wrong = Vec::new();
+    for (cell_idx, cell) in sequence.cells.iter().enumerate() {
+        if cell.evaluator_skip.is_some() {
+            continue;
+        }
+        let answer = evaluator.evaluate(&cell.code);
+        for problem in compare(cell, &answer) {
+            wrong.push(format!(
+                "{file}: {}: cell {}: {problem}\n    {answer:?}",
+                sequence.name,
+                cell_idx + 1,
+            ));
         }
     }
     wrong

@@ -89,7 +89,7 @@ async fn long_computations_of_the_prelude_stop_when_asked_and_lose_nothing() {
         assert!(error.name.contains("Interrupted"), "{what}: {error:?}");
         // Had the worker been replaced, the variable would be gone with it.
         assert_eq!(
-            client.execute_well("kept + x.n_cols()").await.result_text(),
+            client.execute_well("kept as usize + x.n_cols()").await.result_text(),
             Some("36"),
             "{what}"
         );

@@ -209,6 +209,12 @@ impl Reader<'_> {
         let Some(owner) = type_name(&block.self_ty) else { return };
         if let Some((_, path, _)) = &block.trait_ {
             let name = path.segments.last().map(|segment| segment.ident.to_string());
+            // What a type dereferences to lends it its members, as a trait does.
+            let target = block.items.iter().find_map(|member| match member {
+                syn::ImplItem::Type(item) if item.ident == "Target" => type_name(&item.ty),
+                _ => None,
+            });
+            let name = if name.as_deref() == Some("Deref") { target } else { name };
             self.implemented.extend(name.map(|name| (name, owner)));
             return;
         }
@@ -386,6 +392,15 @@ mod tests {
         assert_eq!(find(&index, "weigh", Some("Vec")).unwrap().docs, "In grams.");
         let frame = find(&index, "DataFrame", None).unwrap();
         assert_eq!((frame.kind, frame.origin.as_str()), (EntryKind::Foreign, "polars"));
+    }
+
+    #[test]
+    fn a_type_has_the_members_of_what_it_dereferences_to() {
+        let text = "pub struct Outer; pub struct Inner;\n\
+            impl Inner { pub fn weigh(&self) -> f64 { 0.0 } }\n\
+            impl std::ops::Deref for Outer { type Target = Inner; fn deref(&self) -> &Inner { loop {} } }";
+        let index = index(&[("lib.rs", text)], &[], &[]);
+        assert!(find(&index, "weigh", Some("Outer")).is_some());
     }
 
     #[test]
