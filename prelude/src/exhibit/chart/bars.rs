@@ -5,10 +5,11 @@ use serde_json::{Value, json};
 
 use super::Chart;
 use super::card::{Area, Card};
-use super::frame::{Axis, Frame, TICK_SIZE, push_text};
-use super::measure::{Weight, fitted, width};
+use super::frame::{Axis, Frame, TICK_SIZE};
+use super::measure::{Weight, fitted};
 use super::palette::{CARD, INK, INK_SOFT, shade};
 use super::picture::{Drawing, Picture, numbers};
+use super::row_names::RowNames;
 use super::settings::{Intervals, Setting, Settings};
 use super::source::Source;
 use super::svg::{Svg, tenth};
@@ -21,7 +22,6 @@ const MOST_PANELS: usize = 6;
 const USUAL_PANELS: usize = 3;
 /// As many bars stand in one panel.
 const MOST_BARS: usize = 48;
-const NAME_MOST: f64 = 170.0;
 const GAP: f64 = 16.0;
 /// Bars of smaller loadings are pale.
 const PALE: f64 = 0.25;
@@ -145,20 +145,14 @@ struct Panels<'a> {
 
 impl Panels<'_> {
     fn draw(&self, svg: &mut Svg, room: Area, n_panels: usize) {
-        let widest = self.shown.iter().map(|&v| width(&self.names[v], TICK_SIZE, Weight::Regular));
-        let names_room = widest.fold(0.0, f64::max).min(NAME_MOST).min(room.width() * 0.4) + 8.0;
+        let shown = || self.shown.iter().map(|&variable| self.names[variable].as_str());
+        let row_names = RowNames::fit(room, shown(), 0.0);
+        let names_room = row_names.room;
         let top = room.top + 22.0;
         let bottom = room.bottom - 22.0;
         let row = (bottom - top) / self.shown.len() as f64;
         let y_of = |place: usize| top + (place as f64 + 0.5) * row;
-        let labels = svg.element("g").with("class", "labels").at("font-size", TICK_SIZE);
-        labels.with("fill", INK).around(|svg| {
-            for (place, &variable) in self.shown.iter().enumerate() {
-                let text =
-                    fitted(&self.names[variable], TICK_SIZE, Weight::Regular, names_room - 8.0);
-                push_text(svg, (room.left + names_room - 8.0, y_of(place) + 4.0), "end", &text);
-            }
-        });
+        row_names.draw(svg, shown().enumerate().map(|(place, name)| (name, y_of(place))));
         let reach = self.reach(n_panels);
         let all = room.right - room.left - names_room - GAP * (n_panels as f64 - 1.0);
         let panel = all / n_panels as f64;

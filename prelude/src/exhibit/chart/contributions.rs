@@ -4,10 +4,11 @@ use serde_json::json;
 
 use super::Chart;
 use super::card::{Area, Card};
-use super::frame::{Axis, Frame, TICK_SIZE, push_text};
-use super::measure::{Weight, fitted, width};
-use super::palette::{CARD, INK, INK_SOFT, NEGATIVE, POSITIVE};
+use super::frame::{Axis, Frame, TICK_SIZE};
+use super::measure::{Weight, fitted};
+use super::palette::{CARD, INK_SOFT, NEGATIVE, POSITIVE};
 use super::picture::{Drawing, Picture, numbers};
+use super::row_names::RowNames;
 use super::settings::{Setting, Settings};
 use super::svg::Svg;
 use crate::distances::Contributions;
@@ -16,7 +17,6 @@ use crate::exhibit::numbers::{counted, fixed, percent, significant, typographic}
 use crate::exhibit::text::shortened;
 
 const MOST_BARS: usize = 30;
-const NAME_MOST: f64 = 170.0;
 const GAP: f64 = 22.0;
 
 /// What each variable contributes to the T² and the Q of one unit, the largest first.
@@ -160,19 +160,14 @@ impl Plot {
 }
 
 fn draw_panels(svg: &mut Svg, room: Area, panels: &[Panel; 2], names: &[String], order: &[usize]) {
-    let widest = order.iter().map(|&v| width(&names[v], TICK_SIZE, Weight::Regular));
-    let names_room = widest.fold(0.0, f64::max).min(NAME_MOST).min(room.width() * 0.4) + 8.0;
+    let shown = || order.iter().map(|&variable| names[variable].as_str());
+    let row_names = RowNames::fit(room, shown(), 0.0);
+    let names_room = row_names.room;
     let (top, bottom) = (room.top + 22.0, room.bottom - 22.0);
     let row = (bottom - top) / order.len() as f64;
     let y_of = |place: usize| top + (place as f64 + 0.5) * row;
     let thickness = (row * 0.62).min(15.0);
-    let labels = svg.element("g").with("class", "labels").at("font-size", TICK_SIZE);
-    labels.with("fill", INK).around(|svg| {
-        for (place, &variable) in order.iter().enumerate() {
-            let text = fitted(&names[variable], TICK_SIZE, Weight::Regular, names_room - 8.0);
-            push_text(svg, (room.left + names_room - 8.0, y_of(place) + 4.0), "end", &text);
-        }
-    });
+    row_names.draw(svg, shown().enumerate().map(|(place, name)| (name, y_of(place))));
     let panel_width = (room.width() - names_room - GAP) / 2.0 - 6.0;
     for (number, panel) in panels.iter().enumerate() {
         let left = room.left + names_room + number as f64 * (panel_width + GAP);

@@ -16,12 +16,11 @@ use super::settings::{Setting, Settings};
 use super::svg::{Svg, tenth};
 use super::units::listed;
 use crate::distances::{Distances, Standing};
-use crate::error::{Error, Result};
+use crate::error::Result;
 use crate::exhibit::numbers::{counted, significant, stored, typographic};
 use crate::exhibit::text::shortened;
 
 const MOST_NAMED: usize = 20;
-const MOST_UNITS: usize = 20_000;
 
 /// Score distance against orthogonal distance of each unit, with the cut-offs of both.
 ///
@@ -62,15 +61,7 @@ impl Picture for Plot {
     }
 
     fn check(&self, settings: &Settings) -> Result<()> {
-        let n_units = self.distances.n_rows();
-        if n_units > MOST_UNITS {
-            return Err(Error::OptionOutOfRange {
-                option: "number of rows",
-                value: n_units as f64,
-                accepted: "at most 20000; take those of interest with `select_rows`",
-            });
-        }
-        settings.check_units(n_units)
+        settings.check_drawn_units(self.distances.n_rows())
     }
 
     fn draw(&self, settings: &Settings) -> Result<Drawing> {

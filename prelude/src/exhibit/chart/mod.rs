@@ -48,6 +48,7 @@ mod marks;
 mod measure;
 mod palette;
 mod plane;
+mod row_names;
 mod save;
 mod svg;
 mod ticks;

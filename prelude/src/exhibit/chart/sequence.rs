@@ -16,11 +16,10 @@ use super::settings::{Setting, Settings};
 use super::svg::{Svg, tenth};
 use super::units::listed;
 use crate::distances::TSquaredAndQ;
-use crate::error::{Error, Result};
+use crate::error::Result;
 use crate::exhibit::numbers::{counted, significant, stored, typographic};
 use crate::exhibit::text::shortened;
 
-const MOST_UNITS: usize = 20_000;
 const MOST_NAMED: usize = 12;
 /// Marks with a hover text each; with more units only those beyond a limit have one.
 const MOST_HOVERS: usize = 1_200;
@@ -83,15 +82,7 @@ impl Picture for Sequence {
     }
 
     fn check(&self, settings: &Settings) -> Result<()> {
-        let n_units = self.statistics.n_rows();
-        if n_units > MOST_UNITS {
-            return Err(Error::OptionOutOfRange {
-                option: "number of rows",
-                value: n_units as f64,
-                accepted: "at most 20000; take those of interest with `select_rows`",
-            });
-        }
-        settings.check_units(n_units)
+        settings.check_drawn_units(self.statistics.n_rows())
     }
 
     fn draw(&self, settings: &Settings) -> Result<Drawing> {
@@ -181,12 +172,15 @@ fn draw_track(
         .done();
     let beyond = track.beyond();
     let n_marked = beyond.len().min(MOST_HOVERS);
+    let mut marked = vec![n <= MOST_HOVERS; n];
+    for &unit in &beyond[..n_marked] {
+        marked[unit] = true;
+    }
     let group_of = groups.of_units(n);
     let radius = mark_radius(n) * 0.7;
     svg.element("g").with("class", "marks").around(|svg| {
         let is_beyond = |unit: usize| track.limit.is_some_and(|limit| track.values[unit] > limit);
-        let marked = |unit: &usize| n <= MOST_HOVERS || beyond[..n_marked].contains(unit);
-        for unit in (0..n).filter(marked) {
+        for unit in (0..n).filter(|&unit| marked[unit]) {
             let mut cue = group_of[unit].cue;
             if !groups.are_set() {
                 // One colour for all would hide what the chart is about.

@@ -4,6 +4,7 @@ use std::collections::HashSet;
 
 use nalgebra::DMatrix;
 
+use super::marks::MOST_MARKS;
 use super::picture::Picture;
 use super::source::Source;
 use crate::components::Scaling;
@@ -319,6 +320,18 @@ impl Settings {
             Some(labels) => check_count("labels of units", n_units, labels.len()),
             None => Ok(()),
         }
+    }
+
+    /// As [`check_units`](Settings::check_units), for charts that draw every unit one by one.
+    pub fn check_drawn_units(&self, n_units: usize) -> Result<()> {
+        if n_units > MOST_MARKS {
+            return Err(Error::OptionOutOfRange {
+                option: "number of rows",
+                value: n_units as f64,
+                accepted: "at most 20000; take those of interest with `select_rows`",
+            });
+        }
+        self.check_units(n_units)
     }
 
     /// Whether there is a label for each variable.

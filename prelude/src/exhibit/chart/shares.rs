@@ -5,9 +5,10 @@ use serde_json::json;
 use super::Chart;
 use super::card::{Area, Card, LegendEntry, LegendSign};
 use super::frame::{Axis, Frame, TICK_SIZE, push_text};
-use super::measure::{Weight, fitted, width};
+use super::measure::{Weight, width};
 use super::palette::{CARD, Cue, FAINT, INK, LAYERS, Shape};
 use super::picture::{Drawing, Picture, numbers};
+use super::row_names::RowNames;
 use super::settings::{Setting, Settings};
 use super::source::Source;
 use super::svg::Svg;
@@ -19,7 +20,6 @@ use crate::exhibit::text::shortened;
 const USUAL: usize = 3;
 const MOST_COMPONENTS: usize = LAYERS.len();
 const MOST_BARS: usize = 48;
-const NAME_MOST: f64 = 170.0;
 const TOTAL: &str = "all variables";
 
 /// How much of each variable's variance the first components hold, a segment for each component.
@@ -164,12 +164,11 @@ impl Shares {
         (names, order): (&[String], &[usize]),
         total: &[f64],
     ) {
-        let widest = order.iter().map(|&v| width(&names[v], TICK_SIZE, Weight::Regular));
         let least = width(TOTAL, TICK_SIZE, Weight::Bold);
-        let names_room = widest.fold(least, f64::max).min(NAME_MOST).min(room.width() * 0.4) + 8.0;
+        let row_names = RowNames::fit(room, order.iter().map(|&v| names[v].as_str()), least);
         // Room for the text behind a bar that is full.
         let area = Area {
-            left: room.left + names_room,
+            left: room.left + row_names.room,
             top: room.top,
             right: room.right - 52.0,
             bottom: room.bottom - 22.0,
@@ -195,8 +194,7 @@ impl Shares {
                         )
                     }
                 };
-                let text = fitted(name, TICK_SIZE, Weight::Regular, names_room - 8.0);
-                push_text(svg, (area.left - 8.0, y + 4.0), "end", &text);
+                row_names.push(svg, name, y);
                 push_segments(svg, &frame, (y, thickness), name, &parts);
                 let sum: f64 = parts.iter().sum();
                 let at = (frame.across(100.0 * sum) + 6.0, y + 4.0);
