@@ -515,11 +515,6 @@ pub enum Error {
         /// Components whose scores are wanted.
         n_components: usize,
     },
-    /// A method that takes all rows alike was given rows with weights.
-    WeightsNotTaken {
-        /// The method.
-        method: &'static str,
-    },
     /// New rows do not have the variables that an analysis was made with.
     VariablesDiffer {
         /// Variables of the analysis that the new rows lack.

@@ -400,9 +400,6 @@ impl fmt::Display for Error {
                     plural(*n_components, "score")
                 )
             }
-            Error::WeightsNotTaken { method } => {
-                write!(f, "{method} takes all rows alike; give it the rows without weights")
-            }
             Error::VariablesDiffer { missing, extra, order } => {
                 write!(f, "the variables are not those of the analysis")?;
                 if !missing.is_empty() {

@@ -61,7 +61,7 @@ fn examples() -> Vec<Error> {
         Error::TooFewObserved { n_components: 2, found: 20, needed: 31 },
         Error::NoNoise { n_components: 2 },
         Error::ScoresUndetermined { row: 4, label: "a".into(), n_observed: 1, n_components: 2 },
-        Error::WeightsNotTaken { method: "the estimation of missing values" },
+        Error::WeightsNotCovered { method: "the estimation of missing values" },
         Error::NonFinite {
             column: "x".into(),
             row: 2,

@@ -51,7 +51,7 @@ const MOST_ATTEMPTS: usize = 50;
 /// [`Error::ComponentOutOfRange`] unless 1 ≤ k < min(n − 1, p); [`Error::TooFewObserved`] when
 /// more would be fitted than was observed; [`Error::NoNoise`] when k components describe the
 /// observed cells exactly; [`Error::ScoresUndetermined`] without shrinkage, for a row with fewer
-/// observed cells than components; [`Error::WeightsNotTaken`] for rows with weights;
+/// observed cells than components; [`Error::WeightsNotCovered`] for rows with weights;
 /// [`Error::OptionOutOfRange`].
 pub fn estimate_missing(x: &GappedMatrix, options: GapOptions) -> Result<Completed> {
     options.check()?;
@@ -145,7 +145,7 @@ pub(super) fn available_components(x: &GappedMatrix, method: &'static str) -> Re
         return Err(Error::TooFewColumns { method, needed: 2, found: x.n_cols() });
     }
     if x.weights().is_some() {
-        return Err(Error::WeightsNotTaken { method });
+        return Err(Error::WeightsNotCovered { method });
     }
     let mut constant = Vec::new();
     for (column, name) in x.values().column_iter().zip(x.variables()) {

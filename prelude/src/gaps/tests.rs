@@ -458,7 +458,7 @@ fn what_cannot_be_estimated_is_refused_by_name() {
         DataMatrix::from_unnamed(whole.clone()).unwrap().with_weights([1.0; 10]).unwrap();
     assert!(matches!(
         probabilistic_components(&weighted, 2, ProbabilisticOptions::new()),
-        Err(Error::WeightsNotTaken { .. })
+        Err(Error::WeightsNotCovered { .. })
     ));
     for options in [
         GapOptions::new().tolerance(0.0),

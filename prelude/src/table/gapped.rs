@@ -160,6 +160,11 @@ impl GappedMatrix {
         &self.label_source
     }
 
+    /// The same rows without weights.
+    pub fn without_weights(&self) -> GappedMatrix {
+        self.clone().weighted_by(None)
+    }
+
     /// The weights of the rows, in row order; `None` when none were given.
     pub fn weights(&self) -> Option<&[f64]> {
         self.weights.as_deref()
@@ -358,6 +363,7 @@ mod tests {
         }
         let rows = x.clone().weighted_by(Some([1.0, 2.0, 3.0].into())).complete_rows().unwrap();
         assert_eq!((rows.labels(), rows.weights()), (&["c".to_owned()][..], Some(&[3.0][..])));
+        assert!(GappedMatrix::from(&rows).without_weights().weights().is_none());
         let none = made(dmatrix![1.0, GAP; GAP, 5.0; 4.0, GAP]).unwrap();
         assert!(matches!(none.complete_rows(), Err(Error::NoCompleteRow { n_rows: 3, .. })));
         let whole = made(dmatrix![1.0, 2.0; 3.0, 5.0; 4.0, 4.0]).unwrap().complete().unwrap();
