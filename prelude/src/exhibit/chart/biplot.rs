@@ -17,7 +17,7 @@ use super::palette::{INK, INK_SOFT};
 use super::picture::{Drawing, Picture};
 use super::plane::{Extent, Plane};
 use super::scores::{LABEL_MOST, LABEL_SIZE, draw_settled, opening, plane_title};
-use super::settings::{Setting, Settings};
+use super::settings::{OF_UNITS_IN_A_PLANE, Setting, Settings};
 use super::source::Source;
 use super::units::Units;
 use crate::components::PrincipalComponents;
@@ -60,12 +60,11 @@ impl Picture for Biplot {
     }
 
     fn takes(&self) -> &'static [Setting] {
-        &[Setting::Components, Setting::Groups, Setting::Labels, Setting::Coverage, Setting::Hulls]
+        OF_UNITS_IN_A_PLANE
     }
 
     fn check(&self, settings: &Settings) -> Result<()> {
-        settings.check_components(self.source.n_components())?;
-        settings.check_units(self.source.scores.nrows())
+        settings.check_plane_of_units(&self.source)
     }
 
     fn draw(&self, settings: &Settings) -> Result<Drawing> {

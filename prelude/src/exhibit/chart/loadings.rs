@@ -8,7 +8,7 @@ use super::palette::{FAINT, GROUPS};
 use super::picture::{Drawing, Picture};
 use super::plane::{Extent, Plane};
 use super::scores::{LABEL_MOST, LABEL_SIZE, draw_settled, opening, plane_title};
-use super::settings::{Setting, Settings};
+use super::settings::{OF_VARIABLES_IN_A_PLANE, Setting, Settings};
 use super::source::Source;
 use crate::components::PrincipalComponents;
 use crate::error::Result;
@@ -48,12 +48,11 @@ impl Picture for Loadings {
     }
 
     fn takes(&self) -> &'static [Setting] {
-        &[Setting::Components, Setting::Labels]
+        OF_VARIABLES_IN_A_PLANE
     }
 
     fn check(&self, settings: &Settings) -> Result<()> {
-        settings.check_components(self.source.n_components())?;
-        settings.check_variables(self.source.variables.len())
+        settings.check_plane_of_variables(&self.source)
     }
 
     fn draw(&self, settings: &Settings) -> Result<Drawing> {

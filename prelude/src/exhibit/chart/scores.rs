@@ -5,7 +5,7 @@ use super::card::{Area, Card};
 use super::labels::{LabelSpace, push_labels};
 use super::picture::{Drawing, Picture};
 use super::plane::{Extent, Plane};
-use super::settings::{Setting, Settings};
+use super::settings::{OF_UNITS_IN_A_PLANE, Setting, Settings};
 use super::source::Source;
 use super::svg::Svg;
 use super::units::Units;
@@ -57,12 +57,11 @@ impl Picture for Scores {
     }
 
     fn takes(&self) -> &'static [Setting] {
-        &[Setting::Components, Setting::Groups, Setting::Labels, Setting::Coverage, Setting::Hulls]
+        OF_UNITS_IN_A_PLANE
     }
 
     fn check(&self, settings: &Settings) -> Result<()> {
-        settings.check_components(self.source.n_components())?;
-        settings.check_units(self.source.scores.nrows())
+        settings.check_plane_of_units(&self.source)
     }
 
     fn draw(&self, settings: &Settings) -> Result<Drawing> {

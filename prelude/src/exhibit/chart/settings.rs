@@ -94,6 +94,13 @@ pub(super) enum Setting {
     Hulls,
 }
 
+/// What charts of units in a plane have.
+pub(super) const OF_UNITS_IN_A_PLANE: &[Setting] =
+    &[Setting::Components, Setting::Groups, Setting::Labels, Setting::Coverage, Setting::Hulls];
+
+/// What charts of variables in a plane have.
+pub(super) const OF_VARIABLES_IN_A_PLANE: &[Setting] = &[Setting::Components, Setting::Labels];
+
 impl Setting {
     /// The name of the builder's method.
     pub fn name(self) -> &'static str {
@@ -340,6 +347,18 @@ impl Settings {
             Some(labels) => check_count("labels of variables", n_variables, labels.len()),
             None => Ok(()),
         }
+    }
+
+    /// Whether what was set fits units in the plane of two components.
+    pub fn check_plane_of_units(&self, source: &Source) -> Result<()> {
+        self.check_components(source.n_components())?;
+        self.check_units(source.scores.nrows())
+    }
+
+    /// Whether what was set fits variables in the plane of two components.
+    pub fn check_plane_of_variables(&self, source: &Source) -> Result<()> {
+        self.check_components(source.n_components())?;
+        self.check_variables(source.variables.len())
     }
 
     /// Whether the references of a scree fit its components.
