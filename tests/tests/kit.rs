@@ -11,6 +11,7 @@ use std::time::{Duration, Instant};
 
 use semiaxis_tests::client::kernel_executable;
 use semiaxis_tests::command::{in_own_mounts, semiaxis, stderr, stdout};
+use semiaxis_tests::place;
 use serde_json::Value;
 
 /// The kit of this user, built now if it was not there.
@@ -243,4 +244,7 @@ fn a_full_disk_under_the_kit_is_said_and_leaves_nothing_half_done() {
     let said = stderr(&output);
     assert!(said.contains("no space left on the disk that holds"), "{said}");
     assert_eq!(stdout(&output), "");
+    let workspace = fs::read_dir(place::workspace()).unwrap();
+    let left = workspace.map(|entry| entry.unwrap().file_name().into_string().unwrap());
+    assert_eq!(left.filter(|name| name.starts_with("rustc-ice")).count(), 0);
 }

@@ -145,6 +145,8 @@ fn run_cargo(
         .args(["--message-format=json-render-diagnostics", "--color=never", "--"])
         .args(prelude_flags(compiler, &place.home, name))
         .env("RUSTC_WORKSPACE_WRAPPER", wrapper(&place.home)?)
+        // A compiler that a full disk brings down would leave an account of it in the sources.
+        .env("RUSTC_ICE", "0")
         .stdout(Stdio::piped())
         .stderr(Stdio::piped())
         .spawn()
