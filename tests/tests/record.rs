@@ -8,6 +8,7 @@ use std::process::{Command, Output};
 
 use semiaxis_tests::client::kernel_executable;
 use semiaxis_tests::command::{in_own_mounts, notebook, semiaxis, stderr, stdout};
+use semiaxis_tests::folder::Folder;
 use semiaxis_tests::python::{Python, succeed};
 use semiaxis_tests::{debian, place};
 use serde_json::{Value, json};
@@ -16,36 +17,16 @@ use serde_json::{Value, json};
 const TILES: &str = "tile,length,width,mass\na,410.2,251.1,3.10\nb,408.9,250.4,3.02\n\
     c,411.7,252.0,3.21\nd,409.5,250.2,3.05\ne,412.3,252.8,3.24\nf,407.8,249.9,2.98\n";
 
-struct Folder(tempfile::TempDir);
+fn call(command: &str, path: &Path, more: &[&str]) -> Output {
+    semiaxis([command, path.to_str().unwrap()]).args(more).output().unwrap()
+}
 
-impl Folder {
-    fn new() -> Self {
-        let folder = Self(tempfile::tempdir().unwrap());
-        fs::write(folder.path("tiles.csv"), TILES).unwrap();
-        folder
-    }
-
-    fn path(&self, name: &str) -> PathBuf {
-        self.0.path().join(name)
-    }
-
-    fn put(&self, name: &str, cells: &[(&str, &str)]) -> PathBuf {
-        let path = self.path(name);
-        fs::write(&path, notebook(cells).to_string()).unwrap();
-        path
-    }
-
-    fn call(&self, command: &str, path: &Path, more: &[&str]) -> Output {
-        semiaxis([command, path.to_str().unwrap()]).args(more).output().unwrap()
-    }
-
-    /// Makes a record and gives its path.
-    fn record(&self, name: &str, cells: &[(&str, &str)], more: &[&str]) -> PathBuf {
-        let path = self.put(&format!("{name}.ipynb"), cells);
-        let output = self.call("record", &path, more);
-        assert!(output.status.success(), "{}\n{}", stdout(&output), stderr(&output));
-        self.path(&format!("{name}.record.html"))
-    }
+/// Makes a record and gives its path.
+fn recorded(folder: &Folder, name: &str, cells: &[(&str, &str)], more: &[&str]) -> PathBuf {
+    let path = folder.put(&format!("{name}.ipynb"), cells);
+    let output = call("record", &path, more);
+    assert!(output.status.success(), "{}\n{}", stdout(&output), stderr(&output));
+    folder.path(format!("{name}.record.html"))
 }
 
 /// The manifest of a record.
@@ -73,8 +54,8 @@ const ANALYSIS: [(&str, &str); 6] = [
 
 #[test]
 fn a_record_holds_everything_and_is_verified_as_it_is() {
-    let folder = Folder::new();
-    let record = folder.record("kilns", &ANALYSIS, &[]);
+    let folder = Folder::with_tiles(TILES);
+    let record = recorded(&folder, "kilns", &ANALYSIS, &[]);
     let text = fs::read_to_string(&record).unwrap();
     assert!(text.contains("<h1>Tiles &amp; &lt;kilns&gt;</h1>") && text.contains("<msup>"));
     assert!(!text.contains("<script>alert") && text.matches("</script>").count() == 3);
@@ -100,7 +81,7 @@ fn a_record_holds_everything_and_is_verified_as_it_is() {
     let held = part(&text, "notebook");
     assert_eq!(held["cells"][1]["source"], ANALYSIS[1].1, "the notebook as it was");
 
-    let verified = folder.call("verify", &record, &[]);
+    let verified = call("verify", &record, &[]);
     let said = stdout(&verified);
     assert_eq!(verified.status.code(), Some(0), "{said}{}", stderr(&verified));
     assert!(said.contains("5 of 5 cells same") && said.contains("not altered"), "{said}");
@@ -143,15 +124,15 @@ open(path, 'w', encoding='utf-8').write(head + manifest + body)
 
 #[test]
 fn what_differs_is_told_with_both_values_and_by_the_tolerance() {
-    let folder = Folder::new();
-    let record = folder.record("kilns", &ANALYSIS, &[]);
+    let folder = Folder::with_tiles(TILES);
+    let record = recorded(&folder, "kilns", &ANALYSIS, &[]);
     let changed = resealed(&record, |_, outputs| {
         outputs["cells"]["4"]["stdout"]["text"] = json!("4 variables\n");
         let values = &mut outputs["cells"]["2"]["exhibits"][0]["numbers"]["columns"][2]["values"];
         assert!(values.is_array(), "{values}");
         values[0] = json!("999");
     });
-    let output = folder.call("verify", &changed, &[]);
+    let output = call("verify", &changed, &[]);
     let said = stdout(&output);
     assert_eq!(output.status.code(), Some(1), "{said}{}", stderr(&output));
     assert!(
@@ -179,12 +160,12 @@ fn what_differs_is_told_with_both_values_and_by_the_tolerance() {
         let number = first(&mut outputs["cells"]["5"]["exhibits"][0]["numbers"]).unwrap();
         *number = json!(number.as_f64().unwrap() * (1.0 + 1e-8));
     });
-    let output = folder.call("verify", &moved, &[]);
+    let output = call("verify", &moved, &[]);
     assert_eq!(output.status.code(), Some(1), "{}", stdout(&output));
     assert!(stdout(&output).contains("cell 5: different"), "{}", stdout(&output));
-    let output = folder.call("verify", &moved, &["--tolerance", "1e-6"]);
+    let output = call("verify", &moved, &["--tolerance", "1e-6"]);
     assert_eq!(output.status.code(), Some(0), "{}", stdout(&output));
-    let output = folder.call("verify", &moved, &["--tolerance", "2"]);
+    let output = call("verify", &moved, &["--tolerance", "2"]);
     assert_eq!(output.status.code(), Some(2));
     assert!(stderr(&output).contains("a number from 0 to 1"), "{}", stderr(&output));
 
@@ -193,7 +174,7 @@ fn what_differs_is_told_with_both_values_and_by_the_tolerance() {
         manifest["build"]["prelude"] = json!("0123");
         manifest["build"]["crates"][0][1] = json!("0.0.0");
     });
-    let output = folder.call("verify", &other, &[]);
+    let output = call("verify", &other, &[]);
     assert_eq!(output.status.code(), Some(0), "{}", stdout(&output));
     let said = stdout(&output);
     assert!(said.contains("another build: build of the prelude: 0123 then"), "{said}");
@@ -202,9 +183,9 @@ fn what_differs_is_told_with_both_values_and_by_the_tolerance() {
 
 #[test]
 fn data_that_moved_changed_or_went_are_told_and_what_needs_them_does_not_run() {
-    let folder = Folder::new();
+    let folder = Folder::with_tiles(TILES);
     let cells = [ANALYSIS[1], ANALYSIS[2], ("code", "let own = 6 * 7;\nown"), ("code", "own + 1")];
-    let record = folder.record("kilns", &cells, &[]);
+    let record = recorded(&folder, "kilns", &cells, &[]);
     let elsewhere = tempfile::tempdir().unwrap();
     let copy = elsewhere.path().join("kilns.record.html");
     fs::copy(&record, &copy).unwrap();
@@ -213,13 +194,13 @@ fn data_that_moved_changed_or_went_are_told_and_what_needs_them_does_not_run() {
     let data = elsewhere.path().join("deep/folder of data");
     fs::create_dir_all(&data).unwrap();
     fs::copy(folder.path("tiles.csv"), data.join("what \"it\" é is.txt")).unwrap();
-    let output = folder.call("verify", &copy, &["--data", data.to_str().unwrap()]);
+    let output = call("verify", &copy, &["--data", data.to_str().unwrap()]);
     assert_eq!(output.status.code(), Some(0), "{}{}", stdout(&output), stderr(&output));
 
     // Changed: named, and not used.
     fs::remove_dir_all(&data).unwrap();
     fs::write(elsewhere.path().join("tiles.csv"), TILES.replace("410.2", "410.3")).unwrap();
-    let output = folder.call("verify", &copy, &[]);
+    let output = call("verify", &copy, &[]);
     let said = stdout(&output);
     assert_eq!(output.status.code(), Some(2), "{said}");
     assert!(said.contains("tiles.csv has its name and other content"), "{said}");
@@ -229,7 +210,7 @@ fn data_that_moved_changed_or_went_are_told_and_what_needs_them_does_not_run() {
 
     // Missing.
     fs::remove_file(elsewhere.path().join("tiles.csv")).unwrap();
-    let output = folder.call("verify", &copy, &[]);
+    let output = call("verify", &copy, &[]);
     assert_eq!(output.status.code(), Some(2));
     assert!(stdout(&output).contains("was not found\n"), "{}", stdout(&output));
     assert!(stdout(&output).contains("2 of 4 cells same"), "{}", stdout(&output));
@@ -237,13 +218,13 @@ fn data_that_moved_changed_or_went_are_told_and_what_needs_them_does_not_run() {
 
 #[test]
 fn a_record_that_was_altered_cut_short_or_is_of_another_time_is_refused() {
-    let folder = Folder::new();
-    let record = folder.record("one", &[("code", "let one = 1;\none")], &[]);
+    let folder = Folder::with_tiles(TILES);
+    let record = recorded(&folder, "one", &[("code", "let one = 1;\none")], &[]);
     let bytes = fs::read(&record).unwrap();
     let refused = |bytes: &[u8]| {
         let path = folder.path("damaged.html");
         fs::write(&path, bytes).unwrap();
-        let output = folder.call("verify", &path, &[]);
+        let output = call("verify", &path, &[]);
         assert_eq!(output.status.code(), Some(2), "{}", stdout(&output));
         assert!(!stdout(&output).contains("cell 1"), "nothing of it is run");
         stderr(&output)
@@ -261,13 +242,13 @@ fn a_record_that_was_altered_cut_short_or_is_of_another_time_is_refused() {
     let later = String::from_utf8(bytes).unwrap().replace("{\"format\":1,", "{\"format\":2,");
     let said = refused(later.as_bytes());
     assert!(said.contains("a record of format 2, and this version reads up to format 1"), "{said}");
-    let output = folder.call("verify", &folder.path("none.html"), &[]);
+    let output = call("verify", &folder.path("none.html"), &[]);
     assert!(stderr(&output).contains("there is no record at"), "{}", stderr(&output));
 }
 
 #[test]
 fn a_failed_cell_makes_no_record_unless_it_was_asked_for() {
-    let folder = Folder::new();
+    let folder = Folder::with_tiles(TILES);
     let cells = [
         ("code", "let a = 1;"),
         ("code", "let none: Option<u8> = None;\nnone.unwrap()"),
@@ -275,32 +256,32 @@ fn a_failed_cell_makes_no_record_unless_it_was_asked_for() {
     ];
     let path = folder.put("broken.ipynb", &cells);
     let record = folder.path("broken.record.html");
-    let output = folder.call("record", &path, &[]);
+    let output = call("record", &path, &[]);
     assert_eq!(output.status.code(), Some(1));
     assert!(stderr(&output).contains("no record was written"), "{}", stderr(&output));
     assert!(!record.exists());
 
-    let output = folder.call("record", &path, &["--with-errors"]);
+    let output = call("record", &path, &["--with-errors"]);
     assert_eq!(output.status.code(), Some(1), "{}", stderr(&output));
     let text = fs::read_to_string(&record).unwrap();
     let first_page = &text[..text.find("<main>").unwrap()];
     assert!(first_page.contains("This record has errors") && first_page.contains("#cell-2"));
     assert_eq!(manifest(&record)["failed"], true);
     assert_eq!(manifest(&record)["cells"][2]["outcome"], "done", "the run went on");
-    let output = folder.call("verify", &record, &[]);
+    let output = call("verify", &record, &[]);
     assert_eq!(output.status.code(), Some(0), "it fails again: {}", stdout(&output));
 }
 
 #[test]
 fn values_are_set_shown_and_used_again_by_verify() {
-    let folder = Folder::new();
+    let folder = Folder::with_tiles(TILES);
     let cells = [
         ("parameters", "let n_draws = 10;\nlet kiln = \"north\";"),
         ("code", "println!(\"{n_draws} {kiln}\");"),
     ];
     let path = folder.put("set.ipynb", &cells);
     let set = ["--set", "n_draws=3", "--set", "kiln=mill \"<b>\""];
-    let output = folder.call("record", &path, &set);
+    let output = call("record", &path, &set);
     assert!(output.status.success(), "{}", stderr(&output));
     let record = folder.path("set.record.html");
     let text = fs::read_to_string(&record).unwrap();
@@ -311,15 +292,15 @@ fn values_are_set_shown_and_used_again_by_verify() {
         json!({"name": "n_draws", "value": "3", "instead_of": "10"})
     );
     assert_eq!(part(&text, "notebook")["cells"][0]["source"], cells[0].1);
-    let output = folder.call("verify", &record, &[]);
+    let output = call("verify", &record, &[]);
     assert_eq!(output.status.code(), Some(0), "{}", stdout(&output));
 
-    let output = folder.call("run", &path, &set[..2]);
+    let output = call("run", &path, &set[..2]);
     assert!(output.status.success(), "{}", stderr(&output));
     let executed = fs::read_to_string(folder.path("set.executed.ipynb")).unwrap();
     assert!(executed.contains("3 north"), "{executed}");
     for command in ["run", "record"] {
-        let output = folder.call(command, &path, &["--set", "n_draws=few"]);
+        let output = call(command, &path, &["--set", "n_draws=few"]);
         assert_eq!(output.status.code(), Some(2));
         let said = stderr(&output);
         assert!(
@@ -331,7 +312,7 @@ fn values_are_set_shown_and_used_again_by_verify() {
 
 #[test]
 fn files_that_a_notebook_reads_by_other_means_and_writes_are_listed() {
-    let folder = Folder::new();
+    let folder = Folder::with_tiles(TILES);
     fs::write(folder.path("a \"b\" é.txt"), "seven").unwrap();
     let cells = [
         ("code", "let text = std::fs::read_to_string(\"a \\\"b\\\" é.txt\")?;\ntext"),
@@ -342,7 +323,7 @@ fn files_that_a_notebook_reads_by_other_means_and_writes_are_listed() {
             "std::fs::create_dir_all(\"charts\")?;\nstd::fs::File::create(\"charts/deep.txt\")?;",
         ),
     ];
-    let record = folder.record("files é \"q\" '1'", &cells, &[]);
+    let record = recorded(&folder, "files é \"q\" '1'", &cells, &[]);
     let manifest = manifest(&record);
     let names = |key: &str| -> Vec<String> {
         let files = manifest[key].as_array().unwrap();
@@ -355,28 +336,28 @@ fn files_that_a_notebook_reads_by_other_means_and_writes_are_listed() {
     assert!(text.contains("out &lt;x&gt;.txt"));
     // What it wrote itself is not asked for.
     fs::remove_file(folder.path("out <x>.txt")).unwrap();
-    let output = folder.call("verify", &record, &[]);
+    let output = call("verify", &record, &[]);
     assert_eq!(output.status.code(), Some(0), "{}{}", stdout(&output), stderr(&output));
     assert!(!folder.path("out <x>.txt").exists(), "verifying writes nothing beside the record");
 }
 
 #[test]
 fn a_hundred_megabytes_of_output_make_a_record_that_opens() {
-    let folder = Folder::new();
+    let folder = Folder::with_tiles(TILES);
     let cells = [("code", "for _ in 0..1000 { println!(\"{}\", \"x\".repeat(100_000)); }")];
-    let record = folder.record("loud", &cells, &[]);
+    let record = recorded(&folder, "loud", &cells, &[]);
     let size = fs::metadata(&record).unwrap().len();
     assert!(size < 1_000_000, "{size} bytes");
     let whole =
         &part(&fs::read_to_string(&record).unwrap(), "outputs")["cells"]["1"]["stdout"]["whole"];
     assert_eq!(whole[0], 100_001_000);
-    let output = folder.call("verify", &record, &[]);
+    let output = call("verify", &record, &[]);
     assert_eq!(output.status.code(), Some(0), "{}", stdout(&output));
 }
 
 #[test]
 fn a_full_disk_keeps_the_old_record_and_a_folder_that_cannot_be_written_sends_it_elsewhere() {
-    let folder = Folder::new();
+    let folder = Folder::with_tiles(TILES);
     let path = folder.put("one.ipynb", &[("code", "1 + 1")]);
     let disk = folder.path("disk");
     fs::create_dir(&disk).unwrap();
@@ -400,7 +381,7 @@ fn a_full_disk_keeps_the_old_record_and_a_folder_that_cannot_be_written_sends_it
 
 #[test]
 fn what_was_saved_and_does_not_come_from_a_straight_run_is_told() {
-    let folder = Folder::new();
+    let folder = Folder::with_tiles(TILES);
     let mut saved = notebook(&[("code", "let y = 1;"), ("code", "y + z"), ("code", "let z = 5;")]);
     for (idx, count) in [(0, 4), (1, 6), (2, 5)] {
         saved["cells"][idx]["execution_count"] = json!(count);
@@ -408,7 +389,7 @@ fn what_was_saved_and_does_not_come_from_a_straight_run_is_told() {
     let path = folder.path("saved.ipynb");
     fs::write(&path, saved.to_string()).unwrap();
     let before = fs::read(&path).unwrap();
-    let output = folder.call("check", &path, &[]);
+    let output = call("check", &path, &[]);
     assert_eq!(output.status.code(), Some(1));
     let said = stdout(&output);
     assert!(said.contains("cell 2 uses `z`, which is first defined in cell 3, below it"), "{said}");
@@ -425,10 +406,10 @@ fn what_was_saved_and_does_not_come_from_a_straight_run_is_told() {
             "execution_count": idx + 1, "data": {"text/plain": shown}}]);
     }
     fs::write(&path, straight.to_string()).unwrap();
-    let output = folder.call("check", &path, &[]);
+    let output = call("check", &path, &[]);
     assert_eq!(output.status.code(), Some(0), "{}", stdout(&output));
     // Its order is right, its second result is not what it gives.
-    let output = folder.call("record", &path, &[]);
+    let output = call("record", &path, &[]);
     assert!(output.status.success(), "{}", stderr(&output));
     let said = stdout(&output);
     assert!(
@@ -441,22 +422,21 @@ fn what_was_saved_and_does_not_come_from_a_straight_run_is_told() {
             && text.contains("cell 2 showed something else")
     );
     assert!(!text.contains("cell 1 showed something else"));
-    let output = folder.call("check", &folder.path("none.ipynb"), &[]);
+    let output = call("check", &folder.path("none.ipynb"), &[]);
     assert_eq!(output.status.code(), Some(2));
 }
 
 #[test]
 fn the_record_of_the_demo_opens_in_a_browser_without_a_network_and_is_accessible() {
-    let folder = Folder::new();
+    let folder = Folder::with_tiles(TILES);
     let demo = place::workspace().join("notebooks-demo");
     for name in ["kilns.ipynb", "tiles.csv"] {
         fs::copy(demo.join(name), folder.path(name)).unwrap();
     }
     let path = folder.path("kilns.ipynb");
-    let output = folder.call("record", &path, &["--pdf"]);
+    let output = call("record", &path, &["--pdf"]);
     debian::browser();
-    let output =
-        if output.status.success() { output } else { folder.call("record", &path, &["--pdf"]) };
+    let output = if output.status.success() { output } else { call("record", &path, &["--pdf"]) };
     assert!(output.status.success(), "{}", stderr(&output));
     let record = folder.path("kilns.record.html");
     assert!(fs::metadata(&record).unwrap().len() < 2_000_000);
@@ -496,7 +476,7 @@ fn the_record_of_the_demo_opens_in_a_browser_without_a_network_and_is_accessible
         ("code", "eprintln!(\"careful\"); println!(\"{}\", \"wide \".repeat(80)); n"),
     ];
     let mixed = folder.put("mixed.ipynb", &cells);
-    let output = folder.call("record", &mixed, &["--with-errors", "--set", "n=4"]);
+    let output = call("record", &mixed, &["--with-errors", "--set", "n=4"]);
     assert_eq!(output.status.code(), Some(1), "{}", stderr(&output));
     let mixed = look(&folder.path("mixed.record.html"));
     assert!(mixed.status.success(), "{}{}", stdout(&mixed), stderr(&mixed));
@@ -513,7 +493,7 @@ fn the_record_of_the_demo_opens_in_a_browser_without_a_network_and_is_accessible
     assert!(!seen.status.success() && stderr(&seen).contains("image-alt"), "{}", stderr(&seen));
     assert!(stderr(&seen).contains("Content Security Policy"), "{}", stderr(&seen));
 
-    let output = folder.call("verify", &record, &[]);
+    let output = call("verify", &record, &[]);
     assert_eq!(output.status.code(), Some(0), "{}", stdout(&output));
 }
 

@@ -1,12 +1,13 @@
 //! `semiaxis run`: the built-in client, with the real engine.
 
 use std::fs;
-use std::path::{Path, PathBuf};
+use std::path::Path;
 use std::process::{Output, Stdio};
 use std::time::{Duration, Instant};
 
 use semiaxis_tests::client::kernel_executable;
 use semiaxis_tests::command::{in_own_mounts, notebook, semiaxis, stderr, stdout};
+use semiaxis_tests::folder::Folder;
 use serde_json::{Value, json};
 
 /// Twelve tiles, invented: length, width and weight.
@@ -15,33 +16,13 @@ const TILES: &str = "length,width,weight\n\
     412.3,252.8,3.24\n407.8,249.9,2.98\n410.9,251.6,3.15\n409.1,250.9,3.06\n\
     411.1,251.2,3.18\n408.4,250.1,3.01\n412.0,252.3,3.25\n410.0,250.8,3.09\n";
 
-struct Folder(tempfile::TempDir);
-
-impl Folder {
-    fn new() -> Self {
-        let folder = Self(tempfile::tempdir().unwrap());
-        fs::write(folder.path("tiles.csv"), TILES).unwrap();
-        folder
-    }
-
-    fn path(&self, name: &str) -> PathBuf {
-        self.0.path().join(name)
-    }
-
-    fn put(&self, name: &str, cells: &[(&str, &str)]) -> PathBuf {
-        let path = self.path(name);
-        fs::write(&path, notebook(cells).to_string()).unwrap();
-        path
-    }
-
-    /// Runs a notebook with a cache of compiled cells that is this folder's own.
-    fn run(&self, notebook: &Path, more: &[&str]) -> Output {
-        semiaxis(["run", notebook.to_str().unwrap()])
-            .args(more)
-            .env("XDG_CACHE_HOME", self.path("cache"))
-            .output()
-            .unwrap()
-    }
+/// Runs a notebook with a cache of compiled cells that is its folder's own.
+fn run(folder: &Folder, notebook: &Path, more: &[&str]) -> Output {
+    semiaxis(["run", notebook.to_str().unwrap()])
+        .args(more)
+        .env("XDG_CACHE_HOME", folder.path("cache"))
+        .output()
+        .unwrap()
 }
 
 /// What was written, after `nbformat` accepted it.
@@ -76,10 +57,10 @@ const ANALYSIS: [(&str, &str); 6] = [
 
 #[test]
 fn a_notebook_runs_from_top_to_bottom_and_is_written_whole() {
-    let folder = Folder::new();
+    let folder = Folder::with_tiles(TILES);
     let path = folder.put("kilns.ipynb", &ANALYSIS);
     let before = fs::read(&path).unwrap();
-    let output = folder.run(&path, &[]);
+    let output = run(&folder, &path, &[]);
     assert_eq!(output.status.code(), Some(0), "{}", stderr(&output));
     assert_eq!(fs::read(&path).unwrap(), before, "the notebook itself is not changed");
 
@@ -129,10 +110,10 @@ fn a_notebook_runs_from_top_to_bottom_and_is_written_whole() {
 
 #[test]
 fn the_same_notebook_again_compiles_nothing_and_shows_the_same() {
-    let folder = Folder::new();
+    let folder = Folder::with_tiles(TILES);
     let path = folder.put("kilns.ipynb", &ANALYSIS);
     let outputs = |name: &str| {
-        let output = folder.run(&path, &["--output", folder.path(name).to_str().unwrap()]);
+        let output = run(&folder, &path, &["--output", folder.path(name).to_str().unwrap()]);
         assert!(output.status.success(), "{}", stderr(&output));
         let written = read(&folder.path(name));
         let cells = written["cells"].as_array().unwrap().clone();
@@ -149,14 +130,14 @@ fn the_same_notebook_again_compiles_nothing_and_shows_the_same() {
 
 #[test]
 fn a_failed_cell_ends_the_run_with_its_line() {
-    let folder = Folder::new();
+    let folder = Folder::with_tiles(TILES);
     let cells = [
         ("raises-exception", "let none: Option<u8> = None;\nnone.unwrap()"),
         ("code", "let a = 1;\nlet b: u8 = \"two\";\na"),
         ("code", "println!(\"never\")"),
     ];
     let path = folder.put("broken.ipynb", &cells);
-    let output = folder.run(&path, &[]);
+    let output = run(&folder, &path, &[]);
     assert_eq!(output.status.code(), Some(1));
     let said = stderr(&output);
     assert!(said.contains("cell [2] failed at its line 2 (2 of 3 in the notebook)"), "{said}");
@@ -178,11 +159,11 @@ fn a_failed_cell_ends_the_run_with_its_line() {
 
 #[test]
 fn what_is_no_notebook_for_this_kernel_is_refused() {
-    let folder = Folder::new();
+    let folder = Folder::with_tiles(TILES);
     let refused = |name: &str, text: &[u8]| {
         let path = folder.path(name);
         fs::write(&path, text).unwrap();
-        let output = folder.run(&path, &[]);
+        let output = run(&folder, &path, &[]);
         assert_eq!(output.status.code(), Some(2), "{name}");
         assert_eq!(stdout(&output), "");
         assert!(!folder.path(name).with_extension("executed.ipynb").exists());
@@ -201,16 +182,16 @@ fn what_is_no_notebook_for_this_kernel_is_refused() {
         json!({"name": "abacus", "display_name": "A", "language": "beads"});
     let said = refused("foreign.ipynb", foreign.to_string().as_bytes());
     assert!(said.contains("is for the kernel `abacus` (beads)"), "{said}");
-    let output = folder.run(&folder.path("missing.ipynb"), &[]);
+    let output = run(&folder, &folder.path("missing.ipynb"), &[]);
     assert_eq!(output.status.code(), Some(2));
     assert!(stderr(&output).contains("there is no notebook at"), "{}", stderr(&output));
-    let output = folder.run(&folder.path(""), &[]);
+    let output = run(&folder, &folder.path(""), &[]);
     assert!(stderr(&output).contains("it is a folder"), "{}", stderr(&output));
 }
 
 #[test]
 fn an_older_notebook_is_brought_up_to_date_with_everything_in_it() {
-    let folder = Folder::new();
+    let folder = Folder::with_tiles(TILES);
     let old = json!({
         "nbformat": 4, "nbformat_minor": 1, "metadata": {"own": {"deep": [1, 2.5]}},
         "cells": [
@@ -222,7 +203,7 @@ fn an_older_notebook_is_brought_up_to_date_with_everything_in_it() {
     });
     let path = folder.path("old.ipynb");
     fs::write(&path, old.to_string()).unwrap();
-    let output = folder.run(&path, &[]);
+    let output = run(&folder, &path, &[]);
     assert_eq!(output.status.code(), Some(0), "{}", stderr(&output));
     let written = read(&folder.path("old.executed.ipynb"));
     assert_eq!(written["metadata"]["own"], old["metadata"]["own"]);
@@ -235,7 +216,7 @@ fn an_older_notebook_is_brought_up_to_date_with_everything_in_it() {
 
 #[test]
 fn two_runs_at_once_on_a_cold_cache_both_succeed() {
-    let folder = Folder::new();
+    let folder = Folder::with_tiles(TILES);
     let path = folder.put("kilns.ipynb", &ANALYSIS);
     let start = |name: &str| {
         semiaxis(["run", path.to_str().unwrap(), "--output"])
@@ -261,7 +242,7 @@ fn two_runs_at_once_on_a_cold_cache_both_succeed() {
 
 #[test]
 fn a_full_disk_under_the_cache_fails_the_cell_and_says_so() {
-    let folder = Folder::new();
+    let folder = Folder::with_tiles(TILES);
     let path = folder.put("one.ipynb", &[("code", "1 + 1")]);
     let disk = folder.path("disk");
     fs::create_dir(&disk).unwrap();
@@ -277,7 +258,7 @@ fn a_full_disk_under_the_cache_fails_the_cell_and_says_so() {
 
 #[test]
 fn a_full_disk_under_the_results_keeps_the_old_file() {
-    let folder = Folder::new();
+    let folder = Folder::with_tiles(TILES);
     let path = folder.put("loud.ipynb", &[("code", "println!(\"{}\", \"x\".repeat(300_000))")]);
     let disk = folder.path("disk");
     fs::create_dir(&disk).unwrap();
@@ -292,7 +273,7 @@ fn a_full_disk_under_the_results_keeps_the_old_file() {
 
 #[test]
 fn a_folder_that_cannot_be_written_sends_the_results_to_the_current_one() {
-    let folder = Folder::new();
+    let folder = Folder::with_tiles(TILES);
     let path = folder.put("kilns.ipynb", &[("code", "read_table(\"tiles.csv\")?.height()")]);
     let (disk, here) = (folder.path("disk"), folder.path("here"));
     fs::create_dir(&disk).unwrap();
@@ -313,7 +294,7 @@ fn a_folder_that_cannot_be_written_sends_the_results_to_the_current_one() {
 
 #[test]
 fn an_interrupt_from_the_keyboard_ends_the_run_and_keeps_what_was_done() {
-    let folder = Folder::new();
+    let folder = Folder::with_tiles(TILES);
     let cells = [
         ("code", "let done = 7;\ndone"),
         ("code", "println!(\"endless\");\nlet mut n = 0u64;\nloop { n = n.wrapping_add(1); }"),
