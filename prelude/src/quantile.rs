@@ -44,7 +44,7 @@ mod tests {
     fn the_statistics_language_gives_the_same() {
         let x = [2.0, 7.0, 1.0, 8.0, 2.0, 8.0];
         assert!((mean(&x) - 14.0 / 3.0).abs() < 1e-14);
-        assert!((deviation(&x) - 3.326_659_986_633_1).abs() < 1e-12);
+        assert!((deviation(&x) - 3.326_659_986_633_24).abs() < 1e-12);
         assert_eq!(median(x.to_vec()), 4.5);
         assert_eq!(quantile(&ascending(x.to_vec()), 0.1), 1.5);
         assert!(quantile(&[], 0.5).is_nan());
