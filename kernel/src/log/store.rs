@@ -14,7 +14,7 @@ use sha2::{Digest, Sha256};
 
 use super::entry::{CellEntry, Entry, Line, ORIGIN, OutputEntry, What};
 use crate::cells::types::{CellEvent, MimeBundle, StreamName};
-use crate::record::evidence::digest;
+use crate::record::evidence::{digest, finished};
 use crate::setup::KitHome;
 
 /// The ending of the files.
@@ -256,8 +256,7 @@ impl Listener {
     /// The outputs: the streams as wholes, then the exhibits in order.
     pub fn finish(self) -> Vec<OutputEntry> {
         let streams = self.streams.into_iter().map(|(kind, (bytes, hasher))| {
-            let sha256: String = hasher.finalize().iter().map(|b| format!("{b:02x}")).collect();
-            let sha256 = BTreeMap::from([("text".to_owned(), sha256)]);
+            let sha256 = BTreeMap::from([("text".to_owned(), finished(hasher))]);
             OutputEntry { kind: kind.to_owned(), bytes, sha256 }
         });
         streams.chain(self.exhibits).collect()

@@ -7,7 +7,7 @@ use std::path::{Component, Path, PathBuf};
 
 use sha2::{Digest, Sha256};
 
-use super::evidence::FileFacts;
+use super::evidence::{FileFacts, finished};
 use crate::cells::types::Facts;
 
 /// Folders of the system; what a program reads there is no data of the analyst.
@@ -132,7 +132,7 @@ pub fn digest_of(path: &Path) -> io::Result<(u64, String)> {
         hasher.update(&buffer[..read]);
         bytes += read as u64;
     }
-    Ok((bytes, hasher.finalize().iter().map(|byte| format!("{byte:02x}")).collect()))
+    Ok((bytes, finished(hasher)))
 }
 
 /// How deep folders are searched for data.

@@ -23,7 +23,12 @@ pub const MOST_KEPT: usize = 256 * 1024;
 
 /// The SHA-256 digest of bytes, in hexadecimal digits.
 pub fn digest(bytes: &[u8]) -> String {
-    Sha256::digest(bytes).iter().map(|byte| format!("{byte:02x}")).collect()
+    finished(Sha256::new_with_prefix(bytes))
+}
+
+/// The digest of all that a hasher was given, in hexadecimal digits.
+pub fn finished(hasher: Sha256) -> String {
+    hasher.finalize().iter().map(|byte| format!("{byte:02x}")).collect()
 }
 
 /// Everything that the results rest on.
